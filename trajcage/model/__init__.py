@@ -3,5 +3,6 @@
 from trajcage.model.box import Box
 from trajcage.model.field import Field
 from trajcage.model.frame import Frame
+from trajcage.model.record import CageStatus, FrameRecord, NeighborList
 
-__all__ = ["Box", "Field", "Frame"]
+__all__ = ["Box", "CageStatus", "Field", "Frame", "FrameRecord", "NeighborList"]
