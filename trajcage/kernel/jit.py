@@ -1,0 +1,71 @@
+"""The one place that decides how kernels are compiled."""
+
+import hashlib
+import logging
+import os
+from collections.abc import Callable
+from pathlib import Path
+from typing import ParamSpec, TypeVar
+
+import numba
+
+__all__ = ["compiled"]
+
+_log = logging.getLogger(__name__)
+
+P = ParamSpec("P")
+R = TypeVar("R")
+
+
+def _cache_directory() -> Path | None:
+    """Return a writable directory for machine code, or None.
+
+    numba notices only changes of the file that holds a function, not of the
+    helpers it calls, so the directory's name carries a digest of all kernels.
+    """
+    digest = hashlib.sha256()
+    for source in sorted(Path(__file__).parent.glob("*.py")):
+        digest.update(source.read_bytes())
+    parents = [
+        os.environ.get("NUMBA_CACHE_DIR"),
+        os.environ.get("XDG_CACHE_HOME"),
+        str(Path("~/.cache").expanduser()),
+    ]
+    for parent in filter(None, parents):
+        directory = Path(parent) / "trajcage" / digest.hexdigest()[:16]
+        try:
+            directory.mkdir(parents=True, exist_ok=True)
+            probe = directory / f".writable-{os.getpid()}"
+            probe.touch()
+            probe.unlink()
+        except OSError:
+            continue
+        return directory
+    _log.warning(
+        "no writable cache directory: the kernels are compiled anew in every run "
+        "(a few seconds); set NUMBA_CACHE_DIR to a writable directory to avoid that"
+    )
+    return None
+
+
+_CACHE_DIRECTORY = _cache_directory()
+
+
+def compiled(function: Callable[P, R]) -> Callable[P, R]:
+    """Compile a kernel: no GIL, IEEE arithmetic, cached machine code.
+
+    The error model of numpy lets loops with divisions become vector code;
+    ``fastmath`` stays off, since exact volumes rely on NaN and on rounding.
+    """
+    cache = _CACHE_DIRECTORY is not None
+    before = numba.config.CACHE_DIR
+    if cache:
+        numba.config.CACHE_DIR = str(_CACHE_DIRECTORY)
+    try:
+        decorate = numba.njit(
+            cache=cache, nogil=True, error_model="numpy", fastmath=False
+        )
+        result: Callable[P, R] = decorate(function)
+    finally:
+        numba.config.CACHE_DIR = before
+    return result
