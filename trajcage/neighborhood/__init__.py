@@ -1,1 +1,13 @@
-"""Placeholder, filled by its own module."""
+"""Who is near whom: the one door to freud.
+
+freud works in single precision on boxes centered on zero. Here positions are
+wrapped, centered and scaled in float64 before they are handed over, freud
+proposes pairs, facets and harmonics, and every vector that comes back is
+recomputed in float64 from the true lattice vectors.
+"""
+
+from trajcage.neighborhood.pairs import PairRule, check_distinct, neighbor_list
+from trajcage.neighborhood.tessellation import voronoi
+from trajcage.neighborhood.threads import set_threads
+
+__all__ = ["PairRule", "check_distinct", "neighbor_list", "set_threads", "voronoi"]
