@@ -1,0 +1,585 @@
+"""Hard-sphere and hard-disk Monte Carlo: the source of test and sample configurations.
+
+Local translations of single particles (Metropolis et al. 1953, J Chem Phys 21, 1087)
+in a periodic orthorhombic box, optional exchanges of the radii of two particles, and
+compression by rescaling box and positions up to the first contact. Particles are
+picked at random, so every move obeys detailed balance; the step length changes only in
+`equilibrate` and `compress_to`, never in `run`.
+
+Radii are what the caller gives and never change by compression: the box does.
+Nothing here is used by the package itself.
+"""
+
+import itertools
+import math
+from collections.abc import Sequence
+from typing import NamedTuple
+
+import numba
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+from scipy.spatial import cKDTree
+from scipy.special import ndtri
+
+__all__ = [
+    "MonteCarlo",
+    "Packing",
+    "bcc",
+    "binary",
+    "compressibility_factor",
+    "fcc",
+    "hcp",
+    "polydisperse",
+    "random_fluid",
+    "triangular",
+]
+
+Floats = NDArray[np.float64]
+Integers = NDArray[np.int64]
+compiled = numba.njit(cache=True)
+
+
+class Packing(NamedTuple):
+    """A configuration: positions (n, d), box lengths (d,), radii (n,)."""
+
+    positions: Floats
+    lengths: Floats
+    radii: Floats
+
+
+class MonteCarlo:
+    """A box of hard spheres (d = 3) or disks (d = 2) and its Markov chain.
+
+    Parameters
+    ----------
+    positions : (n, d) array_like, length
+        Centers; wrapped into [0, lengths).
+    lengths : (d,) array_like, length
+        Edges of the periodic box, each at least twice the largest diameter.
+    radii : float or (n,) array_like, length
+    seed : int
+        Seed of the generator; the same seed and calls give the same chain.
+
+    Raises
+    ------
+    ValueError
+        If shapes disagree, the box is too small or particles overlap.
+    """
+
+    def __init__(
+        self, positions: ArrayLike, lengths: ArrayLike, radii: ArrayLike, seed: int
+    ) -> None:
+        points = np.array(positions, dtype=np.float64, ndmin=2)
+        self.n_particles, self.dimensions = points.shape
+        self.lengths: Floats = np.array(lengths, dtype=np.float64)
+        self.radii: Floats = np.broadcast_to(
+            np.asarray(radii, dtype=np.float64), self.n_particles
+        ).copy()
+        if self.dimensions not in {2, 3} or self.lengths.shape != (self.dimensions,):
+            raise ValueError(
+                f"expected (n, d) positions and (d,) lengths with d = 2 or 3, got"
+                f" {points.shape} and {self.lengths.shape}"
+            )
+        self._rng = np.random.default_rng(seed)
+        self._images = np.zeros(points.shape, dtype=np.int64)
+        self._positions = points
+        _wrap(self._positions, self._images, self.lengths)
+        self._images[:] = 0
+        self._mobile: Integers = np.arange(self.n_particles)
+        self._shape: Integers = np.zeros(self.dimensions, dtype=np.int64)
+        self._link_cells()
+        self.step = 0.1 * float(self.radii.mean())
+        self.sweeps = 0
+        self._tally = np.zeros(4, dtype=np.int64)
+        if self.smallest_ratio() < 1.0:
+            raise ValueError(
+                "expected particles that do not overlap, got a pair at"
+                f" {self.smallest_ratio():.6g} of its contact distance"
+            )
+
+    @property
+    def positions(self) -> Floats:
+        """Centers wrapped into [0, lengths), (n, d): a copy."""
+        return self._positions.copy()
+
+    @property
+    def images(self) -> Integers:
+        """Box crossings of every particle since the start, (n, d): a copy."""
+        return self._images.copy()
+
+    @property
+    def unwrapped(self) -> Floats:
+        """Continuous centers, (n, d)."""
+        return self._positions + self._images * self.lengths
+
+    @property
+    def packing_fraction(self) -> float:
+        """Volume (area) of the particles over that of the box."""
+        return _solid_volume(self.radii, self.dimensions) / math.prod(self.lengths)
+
+    @property
+    def acceptance(self) -> float:
+        """Accepted share of the translations since the last change of the step."""
+        return float(self._tally[1] / max(self._tally[0], 1))
+
+    @property
+    def swap_acceptance(self) -> float:
+        """Accepted share of the radius exchanges since the last change of the step."""
+        return float(self._tally[3] / max(self._tally[2], 1))
+
+    def freeze(self, particles: ArrayLike = ()) -> None:
+        """Let these particles stay where they are, and all others move.
+
+        Parameters
+        ----------
+        particles : (m,) array_like of int
+            Indices; the default sets all free.
+        """
+        held = np.asarray(particles, dtype=np.int64)
+        self._mobile = np.setdiff1d(np.arange(self.n_particles), held)
+
+    def run(self, sweeps: int, *, swap_fraction: float = 0.0) -> None:
+        """Sample the canonical ensemble with the step as it is.
+
+        Parameters
+        ----------
+        sweeps : int
+            Trial moves for each mobile particle, on average.
+        swap_fraction : float
+            Share of the trials that exchange two radii instead of moving.
+        """
+        self._tally += _sweep(
+            self._rng, sweeps, self.step, swap_fraction, self._mobile,
+            self._positions, self._images, self.radii, self.lengths,
+            self._heads, self._next, self._shape, self._neighbors,
+        )  # fmt: skip
+        self.sweeps += sweeps
+
+    def equilibrate(
+        self, sweeps: int, *, acceptance: float = 0.3, swap_fraction: float = 0.0
+    ) -> None:
+        """Run while steering the step to an acceptance: not for measurements."""
+        done = 0
+        while done < sweeps:
+            chunk = min(25, sweeps - done)
+            self._tally[:] = 0
+            self.run(chunk, swap_fraction=swap_fraction)
+            done += chunk
+            scale = min(max(self.acceptance / acceptance, 0.8), 1.25)
+            self.step = min(self.step * scale, 0.5 * float(self.lengths.min()))
+        self._tally[:] = 0
+
+    def smallest_ratio(self) -> float:
+        """Smallest distance over contact distance of all pairs.
+
+        Box and positions can shrink by this factor before the first overlap. In a
+        dilute box the value is only a lower bound: the reach of the cell list.
+        """
+        return float(
+            _smallest_ratio(
+                self._positions, self.radii, self.lengths,
+                self._heads, self._next, self._shape, self._neighbors,
+            )
+        )  # fmt: skip
+
+    def pair_ratios(self, upper: float) -> Floats:
+        """Distance over contact distance of all pairs closer than `upper` contacts."""
+        tree = cKDTree(self._positions, boxsize=self.lengths)
+        pairs = tree.query_pairs(2 * upper * self.radii.max(), output_type="ndarray")
+        apart = self._positions[pairs[:, 0]] - self._positions[pairs[:, 1]]
+        apart -= self.lengths * np.rint(apart / self.lengths)
+        ratios = np.linalg.norm(apart, axis=1) / self.radii[pairs].sum(axis=1)
+        return np.asarray(ratios[ratios < upper], dtype=np.float64)
+
+    def compress_to(
+        self, packing_fraction: float, *, sweeps: int = 1, swap_fraction: float = 0.0
+    ) -> None:
+        """Rescale the box to a packing fraction, upward in steps that never overlap.
+
+        Parameters
+        ----------
+        packing_fraction : float
+            Target; a lower one than the present is reached at once.
+        sweeps : int
+            Sweeps before each step: more is slower compression.
+        swap_fraction : float
+            As in `run`.
+
+        Raises
+        ------
+        RuntimeError
+            If a thousand steps gain less than one part in ten thousand: it is jammed.
+        """
+        milestone = self.packing_fraction
+        for count in itertools.count(1):
+            wanted = (packing_fraction / self.packing_fraction) ** (1 / self.dimensions)
+            allowed = 1.0 + 0.95 * (self.smallest_ratio() - 1.0)
+            self._shrink(min(wanted, allowed))
+            if wanted <= allowed:
+                return
+            if count % 1000 == 0:
+                if self.packing_fraction < milestone * (1 + 1e-4):
+                    break
+                milestone = self.packing_fraction
+            self.equilibrate(sweeps, swap_fraction=swap_fraction)
+        raise RuntimeError(
+            f"compression to {packing_fraction} is stuck at {self.packing_fraction:.6f}"
+        )
+
+    def _shrink(self, factor: float) -> None:
+        self.lengths = self.lengths / factor
+        self._positions /= factor
+        _wrap(self._positions, self._images, self.lengths)
+        self._link_cells()
+
+    def _link_cells(self) -> None:
+        width = 2.0 * float(self.radii.max())
+        if self.lengths.min() < 2 * width:
+            raise ValueError(
+                f"expected box lengths of at least two diameters ({2 * width:.6g}),"
+                f" got {self.lengths}"
+            )
+        # cells are wider than the largest contact distance by a margin, so that
+        # `smallest_ratio`, which looks no further, leaves room to compress
+        shape = np.clip(self.lengths / (1.05 * width), 1, 64).astype(np.int64)
+        if not np.array_equal(shape, self._shape):
+            self._shape = shape
+            self._neighbors = _neighbor_cells(shape)
+        self._heads, self._next = _link(self._positions, self.lengths, self._shape)
+
+
+def compressibility_factor(
+    simulation: MonteCarlo,
+    samples: int,
+    *,
+    interval: int = 5,
+    upper: float = 1.06,
+    blocks: int = 10,
+) -> tuple[float, float]:
+    """Measure Z = beta P / rho from pairs near contact (virial theorem).
+
+    With n(x) dx the mean number of pairs at x to x + dx times their contact distance,
+    Z = 1 + n(1+) / (d N), for any mixture. n(1+) is extrapolated from [1, upper] by a
+    parabola through its logarithm.
+
+    Parameters
+    ----------
+    simulation : MonteCarlo
+        An equilibrated system; it runs on.
+    samples, interval : int
+        Configurations, and sweeps from one to the next.
+    upper : float
+        End of the range of the fit: a few mean gaps.
+    blocks : int
+        Independent fits that give the standard error.
+
+    Returns
+    -------
+    tuple of float
+        Z and its standard error.
+    """
+    edges = np.linspace(1.0, upper, 21)
+    centers = 0.5 * (edges[1:] + edges[:-1])
+    values = np.empty(blocks)
+    per_block = samples // blocks
+    for block in range(blocks):
+        counts = np.zeros(len(centers))
+        for _ in range(per_block):
+            simulation.run(interval)
+            counts += np.histogram(simulation.pair_ratios(upper), edges)[0]
+        if counts.min() < 20:
+            raise ValueError(f"too few pairs near contact in a block: {counts.min():g}")
+        density = counts / (per_block * np.diff(edges))
+        fit = np.polyfit(centers - 1.0, np.log(density), 2, w=np.sqrt(counts))
+        contacts = math.exp(fit[-1])
+        values[block] = 1.0 + contacts / simulation.dimensions / simulation.n_particles
+    return float(values.mean()), float(values.std(ddof=1) / math.sqrt(blocks))
+
+
+def fcc(n_cells: int | Sequence[int], packing_fraction: float) -> Packing:
+    """Face-centered cubic crystal of spheres of diameter 1; 4 to a cell."""
+    basis = np.array([[0, 0, 0], [0, 0.5, 0.5], [0.5, 0, 0.5], [0.5, 0.5, 0]])
+    return _crystal(n_cells, packing_fraction, [1, 1, 1], basis)
+
+
+def bcc(n_cells: int | Sequence[int], packing_fraction: float) -> Packing:
+    """Body-centered cubic crystal of spheres of diameter 1; 2 to a cell."""
+    return _crystal(
+        n_cells, packing_fraction, [1, 1, 1], np.array([[0] * 3, [0.5] * 3])
+    )
+
+
+def hcp(n_cells: int | Sequence[int], packing_fraction: float) -> Packing:
+    """Hexagonal close-packed crystal of spheres of diameter 1; 4 to a cell."""
+    basis = np.array([[0, 0, 0], [0.5, 0.5, 0], [0.5, 5 / 6, 0.5], [0, 1 / 3, 0.5]])
+    edges = [1, math.sqrt(3), math.sqrt(8 / 3)]
+    return _crystal(n_cells, packing_fraction, edges, basis)
+
+
+def triangular(n_cells: int | Sequence[int], packing_fraction: float) -> Packing:
+    """Triangular crystal of disks of diameter 1; 2 to a cell of edges 1 : sqrt(3)."""
+    basis = np.array([[0, 0], [0.5, 0.5]])
+    return _crystal(n_cells, packing_fraction, [1, math.sqrt(3)], basis)
+
+
+def binary(n: int, ratio: float, *, large_fraction: float = 0.5) -> Floats:
+    """Radii of a mixture: the small ones 0.5 first, the large ones 0.5 * ratio last."""
+    radii = np.full(n, 0.5)
+    radii[n - round(n * large_fraction) :] *= ratio
+    return radii
+
+
+def polydisperse(n: int, deviation: float) -> Floats:
+    """Radii of mean 0.5 at the quantiles of a normal distribution.
+
+    Parameters
+    ----------
+    n : int
+    deviation : float
+        Standard deviation over mean, met exactly.
+    """
+    scores = ndtri((np.arange(n) + 0.5) / n)
+    radii: Floats = 0.5 * (1.0 + deviation * scores / scores.std())
+    return radii
+
+
+def random_fluid(
+    n: int,
+    packing_fraction: float,
+    radii: ArrayLike = 0.5,
+    *,
+    seed: int,
+    dimensions: int = 3,
+    shape: Sequence[float] | None = None,
+    sweeps: int = 2000,
+    swap_fraction: float = 0.0,
+) -> MonteCarlo:
+    """Make a disordered system: melt a dilute lattice, compress, equilibrate.
+
+    Parameters
+    ----------
+    n : int
+    packing_fraction : float
+        A monodisperse fluid stays one up to about 0.49 (disks: 0.70); a
+        polydisperse one may go deep into the glass.
+    radii : float or (n,) array_like
+        Dealt out to the sites in random order, which is kept as particle order.
+    seed : int
+    dimensions : int
+    shape : sequence of float, optional
+        Ratios of the box edges; cubic (square) by default.
+    sweeps : int
+        Sweeps of equilibration at the target.
+    swap_fraction : float
+        As in `MonteCarlo.run`, used in compression and equilibration.
+    """
+    rng = np.random.default_rng(seed)
+    sizes = rng.permutation(np.broadcast_to(np.asarray(radii, dtype=np.float64), n))
+    edges = np.ones(dimensions) if shape is None else np.array(shape, dtype=np.float64)
+    edges /= math.prod(edges) ** (1 / dimensions)
+    grid = np.ceil(edges * n ** (1 / dimensions) - 1e-9).astype(np.int64)
+    # the start: a fluid's density, and room between the largest particles
+    volume = _solid_volume(sizes, dimensions) / min(0.42, packing_fraction)
+    side = volume ** (1 / dimensions)
+    side *= max(1.0, 2.1 * sizes.max() / (side * edges / grid).min())
+    sites = np.indices(tuple(grid)).reshape(dimensions, -1).T + 0.5
+    chosen = rng.permutation(len(sites))[:n]
+    lengths = side * edges
+    simulation = MonteCarlo(sites[chosen] / grid * lengths, lengths, sizes, seed)
+    simulation.equilibrate(300, swap_fraction=swap_fraction)
+    simulation.compress_to(packing_fraction, swap_fraction=swap_fraction)
+    simulation.equilibrate(sweeps, swap_fraction=swap_fraction)
+    return simulation
+
+
+def _crystal(
+    n_cells: int | Sequence[int],
+    packing_fraction: float,
+    edges: Sequence[float],
+    basis: Floats,
+) -> Packing:
+    dimensions = len(edges)
+    counts = np.broadcast_to(np.asarray(n_cells, dtype=np.int64), dimensions)
+    corners = np.indices(tuple(counts)).reshape(dimensions, -1).T
+    sites = (corners[:, None, :] + basis).reshape(-1, dimensions)
+    radii = np.full(len(sites), 0.5)
+    cells = counts * np.array(edges, dtype=np.float64)
+    volume = _solid_volume(radii, dimensions) / packing_fraction
+    lengths = cells * (volume / math.prod(cells)) ** (1 / dimensions)
+    return Packing(sites / counts * lengths, lengths, radii)
+
+
+def _solid_volume(radii: Floats, dimensions: int) -> float:
+    unit_ball = math.pi if dimensions == 2 else 4 * math.pi / 3
+    return unit_ball * math.fsum(radii**dimensions)
+
+
+@compiled
+def _wrap(positions: Floats, images: Integers, lengths: Floats) -> None:
+    for i in range(positions.shape[0]):
+        for k in range(positions.shape[1]):
+            turns = math.floor(positions[i, k] / lengths[k])
+            positions[i, k] -= turns * lengths[k]
+            images[i, k] += turns
+            if positions[i, k] >= lengths[k]:  # rounding of a tiny negative number
+                positions[i, k] = 0.0
+                images[i, k] += 1
+
+
+@compiled
+def _cell(point: Floats, lengths: Floats, shape: Integers) -> int:
+    index = 0
+    for k in range(len(point)):
+        index = index * shape[k] + min(
+            int(point[k] / lengths[k] * shape[k]), shape[k] - 1
+        )
+    return index
+
+
+@compiled
+def _neighbor_cells(shape: Integers) -> Integers:
+    """List the cells around each cell and itself, every one once, padded with -1."""
+    d = len(shape)
+    table = np.full((np.prod(shape), 3**d), -1, dtype=np.int64)
+    for cell in range(table.shape[0]):
+        found = 0
+        for offset in range(3**d):
+            rest_cell, rest_offset, index, stride = cell, offset, 0, 1
+            for k in range(d - 1, -1, -1):
+                at = (rest_cell % shape[k] + rest_offset % 3 - 1) % shape[k]
+                index += at * stride
+                stride *= shape[k]
+                rest_cell //= shape[k]
+                rest_offset //= 3
+            if not np.any(table[cell, :found] == index):
+                table[cell, found] = index
+                found += 1
+    return table
+
+
+@compiled
+def _link(
+    positions: Floats, lengths: Floats, shape: Integers
+) -> tuple[Integers, Integers]:
+    heads = np.full(np.prod(shape), -1, dtype=np.int64)
+    following = np.full(positions.shape[0], -1, dtype=np.int64)
+    for i in range(positions.shape[0]):
+        cell = _cell(positions[i], lengths, shape)
+        following[i] = heads[cell]
+        heads[cell] = i
+    return heads, following
+
+
+@compiled
+def _overlaps(
+    point: Floats, radius: float, first: int, second: int, cell: int,
+    positions: Floats, radii: Floats, lengths: Floats,
+    heads: Integers, following: Integers, neighbors: Integers,
+) -> bool:  # fmt: skip
+    """Tell whether a sphere meets any particle but `first` and `second`."""
+    for slot in range(neighbors.shape[1]):
+        other = neighbors[cell, slot]
+        if other < 0:
+            break
+        j = heads[other]
+        while j >= 0:
+            if j not in (first, second):
+                square = 0.0
+                for k in range(len(point)):
+                    apart = abs(point[k] - positions[j, k])
+                    apart = min(apart, lengths[k] - apart)
+                    square += apart * apart
+                contact = radius + radii[j]
+                if square < contact * contact:
+                    return True
+            j = following[j]
+    return False
+
+
+@compiled
+def _sweep(
+    rng: np.random.Generator, sweeps: int, step: float, swap_fraction: float,
+    mobile: Integers, positions: Floats, images: Integers, radii: Floats,
+    lengths: Floats, heads: Integers, following: Integers, shape: Integers,
+    neighbors: Integers,
+) -> Integers:  # fmt: skip
+    """Run the chain; count translations tried and accepted, then exchanges."""
+    d = positions.shape[1]
+    point = np.empty(d)
+    turns = np.empty(d, dtype=np.int64)
+    tally = np.zeros(4, dtype=np.int64)
+    for _ in range(sweeps * len(mobile)):
+        i = mobile[int(rng.random() * len(mobile))]
+        home = _cell(positions[i], lengths, shape)
+        if swap_fraction > 0.0 and rng.random() < swap_fraction:
+            j = mobile[int(rng.random() * len(mobile))]
+            tally[2] += 1
+            # the contact distance of i and j is the same before and after
+            if i != j and not (
+                _overlaps(
+                    positions[i], radii[j], i, j, home,
+                    positions, radii, lengths, heads, following, neighbors,
+                )
+                or _overlaps(
+                    positions[j], radii[i], i, j, _cell(positions[j], lengths, shape),
+                    positions, radii, lengths, heads, following, neighbors,
+                )
+            ):  # fmt: skip
+                radii[i], radii[j] = radii[j], radii[i]
+                tally[3] += 1
+            continue
+        tally[0] += 1
+        for k in range(d):
+            point[k] = positions[i, k] + step * (2.0 * rng.random() - 1.0)
+            turns[k] = math.floor(point[k] / lengths[k])
+            point[k] -= turns[k] * lengths[k]
+            if point[k] >= lengths[k]:  # rounding of a tiny negative number
+                point[k] = 0.0
+                turns[k] += 1
+        cell = _cell(point, lengths, shape)
+        if _overlaps(
+            point, radii[i], i, i, cell,
+            positions, radii, lengths, heads, following, neighbors,
+        ):  # fmt: skip
+            continue
+        tally[1] += 1
+        positions[i] = point
+        images[i] += turns
+        if cell != home:
+            if heads[home] == i:
+                heads[home] = following[i]
+            else:
+                j = heads[home]
+                while following[j] != i:
+                    j = following[j]
+                following[j] = following[i]
+            following[i] = heads[cell]
+            heads[cell] = i
+    return tally
+
+
+@compiled
+def _smallest_ratio(
+    positions: Floats, radii: Floats, lengths: Floats,
+    heads: Integers, following: Integers, shape: Integers, neighbors: Integers,
+) -> float:  # fmt: skip
+    # pairs further apart than a cell is wide are not looked at
+    smallest = np.min(lengths / shape) / (2.0 * np.max(radii))
+    for i in range(positions.shape[0]):
+        cell = _cell(positions[i], lengths, shape)
+        for slot in range(neighbors.shape[1]):
+            other = neighbors[cell, slot]
+            if other < 0:
+                break
+            j = heads[other]
+            while j >= 0:
+                if j < i:
+                    square = 0.0
+                    for k in range(positions.shape[1]):
+                        apart = abs(positions[i, k] - positions[j, k])
+                        apart = min(apart, lengths[k] - apart)
+                        square += apart * apart
+                    ratio = math.sqrt(square) / (radii[i] + radii[j])
+                    smallest = min(smallest, ratio)
+                j = following[j]
+    return smallest
