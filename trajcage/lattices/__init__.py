@@ -1,7 +1,12 @@
 """Ideal lattices and published equations of state: what to compare cages with."""
 
+from trajcage.lattices.effective_diameter import effective_diameter_wca
+from trajcage.lattices.equation import EquationOfState
+from trajcage.lattices.equations import EQUATIONS, equations, reference_equations
 from trajcage.lattices.exact import SMALLEST_VORONOI_CELL, ExactNumber
 from trajcage.lattices.ideal import LATTICES, lattice_sites
+from trajcage.lattices.mixture_equations import disk_mixture, sphere_mixture
+from trajcage.lattices.phases import PHASE_MARKS, PhaseMark, phase_marks
 from trajcage.lattices.reference import (
     LatticeReference,
     LatticeThresholds,
@@ -11,13 +16,23 @@ from trajcage.lattices.reference import (
 )
 
 __all__ = [
+    "EQUATIONS",
     "LATTICES",
+    "PHASE_MARKS",
     "SMALLEST_VORONOI_CELL",
+    "EquationOfState",
     "ExactNumber",
     "LatticeReference",
     "LatticeThresholds",
+    "PhaseMark",
     "Window",
+    "disk_mixture",
+    "effective_diameter_wca",
+    "equations",
     "lattice",
     "lattice_sites",
+    "phase_marks",
+    "reference_equations",
+    "sphere_mixture",
     "thresholds",
 ]
