@@ -2,7 +2,7 @@
 
 Local translations of single particles (Metropolis et al. 1953, J Chem Phys 21, 1087)
 in a periodic orthorhombic box, optional exchanges of the radii of two particles, and
-compression by rescaling box and positions up to the first contact. Particles are
+compression in small steps of box and positions. Particles are
 picked at random, so every move obeys detailed balance; the step length changes only in
 `equilibrate` and `compress_to`, never in `run`.
 
@@ -10,7 +10,6 @@ Radii are what the caller gives and never change by compression: the box does.
 Nothing here is used by the package itself.
 """
 
-import itertools
 import math
 from collections.abc import Sequence
 from typing import NamedTuple
@@ -87,6 +86,7 @@ class MonteCarlo:
         self._images[:] = 0
         self._mobile: Integers = np.arange(self.n_particles)
         self._shape: Integers = np.zeros(self.dimensions, dtype=np.int64)
+        self._next: Integers = np.empty(self.n_particles, dtype=np.int64)
         self._link_cells()
         self.step = 0.1 * float(self.radii.mean())
         self.sweeps = 0
@@ -175,9 +175,11 @@ class MonteCarlo:
         Box and positions can shrink by this factor before the first overlap. In a
         dilute box the value is only a lower bound: the reach of the cell list.
         """
+        # pairs further apart than a cell is wide are not looked at
+        reach = float((self.lengths / self._shape).min() / (2 * self.radii.max()))
         return float(
             _smallest_ratio(
-                self._positions, self.radii, self.lengths,
+                reach, self._positions, self.radii, self.lengths,
                 self._heads, self._next, self._shape, self._neighbors,
             )
         )  # fmt: skip
@@ -192,43 +194,57 @@ class MonteCarlo:
         return np.asarray(ratios[ratios < upper], dtype=np.float64)
 
     def compress_to(
-        self, packing_fraction: float, *, sweeps: int = 1, swap_fraction: float = 0.0
+        self, packing_fraction: float, *, sweeps: int = 10, swap_fraction: float = 0.0
     ) -> None:
-        """Rescale the box to a packing fraction, upward in steps that never overlap.
+        """Rescale box and positions to a packing fraction.
+
+        Upward in small steps: after each one, particles that overlap are moved to
+        a free place nearby, or the step is taken back and halved.
 
         Parameters
         ----------
         packing_fraction : float
             Target; a lower one than the present is reached at once.
         sweeps : int
-            Sweeps before each step: more is slower compression.
+            Sweeps between two steps: more is slower compression.
         swap_fraction : float
             As in `run`.
 
         Raises
         ------
         RuntimeError
-            If a thousand steps gain less than one part in ten thousand: it is jammed.
+            If steps of 1e-7 in length still overlap: the packing is jammed.
         """
-        milestone = self.packing_fraction
-        for count in itertools.count(1):
+        growth = 1e-3
+        while True:
             wanted = (packing_fraction / self.packing_fraction) ** (1 / self.dimensions)
-            allowed = 1.0 + 0.95 * (self.smallest_ratio() - 1.0)
-            self._shrink(min(wanted, allowed))
-            if wanted <= allowed:
-                return
-            if count % 1000 == 0:
-                if self.packing_fraction < milestone * (1 + 1e-4):
-                    break
-                milestone = self.packing_fraction
+            if self._shrink(min(wanted, 1.0 + growth)):
+                if wanted <= 1.0 + growth:
+                    return
+                growth = min(1.5 * growth, 0.01)
+            else:
+                growth *= 0.5
+            if growth < 1e-7:
+                raise RuntimeError(
+                    f"compression to {packing_fraction} is stuck at"
+                    f" {self.packing_fraction:.6f}"
+                )
             self.equilibrate(sweeps, swap_fraction=swap_fraction)
-        raise RuntimeError(
-            f"compression to {packing_fraction} is stuck at {self.packing_fraction:.6f}"
-        )
 
-    def _shrink(self, factor: float) -> None:
-        self.lengths = self.lengths / factor
-        self._positions /= factor
+    def _shrink(self, factor: float) -> bool:
+        before = self.lengths, self.positions, self.images
+        self._rescale(self.lengths / factor, self._positions / factor, self._images)
+        if _resolve(
+            self._rng, 50, self.step, self._mobile,
+            self._positions, self._images, self.radii, self.lengths,
+            self._heads, self._next, self._shape, self._neighbors,
+        ):  # fmt: skip
+            return True
+        self._rescale(*before)
+        return False
+
+    def _rescale(self, lengths: Floats, positions: Floats, images: Integers) -> None:
+        self.lengths, self._positions, self._images = lengths, positions, images
         _wrap(self._positions, self._images, self.lengths)
         self._link_cells()
 
@@ -239,13 +255,13 @@ class MonteCarlo:
                 f"expected box lengths of at least two diameters ({2 * width:.6g}),"
                 f" got {self.lengths}"
             )
-        # cells are wider than the largest contact distance by a margin, so that
-        # `smallest_ratio`, which looks no further, leaves room to compress
-        shape = np.clip(self.lengths / (1.05 * width), 1, 64).astype(np.int64)
+        # a cell is never thinner than the largest contact distance
+        shape = np.minimum(self.lengths / width, 64).astype(np.int64)
         if not np.array_equal(shape, self._shape):
             self._shape = shape
             self._neighbors = _neighbor_cells(shape)
-        self._heads, self._next = _link(self._positions, self.lengths, self._shape)
+            self._heads = np.empty(len(self._neighbors), dtype=np.int64)
+        _link(self._positions, self.lengths, self._shape, self._heads, self._next)
 
 
 def compressibility_factor(
@@ -440,8 +456,11 @@ def _cell(point: Floats, lengths: Floats, shape: Integers) -> int:
 def _neighbor_cells(shape: Integers) -> Integers:
     """List the cells around each cell and itself, every one once, padded with -1."""
     d = len(shape)
-    table = np.full((np.prod(shape), 3**d), -1, dtype=np.int64)
-    for cell in range(table.shape[0]):
+    n_cells = 1
+    for k in range(d):
+        n_cells *= shape[k]
+    table = np.full((n_cells, 3**d), -1, dtype=np.int64)
+    for cell in range(n_cells):
         found = 0
         for offset in range(3**d):
             rest_cell, rest_offset, index, stride = cell, offset, 0, 1
@@ -451,7 +470,10 @@ def _neighbor_cells(shape: Integers) -> Integers:
                 stride *= shape[k]
                 rest_cell //= shape[k]
                 rest_offset //= 3
-            if not np.any(table[cell, :found] == index):
+            slot = 0
+            while slot < found and table[cell, slot] != index:
+                slot += 1
+            if slot == found:
                 table[cell, found] = index
                 found += 1
     return table
@@ -459,15 +481,14 @@ def _neighbor_cells(shape: Integers) -> Integers:
 
 @compiled
 def _link(
-    positions: Floats, lengths: Floats, shape: Integers
-) -> tuple[Integers, Integers]:
-    heads = np.full(np.prod(shape), -1, dtype=np.int64)
-    following = np.full(positions.shape[0], -1, dtype=np.int64)
+    positions: Floats, lengths: Floats, shape: Integers,
+    heads: Integers, following: Integers,
+) -> None:  # fmt: skip
+    heads[:] = -1
     for i in range(positions.shape[0]):
         cell = _cell(positions[i], lengths, shape)
         following[i] = heads[cell]
         heads[cell] = i
-    return heads, following
 
 
 @compiled
@@ -497,6 +518,40 @@ def _overlaps(
 
 
 @compiled
+def _propose(
+    rng: np.random.Generator, step: float, old: Floats, lengths: Floats,
+    point: Floats, turns: Integers,
+) -> None:  # fmt: skip
+    """Fill `point` with a wrapped trial position, `turns` with its box crossings."""
+    for k in range(len(old)):
+        point[k] = old[k] + step * (2.0 * rng.random() - 1.0)
+        turns[k] = math.floor(point[k] / lengths[k])
+        point[k] -= turns[k] * lengths[k]
+        if point[k] >= lengths[k]:  # rounding of a tiny negative number
+            point[k] = 0.0
+            turns[k] += 1
+
+
+@compiled
+def _place(
+    i: int, point: Floats, turns: Integers, home: int, cell: int,
+    positions: Floats, images: Integers, heads: Integers, following: Integers,
+) -> None:  # fmt: skip
+    positions[i] = point
+    images[i] += turns
+    if cell != home:
+        if heads[home] == i:
+            heads[home] = following[i]
+        else:
+            j = heads[home]
+            while following[j] != i:
+                j = following[j]
+            following[j] = following[i]
+        following[i] = heads[cell]
+        heads[cell] = i
+
+
+@compiled
 def _sweep(
     rng: np.random.Generator, sweeps: int, step: float, swap_fraction: float,
     mobile: Integers, positions: Floats, images: Integers, radii: Floats,
@@ -504,9 +559,8 @@ def _sweep(
     neighbors: Integers,
 ) -> Integers:  # fmt: skip
     """Run the chain; count translations tried and accepted, then exchanges."""
-    d = positions.shape[1]
-    point = np.empty(d)
-    turns = np.empty(d, dtype=np.int64)
+    point = np.empty(positions.shape[1])
+    turns = np.empty(positions.shape[1], dtype=np.int64)
     tally = np.zeros(4, dtype=np.int64)
     for _ in range(sweeps * len(mobile)):
         i = mobile[int(rng.random() * len(mobile))]
@@ -529,42 +583,55 @@ def _sweep(
                 tally[3] += 1
             continue
         tally[0] += 1
-        for k in range(d):
-            point[k] = positions[i, k] + step * (2.0 * rng.random() - 1.0)
-            turns[k] = math.floor(point[k] / lengths[k])
-            point[k] -= turns[k] * lengths[k]
-            if point[k] >= lengths[k]:  # rounding of a tiny negative number
-                point[k] = 0.0
-                turns[k] += 1
+        _propose(rng, step, positions[i], lengths, point, turns)
         cell = _cell(point, lengths, shape)
-        if _overlaps(
+        if not _overlaps(
             point, radii[i], i, i, cell,
             positions, radii, lengths, heads, following, neighbors,
         ):  # fmt: skip
-            continue
-        tally[1] += 1
-        positions[i] = point
-        images[i] += turns
-        if cell != home:
-            if heads[home] == i:
-                heads[home] = following[i]
-            else:
-                j = heads[home]
-                while following[j] != i:
-                    j = following[j]
-                following[j] = following[i]
-            following[i] = heads[cell]
-            heads[cell] = i
+            _place(i, point, turns, home, cell, positions, images, heads, following)
+            tally[1] += 1
     return tally
 
 
 @compiled
+def _resolve(
+    rng: np.random.Generator, tries: int, step: float,
+    mobile: Integers, positions: Floats, images: Integers, radii: Floats,
+    lengths: Floats, heads: Integers, following: Integers, shape: Integers,
+    neighbors: Integers,
+) -> bool:  # fmt: skip
+    """Move overlapping particles to free places; tell whether no overlap is left."""
+    point = np.empty(positions.shape[1])
+    turns = np.empty(positions.shape[1], dtype=np.int64)
+    for i in mobile:
+        point[:] = positions[i]
+        turns[:] = 0
+        home = _cell(point, lengths, shape)
+        cell = home
+        for _ in range(tries):
+            if not _overlaps(
+                point, radii[i], i, i, cell,
+                positions, radii, lengths, heads, following, neighbors,
+            ):  # fmt: skip
+                _place(i, point, turns, home, cell, positions, images, heads, following)
+                break
+            _propose(rng, step, positions[i], lengths, point, turns)
+            cell = _cell(point, lengths, shape)
+    for i in range(positions.shape[0]):
+        if _overlaps(
+            positions[i], radii[i], i, i, _cell(positions[i], lengths, shape),
+            positions, radii, lengths, heads, following, neighbors,
+        ):  # fmt: skip
+            return False
+    return True
+
+
+@compiled
 def _smallest_ratio(
-    positions: Floats, radii: Floats, lengths: Floats,
+    smallest: float, positions: Floats, radii: Floats, lengths: Floats,
     heads: Integers, following: Integers, shape: Integers, neighbors: Integers,
 ) -> float:  # fmt: skip
-    # pairs further apart than a cell is wide are not looked at
-    smallest = np.min(lengths / shape) / (2.0 * np.max(radii))
     for i in range(positions.shape[0]):
         cell = _cell(positions[i], lengths, shape)
         for slot in range(neighbors.shape[1]):
