@@ -1,0 +1,98 @@
+"""The one door: picks the reader that fits the files."""
+
+from pathlib import Path
+
+from trajcage.errors import InputError
+from trajcage.readers.gsd_file import GsdSource
+from trajcage.readers.lammps_data import LammpsDataSource
+from trajcage.readers.lammps_dump import LammpsDumpSource
+from trajcage.readers.options import InputOptions
+from trajcage.readers.source import Particles, Source, check_file
+from trajcage.readers.trajectory import Trajectory
+from trajcage.readers.universe import UniverseSource, read_topology
+from trajcage.readers.xyz import XyzSource
+
+__all__ = ["open_trajectory"]
+
+_FRAMES: dict[str, type[GsdSource] | type[LammpsDumpSource] | type[XyzSource]] = {
+    ".gsd": GsdSource,
+    ".dump": LammpsDumpSource,
+    ".lammpsdump": LammpsDumpSource,
+    ".lammpstrj": LammpsDumpSource,
+    ".xyz": XyzSource,
+    ".extxyz": XyzSource,
+}
+_DATA_SUFFIXES = {".data", ".lammpsdata"}
+
+
+def open_trajectory(options: InputOptions) -> Trajectory:
+    """Open an input.
+
+    GSD, LAMMPS and XYZ files are read here, since MDAnalysis loses boxes,
+    boundaries, diameters or columns of theirs; all others by MDAnalysis. The
+    suffix of a file names its format.
+
+    Parameters
+    ----------
+    options : InputOptions
+        The files, and what they do not say themselves.
+
+    Returns
+    -------
+    Trajectory
+        To be closed, or used in a ``with`` statement.
+
+    Raises
+    ------
+    InputError
+        If a file is missing, empty or unreadable, or if diameters or box are
+        unknown.
+    """
+    check_file(options.topology)
+    if options.trajectory is not None:
+        check_file(options.trajectory)
+    source = _open_source(options.topology, options.trajectory)
+    try:
+        return Trajectory(options, source)
+    except Exception:
+        source.close()
+        raise
+
+
+def _open_source(topology: Path, trajectory: Path | None) -> Source:
+    path = topology if trajectory is None else trajectory
+    suffix = path.suffix.lower()
+    if suffix in _DATA_SUFFIXES:
+        if trajectory is not None:
+            raise InputError(f"a LAMMPS data file holds no trajectory: {path}")
+        return LammpsDataSource(path)
+    if suffix in _FRAMES:
+        companion = None if trajectory is None else _companion(topology)
+        return _FRAMES[suffix](path, companion)
+    if trajectory is None:
+        return UniverseSource(topology)
+    own = topology.suffix.lower() in {*_FRAMES, *_DATA_SUFFIXES}
+    return UniverseSource(_companion(topology) if own else topology, trajectory)
+
+
+def _companion(topology: Path) -> Particles:
+    """Read the particles from a topology beside a trajectory."""
+    suffix = topology.suffix.lower()
+    if suffix not in {*_FRAMES, *_DATA_SUFFIXES}:
+        return read_topology(topology)
+    source = (
+        LammpsDataSource(topology)
+        if suffix in _DATA_SUFFIXES
+        else _FRAMES[suffix](topology)
+    )
+    try:
+        raw = source.read(0)
+    finally:
+        source.close()
+    return Particles(
+        type_names=source.type_names,
+        types=raw.types,
+        radii=raw.radii,
+        radii_source=source.radii_source,
+        ids=raw.ids if source.has_ids else None,
+    )

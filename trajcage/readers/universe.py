@@ -1,0 +1,334 @@
+"""Every other format, read by MDAnalysis with its unit conversion off.
+
+MDAnalysis turns nanometers into angstroms, so a trajectory in units of the
+particle diameter would come out ten times too large beside diameters given by
+the user: `convert_units` is always False here.
+"""
+
+import math
+from collections.abc import Iterable, Iterator
+from itertools import islice
+from pathlib import Path
+from typing import Any
+
+import MDAnalysis
+import numpy as np
+from MDAnalysis.coordinates.core import reader as open_reader
+from MDAnalysis.coordinates.H5MD import H5MDReader
+from MDAnalysis.lib.formats.libmdaxdr import XTCFile
+from numpy.typing import NDArray
+
+from trajcage.errors import FrameError, InputError
+from trajcage.model import Box
+from trajcage.readers.source import (
+    Particles,
+    RawFrame,
+    Source,
+    collect_warnings,
+    float_spacing,
+)
+from trajcage.readers.text import decimal_spacing
+
+__all__ = ["UniverseSource", "read_topology"]
+
+# Formats that store a step or a time of their own with every frame. The rest
+# get a counter from MDAnalysis that is neither.
+_STEPPED = {"XTC", "TRR", "H5MD", "TNG", "TRC"}
+_TIMED = {*_STEPPED, "NCDF"}
+_H5MD_SUFFIXES = {".h5md", ".h5"}
+
+
+class _H5MDReader(H5MDReader):  # type: ignore[misc] # MDAnalysis ships no types
+    """MDAnalysis' H5MD reader without units, and with what it leaves out."""
+
+    def _set_translated_units(self) -> None:
+        """Leave units alone: unknown ones must not be an error, none is used."""
+        self.units = dict.fromkeys(("time", "length", "velocity", "force"))
+
+    def positions(self, index: int) -> NDArray[np.floating[Any]]:
+        """Return positions in the precision of the file."""
+        return np.asarray(self._particle_group["position/value"][index])
+
+    def edges(self, index: int) -> NDArray[np.float64] | None:
+        """Return the box edges as rows, unrotated."""
+        if "edges" not in self._particle_group["box"]:
+            return None
+        edges = np.array(self._particle_group["box/edges/value"][index], np.float64)
+        return np.diag(edges) if edges.ndim == 1 else edges
+
+    def boundary(self) -> tuple[bool, ...]:
+        """Return which edges are periodic."""
+        flags = self._particle_group["box"].attrs["boundary"]
+        words = [f.decode() if isinstance(f, bytes) else str(f) for f in flags]
+        return tuple(word == "periodic" for word in words)
+
+    def static(self, name: str) -> NDArray[Any] | None:
+        """Return the first value of a particle element, if it is there."""
+        if name not in self._particle_group:
+            return None
+        element = self._particle_group[name]
+        values = element["value"][0] if hasattr(element, "keys") else element[()]
+        return np.asarray(values)
+
+
+class UniverseSource(Source):
+    """A trajectory opened by MDAnalysis.
+
+    Parameters
+    ----------
+    topology : Path or Particles
+        A topology file, or the particles if another reader has read them.
+    trajectory : Path, optional
+        The file with the frames, if it is another one.
+
+    Raises
+    ------
+    InputError
+        If MDAnalysis cannot read the files or they do not match.
+    """
+
+    def __init__(
+        self, topology: Path | Particles, trajectory: Path | None = None
+    ) -> None:
+        self.notes = []
+        path = trajectory if trajectory is not None else topology
+        if isinstance(path, Particles):
+            raise TypeError("particles without a trajectory file")
+        self.files = (path,)
+        self.format = path.suffix.lstrip(".").upper() or "file without suffix"
+        self.box_source = f"the {self.format} file"
+        try:
+            with collect_warnings(self.notes):
+                particles = self._open(topology, path)
+        except InputError:
+            raise
+        except Exception as error:  # third parties raise what they like
+            raise InputError(
+                f"MDAnalysis cannot read {path}: {_one_line(error)}; expected a format "
+                "that MDAnalysis knows by its suffix (GSD, LAMMPS dump or data, XYZ, "
+                "XTC, TRR, DCD, GRO, PDB, H5MD, ...), with a topology file before it "
+                "if it needs one"
+            ) from error
+        self.type_names = particles.type_names
+        self.radii_source = particles.radii_source
+        self._particles = particles
+        self.n_frames = int(self._reader.n_frames)
+        self._unit = _stored_spacing(path, self.format)
+        lost = path.stat().st_size - self._end_of_frames()
+        if lost > 0:
+            self.notes.append(
+                f"{lost} bytes after the last frame are no complete frame: the file "
+                "was truncated, or is still being written"
+            )
+
+    def _open(self, topology: Path | Particles, path: Path) -> Particles:
+        if path.suffix.lower() in _H5MD_SUFFIXES:
+            self._reader = _H5MDReader(str(path), convert_units=False)
+            self.format = "H5MD"
+            if topology == path:
+                found = _h5md_particles(self._reader)
+            elif isinstance(topology, Particles):
+                found = topology
+            else:
+                found = read_topology(topology)
+        elif isinstance(topology, Particles):
+            self._reader = open_reader(
+                str(path), n_atoms=len(topology.types), convert_units=False
+            )
+            found = topology
+        else:
+            files = [str(topology)] if topology == path else [str(topology), str(path)]
+            universe = MDAnalysis.Universe(*files, convert_units=False, to_guess=())
+            if not hasattr(universe, "trajectory"):
+                raise InputError(
+                    f"{path} has no coordinates; give the trajectory after it"
+                )
+            self._reader = universe.trajectory
+            found = _particles(universe, topology)
+        name = self._reader.format
+        self.format = str(name if isinstance(name, str) else name[0])
+        if self.format == "GRO":
+            _refuse_more_frames(path)
+        n = int(self._reader.n_atoms)
+        if n != len(found.types):
+            raise InputError(
+                f"the topology has {len(found.types)} particles, {path} has {n}"
+            )
+        return found
+
+    def read(self, index: int) -> RawFrame:
+        """Read one frame."""
+        try:
+            with collect_warnings(self.notes):
+                ts = self._reader[index]
+        except Exception as error:  # third parties raise what they like
+            raise FrameError(
+                f"cannot read {self.files[0]}: {_one_line(error)}; the file may be "
+                "truncated or damaged",
+                frame=index,
+            ) from error
+        positions = np.array(ts.positions, dtype=np.float64)
+        self._dtype: type = np.float32
+        vectors, periodic = _vectors(ts.dimensions), None
+        if isinstance(self._reader, _H5MDReader):
+            stored = self._reader.positions(index)
+            self._dtype = stored.dtype.type
+            positions = np.array(stored, dtype=np.float64)
+            vectors = self._reader.edges(index)
+            periodic = self._reader.boundary()
+        step, time = self._clock(ts, index)
+        radii, ids = self._particles.radii, self._particles.ids
+        return RawFrame(
+            positions=positions,
+            ids=np.arange(len(positions), dtype=np.int64) if ids is None else ids,
+            types=self._particles.types.copy(),
+            vectors=vectors,
+            periodic=periodic,
+            step=step,
+            time=time,
+            radii=None if radii is None else radii.copy(),
+        )
+
+    def spacing(self, raw: RawFrame) -> float:
+        """Return the coarser of the float spacing and the format's own."""
+        return max(self._unit, float_spacing(raw.positions, self._dtype))
+
+    def close(self) -> None:
+        """Close the reader."""
+        self._reader.close()
+
+    def _end_of_frames(self) -> float:
+        """Position behind the last frame where MDAnalysis drops a rest silently."""
+        if self.format == "DCD":
+            dcd = self._reader._file  # noqa: SLF001 - not exposed otherwise
+            sizes = dcd._header_size, dcd._firstframesize, dcd._framesize  # noqa: SLF001
+            return float(sizes[0] + sizes[1] + (self.n_frames - 1) * sizes[2])
+        if self.format in {"XTC", "TRR"}:
+            try:
+                self.read(self.n_frames - 1)
+            except FrameError:
+                return math.inf  # no silence: reading that frame will say so
+            return float(self._reader._xdr._bytes_tell())  # noqa: SLF001 - as above
+        return math.inf
+
+    def _clock(self, ts: Any, index: int) -> tuple[int | None, float | None]:
+        if self.format == "DCD":
+            header = self._reader._file.header  # noqa: SLF001 - not exposed otherwise
+            if int(header["nsavc"]) <= 0:
+                return None, None
+            step = int(header["istart"]) + index * int(header["nsavc"])
+            # MDAnalysis takes every DCD's time for AKMA units and converts it.
+            return step, step * float(header["delta"])
+        stored_step = int(ts.data["step"]) if self.format in _STEPPED else None
+        return stored_step, float(ts.time) if self.format in _TIMED else None
+
+
+def read_topology(path: Path) -> Particles:
+    """Read types and radii from a topology that MDAnalysis knows.
+
+    Raises
+    ------
+    InputError
+        If MDAnalysis cannot read the file.
+    """
+    try:
+        with collect_warnings([]):
+            universe = MDAnalysis.Universe(str(path), to_guess=(), convert_units=False)
+            return _particles(universe, path)
+    except Exception as error:  # third parties raise what they like
+        raise InputError(
+            f"MDAnalysis cannot read the topology {path}: {_one_line(error)}"
+        ) from error
+
+
+def _particles(universe: Any, path: Path) -> Particles:
+    """Types and radii that stand in the file, nothing guessed."""
+    atoms = universe.atoms
+    names = next(
+        (getattr(atoms, name) for name in ("types", "names") if hasattr(atoms, name)),
+        np.full(len(atoms), "A"),
+    )
+    type_names, types = np.unique(np.asarray(names, dtype=str), return_inverse=True)
+    radii, source = None, ""
+    if path.suffix.lower() == ".pqr":  # other parsers make radii up
+        radii = np.array(atoms.radii, dtype=np.float64)
+        source = "the radii in the PQR file"
+    return Particles(
+        tuple(type_names.tolist()), types.ravel().astype(np.int32), radii, source
+    )
+
+
+def _h5md_particles(reader: _H5MDReader) -> Particles:
+    n = int(reader.n_atoms)
+    species, radii = reader.static("species"), reader.static("radius")
+    if species is None or species.shape != (n,):
+        species = np.full(n, "A")
+    names, types = np.unique(species.astype(str), return_inverse=True)
+    if radii is not None and radii.shape != (n,):
+        radii = None
+    return Particles(
+        tuple(names.tolist()),
+        types.ravel().astype(np.int32),
+        None if radii is None else radii.astype(np.float64),
+        "the radius element of the H5MD file",
+    )
+
+
+def _vectors(dimensions: NDArray[np.float32] | None) -> NDArray[np.float64] | None:
+    """Row vectors from MDAnalysis' lengths and angles, in float64."""
+    if dimensions is None or not np.any(dimensions[:3]):
+        return None
+    six = np.array(dimensions, dtype=np.float64)
+    if np.all(six[:3] > 0.0):
+        return Box.from_any(six).vectors
+    return np.diag(six[:3])  # a missing edge: fine in a plane, else an error later
+
+
+def _stored_spacing(path: Path, name: str) -> float:
+    """Spacing that the format itself imposes, 0 if only floats do."""
+    if name == "XTC":
+        with XTCFile(str(path)) as file:
+            precision = float(file.read().prec)
+        return 1.0 / precision if precision > 0.0 else 0.0
+    if name in {"GRO", "PDB", "ENT", "PQR"}:
+        with path.open("rb") as file:
+            return decimal_spacing(_coordinate_words(file, name))
+    return 0.0
+
+
+def _refuse_more_frames(path: Path) -> None:
+    """Refuse a GRO file with several frames, of which MDAnalysis reads the first."""
+    with path.open("rb") as file:
+        next(file)
+        n = int(next(file))
+        rest = any(line.strip() for line in islice(file, n + 1, None))
+    if rest:
+        raise InputError(
+            f"{path} holds more than one frame, of which MDAnalysis reads only the "
+            "first; convert the file to XTC or TRR, or split it"
+        )
+
+
+def _coordinate_words(lines: Iterable[bytes], name: str) -> Iterator[bytes]:
+    """Coordinates of the first frame as printed."""
+    if name == "GRO":
+        rows = iter(lines)
+        next(rows)
+        n = int(next(rows))
+        for line in islice(rows, n):
+            columns = line[20:]
+            width = columns.find(b".", columns.find(b".") + 1) - columns.find(b".")
+            yield from (columns[k * width : (k + 1) * width].strip() for k in range(3))
+        return
+    for line in lines:
+        if line.startswith((b"ATOM", b"HETATM")):
+            if name == "PQR":
+                yield from line.split()[-5:-2]
+            else:
+                yield from (line[k : k + 8].strip() for k in (30, 38, 46))
+        elif line.startswith(b"ENDMDL"):
+            return
+
+
+def _one_line(error: Exception) -> str:
+    return " ".join(str(error).split()) or type(error).__name__
