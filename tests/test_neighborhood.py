@@ -266,4 +266,5 @@ def test_a_single_particle_neighbors_its_own_images():
     volumes, neighbors = voronoi(frame)
     assert volumes.tolist() == pytest.approx([8.0])
     assert neighbors.weights.sum() == pytest.approx(24.0)  # faces of a cube of side 2
-    assert len(neighbor_list(frame, 5.0).neighbors) == 0
+    assert len(neighbor_list(frame, 2.0).neighbors) == 0
+    assert len(neighbor_list(frame, 2.0, self_images=True).neighbors) == 6

@@ -6,8 +6,17 @@ proposes pairs, facets and harmonics, and every vector that comes back is
 recomputed in float64 from the true lattice vectors.
 """
 
+from trajcage.neighborhood.bond_order import hexatic, steinhardt
 from trajcage.neighborhood.pairs import PairRule, check_distinct, neighbor_list
 from trajcage.neighborhood.tessellation import voronoi
 from trajcage.neighborhood.threads import set_threads
 
-__all__ = ["PairRule", "check_distinct", "neighbor_list", "set_threads", "voronoi"]
+__all__ = [
+    "PairRule",
+    "check_distinct",
+    "hexatic",
+    "neighbor_list",
+    "set_threads",
+    "steinhardt",
+    "voronoi",
+]

@@ -20,11 +20,12 @@ PairRule = Callable[[NDArray[np.float64], NDArray[np.float64]], NDArray[np.float
 _SINGLE = 1e-6
 
 
-def neighbor_list(frame: Frame, r_max: float | PairRule) -> NeighborList:
+def neighbor_list(
+    frame: Frame, r_max: float | PairRule, *, self_images: bool = False
+) -> NeighborList:
     """Find all pairs of particles up to a center distance.
 
-    Every periodic image counts, so the cut-off may exceed half the box. The
-    images of a particle itself are left out, because they move with it.
+    Every periodic image counts, so the cut-off may exceed half the box.
 
     Parameters
     ----------
@@ -33,6 +34,9 @@ def neighbor_list(frame: Frame, r_max: float | PairRule) -> NeighborList:
     r_max : float or PairRule, length
         Largest center distance, included; or a rule that gives it for the
         radii of each pair.
+    self_images : bool
+        Whether the images of a particle itself count. They move with it, so
+        they neither cage nor hold it, but they do make up a lattice.
 
     Returns
     -------
@@ -68,7 +72,7 @@ def neighbor_list(frame: Frame, r_max: float | PairRule) -> NeighborList:
     vectors = (positions[j] - positions[i]) + shifts[k]
     limit = r_max(radii[i], radii[j]) if callable(r_max) else reach
     keep = np.einsum("ij,ij->i", vectors, vectors) <= np.square(limit)
-    keep &= i != j
+    keep &= (k != i) if self_images else (j != i)
     counts = np.bincount(i[keep], minlength=frame.n_particles)
     return NeighborList(
         offsets=np.concatenate(([0], np.cumsum(counts))),

@@ -7,6 +7,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from trajcage.model import Box, Frame, NeighborList
+from trajcage.neighborhood.boxes import freud_box, lower_triangle
 from trajcage.neighborhood.pairs import check_distinct
 
 __all__ = ["voronoi"]
@@ -49,8 +50,8 @@ def voronoi(frame: Frame) -> tuple[NDArray[np.float64], NeighborList]:
     scale = (frame.box.volume / n) ** (1.0 / d)
     padded = _padded(frame.box, positions, scale)
     fractional = padded.fractional(positions)
-    triangular = _triangular(padded.vectors) / scale
-    box = _freud_box(triangular)
+    triangular = lower_triangle(padded.vectors) / scale
+    box = freud_box(triangular)
     points = np.zeros((n, 3))
     points[:, :d] = (fractional - 0.5) @ triangular
     tessellation = freud.locality.Voronoi()
@@ -87,22 +88,6 @@ def _padded(box: Box, positions: NDArray[np.float64], spacing: float) -> Box:
     high = np.where(is_open, np.maximum(fractional.max(axis=0), 1.0) + margin, 1.0)
     vectors = box.vectors * (high - low)[:, None]
     return Box(vectors, box.origin + low @ box.vectors, box.periodic)
-
-
-def _triangular(vectors: NDArray[np.float64]) -> NDArray[np.float64]:
-    """Turn a box so that its row vectors form a lower triangle."""
-    _, upper = np.linalg.qr(vectors.T)
-    lower = upper.T
-    return np.asarray(lower * np.sign(np.diag(lower)), dtype=np.float64)
-
-
-def _freud_box(triangular: NDArray[np.float64]) -> Any:
-    """Box of freud, from edge lengths and tilt factors."""
-    if len(triangular) == 2:
-        (lx, _), (x2, ly) = triangular
-        return freud.box.Box(lx, ly, 0.0, x2 / ly, 0.0, 0.0, is2D=True)
-    (lx, _, _), (x2, ly, _), (x3, y3, lz) = triangular
-    return freud.box.Box(lx, ly, lz, x2 / ly, x3 / lz, y3 / lz, is2D=False)
 
 
 def _depends_on_outside(
