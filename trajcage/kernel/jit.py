@@ -5,7 +5,7 @@ import logging
 import os
 from collections.abc import Callable
 from pathlib import Path
-from typing import ParamSpec, TypeVar
+from typing import Any, ParamSpec, TypeVar
 
 import numba
 
@@ -58,14 +58,15 @@ def compiled(function: Callable[P, R]) -> Callable[P, R]:
     ``fastmath`` stays off, since exact volumes rely on NaN and on rounding.
     """
     cache = _CACHE_DIRECTORY is not None
-    before = numba.config.CACHE_DIR
+    config: Any = numba.config
+    before = config.CACHE_DIR
     if cache:
-        numba.config.CACHE_DIR = str(_CACHE_DIRECTORY)
+        config.CACHE_DIR = str(_CACHE_DIRECTORY)
     try:
         decorate = numba.njit(
             cache=cache, nogil=True, error_model="numpy", fastmath=False
         )
         result: Callable[P, R] = decorate(function)
     finally:
-        numba.config.CACHE_DIR = before
+        config.CACHE_DIR = before
     return result

@@ -1,0 +1,333 @@
+"""Measure the cages of many particles: grid, flood, wall, and growth of the reach."""
+
+from concurrent.futures import ThreadPoolExecutor
+from typing import NamedTuple
+
+import numpy as np
+from numpy.typing import NDArray
+
+from trajcage.kernel.codes import CLOSED, INVALID, NEED_CAPACITY, NEED_HALO
+from trajcage.kernel.flood3d import flood as flood3d
+from trajcage.kernel.grid import Grid, build_grid
+from trajcage.kernel.jit import compiled
+from trajcage.kernel.scratch import make_scratch
+from trajcage.kernel.wall3d import integrate_wall as integrate3d
+from trajcage.kernel.wall3d import opening_ratio as ratio3d
+
+__all__ = ["Cages", "measure_cages"]
+
+#: Strengths of the tie-breaking; the next one is tried if a flood came out
+#: inconsistent, which takes input that is degenerate at exactly this level.
+_SHIFTS = np.array([1e-10, 3e-9, 1e-7])
+
+_PENDING = 255
+
+
+class Cages(NamedTuple):
+    """What the kernel knows about each cage; NaN and -1 where it is not closed."""
+
+    free_volume: NDArray[np.float64]  #: (n,) length^d
+    free_surface: NDArray[np.float64]  #: (n,) length^(d-1)
+    wall_sum: NDArray[np.float64]  #: (n,) length^d
+    status: NDArray[np.uint8]  #: (n,)
+    bounding_neighbors: NDArray[np.int32]  #: (n,)
+    weakest_window: NDArray[np.float64]  #: (n,)
+    weakest_window_neighbors: NDArray[np.int64]  #: (n, d) particle indices
+    wall: "Wall | None"
+    windows: "Windows | None"
+
+
+class Wall(NamedTuple):
+    """Patches of the cage walls, one row for each bounding neighbor (image)."""
+
+    offsets: NDArray[np.int64]  #: (n + 1,)
+    neighbors: NDArray[np.int64]  #: (m,)
+    areas: NDArray[np.float64]  #: (m,) length^(d-1)
+    vectors: NDArray[np.float64]  #: (m, d) to the neighbor, length
+
+
+class Windows(NamedTuple):
+    """Shut windows of the cages, one row for each corner of the wall."""
+
+    offsets: NDArray[np.int64]  #: (n + 1,)
+    neighbors: NDArray[np.int64]  #: (m, d) the particles that form the window
+    ratios: NDArray[np.float64]  #: (m,) opening ratio
+    corners: NDArray[np.float64]  #: (m, d) corner of the wall behind it, length
+
+
+class _Rows(NamedTuple):
+    """Growing output of one thread."""
+
+    count: NDArray[np.int64]  #: (2,) rows used of patches and windows
+    patch_owner: NDArray[np.int64]
+    patch_neighbor: NDArray[np.int64]
+    patch_numbers: NDArray[np.float64]  #: area and vector
+    window_owner: NDArray[np.int64]
+    window_neighbors: NDArray[np.int64]
+    window_numbers: NDArray[np.float64]  #: ratio and corner
+
+
+def _make_rows(size: int) -> _Rows:
+    return _Rows(
+        np.zeros(2, np.int64),
+        np.empty(size, np.int64),
+        np.empty(size, np.int64),
+        np.empty((size, 4)),
+        np.empty(size, np.int64),
+        np.empty((size, 3), np.int64),
+        np.empty((size, 4)),
+    )
+
+
+@compiled
+def _keep_rows(grid, s, i, n_cells, n_corners, surface, rows):  # type: ignore[no-untyped-def]
+    """Copy patches and windows of one cage; False if the rows are full."""
+    if (
+        rows.count[0] + 4 * n_cells > len(rows.patch_owner)
+        or rows.count[1] + n_corners > len(rows.window_owner)
+    ):
+        return False
+    counted = -s.clock[0] - 0.25
+    for t in range(n_cells):
+        for f in range(4):
+            a = s.cell[t, f]
+            if s.patch[a, 0] == counted:
+                s.patch[a, 0] = -s.clock[0] - 0.5
+                row = rows.count[0]
+                rows.patch_owner[row] = i
+                rows.patch_neighbor[row] = grid.owner[s.found[a]]
+                rows.patch_numbers[row, 0] = s.patch[a, 11]
+                rows.patch_numbers[row, 1] = s.x[a]
+                rows.patch_numbers[row, 2] = s.y[a]
+                rows.patch_numbers[row, 3] = s.z[a]
+                rows.count[0] += 1
+    for q in range(n_corners):
+        t = s.corner_cell[q]
+        f = s.corner_face[q]
+        a = s.cell[t, 1 if f == 0 else 0]
+        b = s.cell[t, 2 if f <= 1 else 1]
+        c = s.cell[t, 3 if f <= 2 else 2]
+        row = rows.count[1]
+        rows.window_owner[row] = i
+        rows.window_neighbors[row, 0] = grid.owner[s.found[a]]
+        rows.window_neighbors[row, 1] = grid.owner[s.found[b]]
+        rows.window_neighbors[row, 2] = grid.owner[s.found[c]]
+        rows.window_numbers[row, 0] = ratio3d(s, a, b, c)
+        for axis in range(3):
+            rows.window_numbers[row, 1 + axis] = s.corner[q, axis]
+        rows.count[1] += 1
+    return True
+
+
+@compiled
+def _measure_range(grid, s, todo, begin, radii, settings, shifts, keep, rows, numbers, status, members):  # type: ignore[no-untyped-def]
+    """Measure particles ``todo[begin:]``; return where it stopped for more room."""
+    reach, first, r_max, tolerance = settings
+    for at in range(begin, len(todo)):
+        i = todo[at]
+        xi, yi, zi = grid.home[i, 0], grid.home[i, 1], grid.home[i, 2]
+        largest = radii[i] + r_max
+        limits = (reach, largest, tolerance, grid.halo)
+        code = INVALID
+        for attempt in range(len(shifts)):
+            code, n, n_cells, n_corners = flood3d(
+                grid, s, i, xi, yi, zi, radii[i], first, limits, shifts[attempt]
+            )
+            if code == CLOSED:
+                code, volume, surface, wall_sum, bounding, weakest, where = integrate3d(
+                    s, n, n_cells, n_corners
+                )
+            if code != INVALID:
+                break
+        if code == NEED_CAPACITY:
+            return at
+        if code == NEED_HALO:
+            status[i] = 255
+            continue
+        if code == CLOSED:
+            if keep and not _keep_rows(grid, s, i, n_cells, n_corners, surface, rows):
+                return at
+            numbers[i, 0] = volume
+            numbers[i, 1] = surface
+            numbers[i, 2] = wall_sum
+            numbers[i, 3] = weakest if where >= 0 else np.nan
+            members[i, 0] = bounding
+            if where >= 0:
+                t = s.corner_cell[where]
+                f = s.corner_face[where]
+                members[i, 1] = grid.owner[s.found[s.cell[t, 1 if f == 0 else 0]]]
+                members[i, 2] = grid.owner[s.found[s.cell[t, 2 if f <= 1 else 1]]]
+                members[i, 3] = grid.owner[s.found[s.cell[t, 3 if f <= 2 else 2]]]
+        status[i] = code
+    return len(todo)
+
+
+def measure_cages(
+    positions: NDArray[np.float64],
+    vectors: NDArray[np.float64],
+    origin: NDArray[np.float64],
+    periodic: NDArray[np.bool_],
+    radii: NDArray[np.float64],
+    *,
+    subset: NDArray[np.int64] | None = None,
+    reach: float | None = None,
+    overlap_tolerance: float = 0.0,
+    windows: bool = False,
+    threads: int = 1,
+) -> Cages:
+    """Measure cages exactly.
+
+    Parameters
+    ----------
+    positions : (n, d) float64, length
+        Particle centers, all finite.
+    vectors : (d, d) float64, length
+        Box edges as rows.
+    origin : (d,) float64, length
+        Corner of the box.
+    periodic : (d,) bool
+        Edges along which the box repeats; along the others nothing is known
+        beyond the box.
+    radii : (n,) float64, length
+        Particle radii.
+    subset : (m,) int64, optional
+        Particles to measure, all unless given.
+    reach : float, length, optional
+        A cage that extends further than this from its particle is open. Ten
+        of the largest diameters unless given.
+    overlap_tolerance : float, length
+        Overlaps up to this depth count as contacts.
+    windows : bool
+        Also return every patch of the wall and every shut window.
+    threads : int
+        Threads to share the particles among.
+
+    Returns
+    -------
+    Cages
+        The same bits for any number of threads.
+    """
+    n = len(positions)
+    # a power of two brings lengths to order one without rounding
+    scale = float(2.0 ** -np.round(np.log2(2.0 * radii.max())))
+    d = positions.shape[1]
+    xyz = np.zeros((n, 3))
+    xyz[:, :d] = positions * scale
+    edges = np.eye(3)
+    edges[:d, :d] = vectors * scale
+    corner = np.zeros(3)
+    corner[:d] = origin * scale
+    flags = np.zeros(3, bool)
+    flags[:d] = periodic
+    radius = np.ascontiguousarray(radii * scale, dtype=np.float64)
+    r_max = float(radius.max())
+    spacing = float((abs(np.linalg.det(edges[:d, :d])) / n) ** (1.0 / d))
+    first = max(1.5 * 2.0 * float(radius.mean()), 1.3 * spacing)
+    side = max(r_max, 0.75 * spacing)
+    if d == 2:
+        edges[2, 2] = side
+    far = (20.0 * r_max) if reach is None else reach * scale
+    numbers = np.full((n, 4), np.nan)
+    status = np.full(n, _PENDING, np.uint8)
+    members = np.full((n, 4), -1, np.int64)
+    wanted = np.zeros(n, bool)
+    wanted[slice(None) if subset is None else subset] = True
+    halo = 1.7 * first
+    all_rows: list[_Rows] = []
+    capacity = (512, 256)
+    while wanted.any():
+        grid = build_grid(xyz, edges, corner, flags, radius, halo, side)
+        todo = grid.order[wanted[grid.order]]
+        settings = (far, first, r_max, overlap_tolerance * scale)
+        parts = np.array_split(todo, max(1, min(threads, len(todo))))
+
+        def work(part: NDArray[np.int64], grid: Grid = grid) -> list[_Rows]:
+            return _measure_part(
+                grid, part, radius, settings, windows, capacity, numbers, status, members
+            )
+
+        if len(parts) == 1:
+            all_rows += work(parts[0])
+        else:
+            with ThreadPoolExecutor(len(parts)) as pool:
+                for rows in pool.map(work, parts):
+                    all_rows += rows
+        wanted &= status == _PENDING
+        halo *= 1.6
+        first = min(1.3 * first, halo)
+    if subset is not None:
+        rest = np.ones(n, bool)
+        rest[subset] = False
+        status[rest] = INVALID
+    numbers[:, 0] /= scale**d
+    numbers[:, 1] /= scale ** (d - 1)
+    numbers[:, 2] /= scale**d
+    wall, shut = _gather_rows(all_rows, n, d, scale) if windows else (None, None)
+    return Cages(
+        numbers[:, 0].copy(),
+        numbers[:, 1].copy(),
+        numbers[:, 2].copy(),
+        status,
+        members[:, 0].astype(np.int32),
+        numbers[:, 3].copy(),
+        members[:, 1 : 1 + d].copy(),
+        wall,
+        shut,
+    )
+
+
+def _measure_part(
+    grid: Grid,
+    todo: NDArray[np.int64],
+    radius: NDArray[np.float64],
+    settings: tuple[float, float, float, float],
+    keep: bool,
+    capacity: tuple[int, int],
+    numbers: NDArray[np.float64],
+    status: NDArray[np.uint8],
+    members: NDArray[np.int64],
+) -> list[_Rows]:
+    """Measure one share of the particles, with more room whenever asked for."""
+    n_candidates, n_cells = capacity
+    finished: list[_Rows] = []
+    begin = 0
+    while begin < len(todo):
+        scratch = make_scratch(n_candidates, n_cells)
+        rows = _make_rows(max(4 * n_cells, 64 * (len(todo) - begin)) if keep else 0)
+        begin = _measure_range(
+            grid, scratch, todo, begin, radius, settings, _SHIFTS, keep, rows,
+            numbers, status, members,
+        )
+        finished.append(rows)
+        n_candidates, n_cells = 2 * n_candidates, 2 * n_cells
+    return finished
+
+
+def _gather_rows(
+    rows: list[_Rows], n: int, d: int, scale: float
+) -> tuple[Wall, Windows]:
+    """Join the rows of all threads and sort them by particle."""
+    owner = np.concatenate([r.patch_owner[: r.count[0]] for r in rows])
+    order = np.argsort(owner, kind="stable")
+    numbers = np.concatenate([r.patch_numbers[: r.count[0]] for r in rows])[order]
+    neighbors = np.concatenate([r.patch_neighbor[: r.count[0]] for r in rows])[order]
+    wall = Wall(
+        _offsets(owner, n),
+        neighbors,
+        numbers[:, 0] / scale ** (d - 1),
+        numbers[:, 1 : 1 + d] / scale,
+    )
+    owner = np.concatenate([r.window_owner[: r.count[1]] for r in rows])
+    order = np.argsort(owner, kind="stable")
+    numbers = np.concatenate([r.window_numbers[: r.count[1]] for r in rows])[order]
+    members = np.concatenate([r.window_neighbors[: r.count[1]] for r in rows])[order]
+    shut = Windows(
+        _offsets(owner, n), members[:, :d], numbers[:, 0], numbers[:, 1 : 1 + d] / scale
+    )
+    return wall, shut
+
+
+def _offsets(owner: NDArray[np.int64], n: int) -> NDArray[np.int64]:
+    offsets = np.zeros(n + 1, np.int64)
+    np.cumsum(np.bincount(owner, minlength=n), out=offsets[1:])
+    return offsets

@@ -1,0 +1,498 @@
+"""The free region around a particle as a flood over its power diagram (3D).
+
+Method: Edelsbrunner & Muecke's weighted alpha shapes, walked locally. The
+power diagram of the neighbors without the particle has its vertices where the
+power distance to the exclusion spheres is largest. Two vertices belong to the
+same cage exactly if a path of edges with positive power connects them.
+
+All decisions use powers with broken ties: the power of the particle with
+respect to candidate k is multiplied by 1 + eps * h(k), h in [0, 1) from a
+fixed table without pattern. That makes any lattice generic, and since the shift is relative to
+the gap it also holds for contacts of 1e-12. Metric results do not use it.
+"""
+
+import numpy as np
+
+from trajcage.kernel.codes import BORDER, CLOSED, INVALID, NEED_CAPACITY, NEED_HALO
+from trajcage.kernel.codes import OPEN, OVERLAP
+from trajcage.kernel.grid import gather
+from trajcage.kernel.jit import compiled
+
+__all__ = ["collect", "flood"]
+
+
+@compiled
+def collect(grid, s, i, xi, yi, zi, ri, n, inner, outer, tolerance, shift):  # type: ignore[no-untyped-def]
+    """Make candidates of the grid points in a shell; return (code, count).
+
+    An overlap within the tolerance counts as a contact: the exclusion radius
+    of that pair is the distance itself.
+    """
+    total = gather(grid, i, xi, yi, zi, inner, outer, s.found, n)
+    if total < 0:
+        return NEED_CAPACITY, n
+    code = CLOSED
+    for k in range(n, total):
+        slot = s.found[k]
+        dx = grid.x[slot] - xi
+        dy = grid.y[slot] - yi
+        dz = grid.z[slot] - zi
+        reach = ri + grid.radius[slot]
+        distance = np.sqrt(dx * dx + dy * dy + dz * dz)
+        # (d - R)(d + R) keeps all digits of a small gap
+        power = (distance - reach) * (distance + reach)
+        if power < 0.0:
+            if reach - distance > tolerance:
+                code = OVERLAP
+            reach = distance
+            power = 0.0
+        s.x[k] = dx
+        s.y[k] = dy
+        s.z[k] = dz
+        s.reach[k] = reach
+        s.power[k] = power
+        s.shifted[k] = power * (1.0 + shift * s.tie[k])
+    return code, total
+
+
+@compiled
+def outside(grid, xi, yi, zi, px, py, pz, radius):  # type: ignore[no-untyped-def]
+    """Tell whether a ball about a point reaches beyond an open edge of the box."""
+    dx = xi + px - grid.corner[0]
+    dy = yi + py - grid.corner[1]
+    dz = zi + pz - grid.corner[2]
+    for axis in range(3):
+        if not grid.periodic[axis]:
+            f = (
+                dx * grid.inverse[0, axis]
+                + dy * grid.inverse[1, axis]
+                + dz * grid.inverse[2, axis]
+            )
+            w = radius * grid.inverse_heights[axis]
+            if f - w < 0.0 or f + w > 1.0:
+                return True
+    return False
+
+
+@compiled
+def _solve(s, a, b, c, d):  # type: ignore[no-untyped-def]
+    """Point of equal power to four candidates, and that power."""
+    x0, y0, z0, g0 = s.x[a], s.y[a], s.z[a], s.shifted[a]
+    x1, y1, z1 = s.x[b] - x0, s.y[b] - y0, s.z[b] - z0
+    x2, y2, z2 = s.x[c] - x0, s.y[c] - y0, s.z[c] - z0
+    x3, y3, z3 = s.x[d] - x0, s.y[d] - y0, s.z[d] - z0
+    h1 = s.shifted[b] - g0
+    h2 = s.shifted[c] - g0
+    h3 = s.shifted[d] - g0
+    ux, uy, uz = y2 * z3 - z2 * y3, z2 * x3 - x2 * z3, x2 * y3 - y2 * x3
+    vx, vy, vz = y3 * z1 - z3 * y1, z3 * x1 - x3 * z1, x3 * y1 - y3 * x1
+    wx, wy, wz = y1 * z2 - z1 * y2, z1 * x2 - x1 * z2, x1 * y2 - y1 * x2
+    det = x1 * ux + y1 * uy + z1 * uz
+    scale = 0.5 / det
+    px = (h1 * ux + h2 * vx + h3 * wx) * scale
+    py = (h1 * uy + h2 * vy + h3 * wy) * scale
+    pz = (h1 * uz + h2 * vz + h3 * wz) * scale
+    power = px * px + py * py + pz * pz - 2.0 * (px * x0 + py * y0 + pz * z0) + g0
+    return px, py, pz, power
+
+
+@compiled
+def _next_along(s, n, px, py, pz, nx, ny, nz, a, b, c):  # type: ignore[no-untyped-def]
+    """First candidate to share the power of ``a`` along the ray p + t n."""
+    x0, y0, z0, g0 = s.x[a], s.y[a], s.z[a], s.shifted[a]
+    best = np.inf
+    who = -1
+    for k in range(n):
+        dx = s.x[k] - x0
+        dy = s.y[k] - y0
+        dz = s.z[k] - z0
+        h = 2.0 * (nx * dx + ny * dy + nz * dz)
+        if h > 0.0 and k != a and k != b and k != c:
+            t = (s.shifted[k] - g0 - 2.0 * (px * dx + py * dy + pz * dz)) / h
+            if t < best:
+                best = t
+                who = k
+    return who, best
+
+
+@compiled
+def _ray_to_sphere(px, py, pz, nx, ny, nz, radius):  # type: ignore[no-untyped-def]
+    """Parameter at which p + t n leaves the sphere of that radius about 0."""
+    aa = nx * nx + ny * ny + nz * nz
+    bb = px * nx + py * ny + pz * nz
+    cc = px * px + py * py + pz * pz - radius * radius
+    if cc >= 0.0:
+        return 0.0
+    return (-bb + np.sqrt(bb * bb - aa * cc)) / aa
+
+
+@compiled
+def _climb(grid, s, i, xi, yi, zi, ri, n, known, limits, shift):  # type: ignore[no-untyped-def]
+    """Walk up the power distance from the particle to the first vertex.
+
+    Returns (code, candidates, radius known, a, b, c, d). The path stays in
+    the cage, since power only grows along it and every candidate that could
+    cut it is within ``known``.
+    """
+    reach, largest, tolerance, halo = limits
+    a = -1
+    b = -1
+    c = -1
+    d = -1
+    least = np.inf
+    for k in range(n):
+        if s.shifted[k] < least:
+            least = s.shifted[k]
+            a = k
+    px, py, pz = 0.0, 0.0, 0.0
+    stage = 0
+    while stage < 3:
+        need = 0.0
+        who = -1
+        step = np.inf
+        nx, ny, nz = 0.0, 0.0, 0.0
+        if a >= 0:
+            ax, ay, az = s.x[a], s.y[a], s.z[a]
+            if stage == 0:
+                nx, ny, nz = -ax, -ay, -az
+            elif stage == 1:
+                ux, uy, uz = s.x[b] - ax, s.y[b] - ay, s.z[b] - az
+                vx, vy, vz = px - ax, py - ay, pz - az
+                uu = ux * ux + uy * uy + uz * uz
+                along = (vx * ux + vy * uy + vz * uz) / uu
+                nx, ny, nz = vx - along * ux, vy - along * uy, vz - along * uz
+                if nx * nx + ny * ny + nz * nz < 1e-12 * uu:
+                    # on the line of centers: every way out is uphill
+                    if abs(ux) <= abs(uy) and abs(ux) <= abs(uz):
+                        nx, ny, nz = 0.0, uz, -uy
+                    elif abs(uy) <= abs(uz):
+                        nx, ny, nz = -uz, 0.0, ux
+                    else:
+                        nx, ny, nz = uy, -ux, 0.0
+            else:
+                ux, uy, uz = s.x[b] - ax, s.y[b] - ay, s.z[b] - az
+                vx, vy, vz = s.x[c] - ax, s.y[c] - ay, s.z[c] - az
+                nx, ny, nz = uy * vz - uz * vy, uz * vx - ux * vz, ux * vy - uy * vx
+                if (px - ax) * nx + (py - ay) * ny + (pz - az) * nz < 0.0:
+                    nx, ny, nz = -nx, -ny, -nz
+            who, step = _next_along(s, n, px, py, pz, nx, ny, nz, a, b, c)
+            edge = _ray_to_sphere(px, py, pz, nx, ny, nz, reach)
+            if who >= 0 and step <= edge:
+                qx, qy, qz = px + step * nx, py + step * ny, pz + step * nz
+                need = np.sqrt(qx * qx + qy * qy + qz * qz) + largest
+            else:
+                who = -1
+                qx, qy, qz = px + edge * nx, py + edge * ny, pz + edge * nz
+                need = reach + largest
+        else:
+            qx, qy, qz = 0.0, 0.0, 0.0
+            need = reach + largest
+        if need > known:
+            if a < 0:
+                need = min(need, 2.0 * known)
+            if not need < np.inf:
+                return INVALID, n, known, a, b, c, d
+            if need > halo:
+                return NEED_HALO, n, known, a, b, c, d
+            code, total = collect(
+                grid, s, i, xi, yi, zi, ri, n, known, need, tolerance, shift
+            )
+            if code != CLOSED:
+                return code, n, known, a, b, c, d
+            known = need
+            for k in range(n, total):
+                if stage == 0 and s.shifted[k] < least:
+                    least = s.shifted[k]
+                    a = k
+            n = total
+            continue
+        if who < 0:
+            if outside(grid, xi, yi, zi, qx, qy, qz, largest):
+                return BORDER, n, known, a, b, c, d
+            return OPEN, n, known, a, b, c, d
+        px, py, pz = qx, qy, qz
+        if stage == 0:
+            b = who
+        elif stage == 1:
+            c = who
+        else:
+            d = who
+        stage += 1
+    return CLOSED, n, known, a, b, c, d
+
+
+@compiled
+def _sorted4(a, b, c, d):  # type: ignore[no-untyped-def]
+    if a > b:
+        a, b = b, a
+    if c > d:
+        c, d = d, c
+    if a > c:
+        a, c = c, a
+    if b > d:
+        b, d = d, b
+    if b > c:
+        b, c = c, b
+    return a, b, c, d
+
+
+@compiled
+def _find(s, a, b, c, d):  # type: ignore[no-untyped-def]
+    """Look up a sorted cell; return (cell or -1, free slot of the hash table)."""
+    mask = len(s.table) - 1
+    clock = s.clock[0]
+    key = (a * 73856093) ^ (b * 19349663) ^ (c * 83492791) ^ (d * 49979687)
+    slot = (key ^ (key >> 15)) & mask
+    while s.stamp[slot] == clock:
+        t = s.table[slot]
+        if (
+            s.cell[t, 0] == a
+            and s.cell[t, 1] == b
+            and s.cell[t, 2] == c
+            and s.cell[t, 3] == d
+        ):
+            return t, slot
+        slot = (slot + 1) & mask
+    return -1, slot
+
+
+@compiled
+def _new_cell(s, t, slot, a, b, c, d, px, py, pz, power):  # type: ignore[no-untyped-def]
+    s.cell[t, 0] = a
+    s.cell[t, 1] = b
+    s.cell[t, 2] = c
+    s.cell[t, 3] = d
+    for f in range(4):
+        s.across[t, f] = -1
+    s.vertex[t, 0] = px
+    s.vertex[t, 1] = py
+    s.vertex[t, 2] = pz
+    s.vertex[t, 3] = power
+    s.table[slot] = t
+    s.stamp[slot] = s.clock[0]
+
+
+@compiled
+def _gaps(s, begin, n, t, nx, ny, nz):  # type: ignore[no-untyped-def]
+    """Power of candidates above that of vertex t; infinite for its own four."""
+    a = s.cell[t, 0]
+    px, py, pz = s.vertex[t, 0], s.vertex[t, 1], s.vertex[t, 2]
+    x, y, z, g, gap = s.x, s.y, s.z, s.shifted, s.gap
+    base = g[a] - 2.0 * (px * x[a] + py * y[a] + pz * z[a])
+    for k in range(begin, n):
+        gap[k] = g[k] - 2.0 * (px * x[k] + py * y[k] + pz * z[k]) - base
+    for f in range(4):
+        gap[s.cell[t, f]] = np.inf
+
+
+@compiled
+def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):  # type: ignore[no-untyped-def]
+    """Find all power vertices of the cage and the corners of its wall.
+
+    Parameters
+    ----------
+    grid, s : Grid, Scratch
+    i, xi, yi, zi, ri
+        Particle, its position in the grid and its radius.
+    known : float
+        Distance up to which candidates are collected at first.
+    limits : tuple of float
+        How far from the particle a cage is followed; the largest exclusion
+        radius; overlap tolerance; distance up to which the grid is complete.
+    shift : float
+        Strength of the tie-breaking.
+
+    Returns
+    -------
+    code, n_candidates, n_cells, n_corners
+    """
+    reach, largest, tolerance, halo = limits
+    s.clock[0] += 1
+    known = min(known, halo)
+    code, n = collect(grid, s, i, xi, yi, zi, ri, 0, -1.0, known, tolerance, shift)
+    if code != CLOSED:
+        return code, n, 0, 0
+    code, n, known, a, b, c, d = _climb(
+        grid, s, i, xi, yi, zi, ri, n, known, limits, shift
+    )
+    if code != CLOSED:
+        return code, n, 0, 0
+    a, b, c, d = _sorted4(a, b, c, d)
+    px, py, pz, power = _solve(s, a, b, c, d)
+    far = np.sqrt(px * px + py * py + pz * pz)
+    ball = np.sqrt(max(power, 0.0) + largest * largest)
+    while not far + ball <= known:
+        # the vertex is not final: look further and climb again
+        need = far + ball
+        if not need < np.inf:
+            return INVALID, n, 0, 0
+        if need > halo:
+            return NEED_HALO, n, 0, 0
+        code, n = collect(
+            grid, s, i, xi, yi, zi, ri, n, known, need, tolerance, shift
+        )
+        if code != CLOSED:
+            return code, n, 0, 0
+        known = need
+        code, n, known, a, b, c, d = _climb(
+            grid, s, i, xi, yi, zi, ri, n, known, limits, shift
+        )
+        if code != CLOSED:
+            return code, n, 0, 0
+        a, b, c, d = _sorted4(a, b, c, d)
+        px, py, pz, power = _solve(s, a, b, c, d)
+        far = np.sqrt(px * px + py * py + pz * pz)
+        ball = np.sqrt(max(power, 0.0) + largest * largest)
+    if outside(grid, xi, yi, zi, px, py, pz, ball):
+        return BORDER, n, 0, 0
+    t, slot = _find(s, a, b, c, d)
+    _new_cell(s, 0, slot, a, b, c, d, px, py, pz, power)
+    n_cells = 1
+    n_corners = 0
+    room = len(s.cell)
+    s.stack[0] = 0
+    height = 1
+    while height > 0:
+        height -= 1
+        t = s.stack[height]
+        open_faces = 0
+        for f in range(4):
+            if s.across[t, f] == -1:
+                open_faces += 1
+        if open_faces == 0:
+            continue
+        v0, v1, v2, v3 = s.cell[t, 0], s.cell[t, 1], s.cell[t, 2], s.cell[t, 3]
+        px, py, pz = s.vertex[t, 0], s.vertex[t, 1], s.vertex[t, 2]
+        power = s.vertex[t, 3]
+        _gaps(s, 0, n, t, px, py, pz)
+        x0, y0, z0 = s.x[v0], s.y[v0], s.z[v0]
+        x1, y1, z1 = s.x[v1] - x0, s.y[v1] - y0, s.z[v1] - z0
+        x2, y2, z2 = s.x[v2] - x0, s.y[v2] - y0, s.z[v2] - z0
+        x3, y3, z3 = s.x[v3] - x0, s.y[v3] - y0, s.z[v3] - z0
+        ux, uy, uz = y2 * z3 - z2 * y3, z2 * x3 - x2 * z3, x2 * y3 - y2 * x3
+        vx, vy, vz = y3 * z1 - z3 * y1, z3 * x1 - x3 * z1, x3 * y1 - y3 * x1
+        wx, wy, wz = y1 * z2 - z1 * y2, z1 * x2 - x1 * z2, x1 * y2 - y1 * x2
+        if x1 * ux + y1 * uy + z1 * uz > 0.0:
+            ux, uy, uz = -ux, -uy, -uz
+            vx, vy, vz = -vx, -vy, -vz
+            wx, wy, wz = -wx, -wy, -wz
+        for f in range(4):
+            if s.across[t, f] != -1:
+                continue
+            # outward normal of the face opposite to slot f, and a point on it
+            bx, by, bz = x0, y0, z0
+            if f == 0:
+                nx, ny, nz = -(ux + vx + wx), -(uy + vy + wy), -(uz + vz + wz)
+                bx, by, bz = s.x[v1], s.y[v1], s.z[v1]
+            elif f == 1:
+                nx, ny, nz = ux, uy, uz
+            elif f == 2:
+                nx, ny, nz = vx, vy, vz
+            else:
+                nx, ny, nz = wx, wy, wz
+            # power along p + t n is power + 2 slope t + square t^2
+            square = nx * nx + ny * ny + nz * nz
+            slope = nx * (px - bx) + ny * (py - by) + nz * (pz - bz)
+            crossing = np.inf
+            if slope < 0.0:
+                inside = slope * slope - power * square
+                if inside >= 0.0:
+                    crossing = power / (np.sqrt(inside) - slope)
+            while True:
+                who = -1
+                step = np.inf
+                x, y, z, gap = s.x, s.y, s.z, s.gap
+                level = nx * bx + ny * by + nz * bz
+                blocked = True
+                if crossing < np.inf:
+                    twice = 2.0 * crossing
+                    before = 0
+                    for k in range(n):
+                        h = nx * x[k] + ny * y[k] + nz * z[k] - level
+                        before += gap[k] < twice * h
+                    blocked = before == 0
+                else:
+                    blocked = False
+                if blocked:
+                    qx = px + crossing * nx
+                    qy = py + crossing * ny
+                    qz = pz + crossing * nz
+                    far = np.sqrt(qx * qx + qy * qy + qz * qz)
+                    ball = largest
+                else:
+                    for k in range(n):
+                        h = 2.0 * (nx * x[k] + ny * y[k] + nz * z[k] - level)
+                        if h > 0.0 and gap[k] < step * h:
+                            step = gap[k] / h
+                            who = k
+                    edge = _ray_to_sphere(px, py, pz, nx, ny, nz, reach)
+                    if who < 0 or step > edge:
+                        # the cage leaves the reach along this edge
+                        who = -1
+                        qx, qy, qz = px + edge * nx, py + edge * ny, pz + edge * nz
+                        far = reach
+                        ball = largest
+                    else:
+                        m0, m1, m2 = v0, v1, v2
+                        if f == 0:
+                            m0, m1, m2 = v1, v2, v3
+                        elif f == 1:
+                            m1, m2 = v2, v3
+                        elif f == 2:
+                            m2 = v3
+                        a, b, c, d = _sorted4(m0, m1, m2, np.int32(who))
+                        other, slot = _find(s, a, b, c, d)
+                        if other >= 0:
+                            break
+                        qx, qy, qz, q_power = _solve(s, a, b, c, d)
+                        far = np.sqrt(qx * qx + qy * qy + qz * qz)
+                        ball = np.sqrt(max(q_power, 0.0) + largest * largest)
+                need = far + ball
+                if need <= known:
+                    break
+                if not need < np.inf:
+                    return INVALID, n, n_cells, n_corners
+                if need > halo:
+                    return NEED_HALO, n, n_cells, n_corners
+                code, total = collect(
+                    grid, s, i, xi, yi, zi, ri, n, known, need, tolerance, shift
+                )
+                if code != CLOSED:
+                    return code, n, n_cells, n_corners
+                _gaps(s, n, total, t, px, py, pz)
+                n = total
+                known = need
+            if blocked:
+                if outside(grid, xi, yi, zi, qx, qy, qz, largest):
+                    return BORDER, n, n_cells, n_corners
+                s.corner[n_corners, 0] = qx
+                s.corner[n_corners, 1] = qy
+                s.corner[n_corners, 2] = qz
+                s.corner_cell[n_corners] = t
+                s.corner_face[n_corners] = f
+                s.across[t, f] = -2 - n_corners
+                n_corners += 1
+                continue
+            if who < 0:
+                if outside(grid, xi, yi, zi, qx, qy, qz, largest):
+                    return BORDER, n, n_cells, n_corners
+                return OPEN, n, n_cells, n_corners
+            if other < 0:
+                if outside(grid, xi, yi, zi, qx, qy, qz, ball):
+                    return BORDER, n, n_cells, n_corners
+                if n_cells == room:
+                    return NEED_CAPACITY, n, n_cells, n_corners
+                other = n_cells
+                _new_cell(s, other, slot, a, b, c, d, qx, qy, qz, q_power)
+                n_cells += 1
+                s.stack[height] = other
+                height += 1
+            # link both sides of the face
+            back = 0
+            while back < 4 and s.cell[other, back] != who:
+                back += 1
+            if back == 4 or s.across[other, back] != -1:
+                return INVALID, n, n_cells, n_corners
+            s.across[t, f] = other
+            s.across[other, back] = t
+    return CLOSED, n, n_cells, n_corners

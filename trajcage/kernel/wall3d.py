@@ -1,0 +1,491 @@
+"""Area, volume and windows of a cage from the corners of its wall (3D).
+
+The wall consists of patches of exclusion spheres, bounded by arcs in which
+two spheres meet. A patch needs no loops traced: its area is a sum over arcs
+of spherical triangles to one reference point plus the slivers between arc and
+geodesic, modulo the whole sphere (a form of Gauss-Bonnet that stays accurate
+for patches much smaller than the sphere). Its vector area is the boundary
+integral of r x dr / 2. On the sphere about x_j with radius R,
+x . n = (|x|^2 - g) / 2R, where g is the power of the particle, so that the
+divergence theorem gives the volume as sum (g A - int |x|^2 dA) / 6R, in which
+nothing cancels however small the cage.
+"""
+
+import numpy as np
+
+from trajcage.kernel.codes import CLOSED, INVALID
+from trajcage.kernel.jit import compiled
+
+__all__ = ["integrate_wall", "opening_ratio", "polish_corners"]
+
+_FULL = 4.0 * np.pi
+
+# columns of Scratch.patch
+_STAMP, _X0, _Y0, _Z0, _RE, _IM, _TURN, _AX, _AY, _AZ, _ARCS, _AREA = range(12)
+
+
+@compiled
+def polish_corners(s, n_corners):  # type: ignore[no-untyped-def]
+    """Move the corners from the spheres with broken ties to the true ones.
+
+    One Newton step; where three spheres barely meet the step would amplify
+    rounding, and the corner stays where it is (its error does not matter: the
+    throat it closes has no width there).
+    """
+    for q in range(n_corners):
+        t = s.corner_cell[q]
+        f = s.corner_face[q]
+        a = s.cell[t, 1 if f == 0 else 0]
+        b = s.cell[t, 2 if f <= 1 else 1]
+        c = s.cell[t, 3 if f <= 2 else 2]
+        px, py, pz = s.corner[q, 0], s.corner[q, 1], s.corner[q, 2]
+        pp = px * px + py * py + pz * pz
+        ax, ay, az = px - s.x[a], py - s.y[a], pz - s.z[a]
+        bx, by, bz = px - s.x[b], py - s.y[b], pz - s.z[b]
+        cx, cy, cz = px - s.x[c], py - s.y[c], pz - s.z[c]
+        fa = pp - 2.0 * (px * s.x[a] + py * s.y[a] + pz * s.z[a]) + s.power[a]
+        fb = pp - 2.0 * (px * s.x[b] + py * s.y[b] + pz * s.z[b]) + s.power[b]
+        fc = pp - 2.0 * (px * s.x[c] + py * s.y[c] + pz * s.z[c]) + s.power[c]
+        ux, uy, uz = by * cz - bz * cy, bz * cx - bx * cz, bx * cy - by * cx
+        vx, vy, vz = cy * az - cz * ay, cz * ax - cx * az, cx * ay - cy * ax
+        wx, wy, wz = ay * bz - az * by, az * bx - ax * bz, ax * by - ay * bx
+        det = ax * ux + ay * uy + az * uz
+        if abs(det) > 1e-4 * s.reach[a] * s.reach[b] * s.reach[c]:
+            scale = -0.5 / det
+            s.corner[q, 0] = px + scale * (fa * ux + fb * vx + fc * wx)
+            s.corner[q, 1] = py + scale * (fa * uy + fb * vy + fc * wy)
+            s.corner[q, 2] = pz + scale * (fa * uz + fb * vz + fc * wz)
+
+
+@compiled
+def opening_ratio(s, a, b, c):  # type: ignore[no-untyped-def]
+    """Factor on the exclusion radii at which the window a, b, c is just shut.
+
+    The three scaled spheres then meet in one point of the plane of centers:
+    |y - x_a|^2 = mu R_a^2 and likewise b and c, where y is linear in
+    mu = lambda^2. For equal spheres lambda is circumradius / R.
+    """
+    x1, y1, z1 = s.x[b] - s.x[a], s.y[b] - s.y[a], s.z[b] - s.z[a]
+    x2, y2, z2 = s.x[c] - s.x[a], s.y[c] - s.y[a], s.z[c] - s.z[a]
+    d11 = x1 * x1 + y1 * y1 + z1 * z1
+    d22 = x2 * x2 + y2 * y2 + z2 * z2
+    d12 = x1 * x2 + y1 * y2 + z1 * z2
+    ra = s.reach[a] * s.reach[a]
+    rb = s.reach[b] * s.reach[b]
+    rc = s.reach[c] * s.reach[c]
+    det = d11 * d22 - d12 * d12
+    # y - x_a = p e1 + q e2 with p, q linear in mu
+    p0 = 0.5 * (d11 * d22 - d22 * d12) / det
+    q0 = 0.5 * (d22 * d11 - d11 * d12) / det
+    p1 = 0.5 * ((ra - rb) * d22 - (ra - rc) * d12) / det
+    q1 = 0.5 * ((ra - rc) * d11 - (ra - rb) * d12) / det
+    aa = p1 * p1 * d11 + q1 * q1 * d22 + 2.0 * p1 * q1 * d12
+    bb = p0 * p1 * d11 + q0 * q1 * d22 + (p0 * q1 + q0 * p1) * d12 - 0.5 * ra
+    cc = p0 * p0 * d11 + q0 * q0 * d22 + 2.0 * p0 * q0 * d12
+    root = bb * bb - aa * cc
+    if root < 0.0 or bb >= 0.0:
+        return np.nan
+    return np.sqrt(cc / (np.sqrt(root) - bb))
+
+
+@compiled
+def _touch(s, a, px, py, pz):  # type: ignore[no-untyped-def]
+    """Start the sums of sphere a, with p as reference point, at first use."""
+    if s.patch[a, _STAMP] != s.clock[0]:
+        s.patch[a, _STAMP] = s.clock[0]
+        s.patch[a, _X0] = px - s.x[a]
+        s.patch[a, _Y0] = py - s.y[a]
+        s.patch[a, _Z0] = pz - s.z[a]
+        s.patch[a, _RE] = 1.0
+        s.patch[a, _IM] = 0.0
+        s.patch[a, _TURN] = 0.0
+        s.patch[a, _AX] = 0.0
+        s.patch[a, _AY] = 0.0
+        s.patch[a, _AZ] = 0.0
+        s.patch[a, _ARCS] = 0.0
+
+
+@compiled
+def _add_arc(s, a, ex, ey, ez, height, rho2, angle, px, py, pz, dx, dy, dz):  # type: ignore[no-untyped-def]
+    """Add the arc p -> p + d, clockwise about the outward axis e of sphere a.
+
+    ``height`` is the distance of the arc's plane from the center along e.
+    """
+    r = s.reach[a]
+    x0, y0, z0 = s.patch[a, _X0], s.patch[a, _Y0], s.patch[a, _Z0]
+    r1x, r1y, r1z = px - s.x[a], py - s.y[a], pz - s.z[a]
+    r2x, r2y, r2z = r1x + dx, r1y + dy, r1z + dz
+    # spherical triangle (reference, p, p + d): E = 2 arg(re + i im)
+    u1x, u1y, u1z = r1x - x0, r1y - y0, r1z - z0
+    tx, ty, tz = u1y * dz - u1z * dy, u1z * dx - u1x * dz, u1x * dy - u1y * dx
+    unit = 0.25 / (r * r * r)
+    im = (x0 * tx + y0 * ty + z0 * tz) * unit
+    re = unit * r * (
+        r * r
+        + x0 * (r1x + r2x) + y0 * (r1y + r2y) + z0 * (r1z + r2z)
+        + r1x * r2x + r1y * r2y + r1z * r2z
+    )
+    # sliver between geodesic and arc
+    c = height / r
+    if angle < 0.05:
+        s2 = 1.0 - c * c
+        a2 = angle * angle
+        s.patch[a, _TURN] -= (
+            0.5 * c * s2 * angle * a2
+            * (
+                1.0 / 6.0
+                - a2 / 120.0 * (1.0 - 3.0 * s2)
+                + a2 * a2 / 5040.0 * (1.0 - 15.0 * s2 + 22.5 * s2 * s2)
+            )
+        )
+        segment = angle * a2 * (1.0 / 6.0 - a2 / 120.0 + a2 * a2 / 5040.0)
+    else:
+        t2 = (r - height) / (r + height)
+        sine = np.sin(angle)
+        k_re = 1.0 + t2 * np.cos(angle)
+        k_im = t2 * sine
+        norm = 1.0 / (abs(k_re) + abs(k_im))
+        k_re *= norm
+        k_im *= norm
+        re, im = re * k_re - im * k_im, re * k_im + im * k_re
+        s.patch[a, _TURN] -= angle * (1.0 - c)
+        segment = angle - sine
+    o_re, o_im = s.patch[a, _RE], s.patch[a, _IM]
+    s.patch[a, _RE] = o_re * re - o_im * im
+    s.patch[a, _IM] = o_re * im + o_im * re
+    segment *= -0.5 * rho2
+    s.patch[a, _AX] += 0.5 * tx + segment * ex
+    s.patch[a, _AY] += 0.5 * ty + segment * ey
+    s.patch[a, _AZ] += 0.5 * tz + segment * ez
+    s.patch[a, _ARCS] += 1.0
+
+
+@compiled
+def _slot_of(s, t, a):  # type: ignore[no-untyped-def]
+    if s.cell[t, 0] == a:
+        return 0
+    if s.cell[t, 1] == a:
+        return 1
+    if s.cell[t, 2] == a:
+        return 2
+    return 3
+
+
+@compiled
+def _rotate(s, t, i, j, k, l, n_cells):  # type: ignore[no-untyped-def]
+    """Turn about the pair in slots i, j of cell t from slot l to k and on.
+
+    Returns (corner, slot of the corner's third sphere, dihedral angle turned).
+    """
+    a, b = s.cell[t, i], s.cell[t, j]
+    for _ in range(4 * n_cells):
+        other = s.across[t, l]
+        if other < 0:
+            return -2 - other, k
+        i2 = _slot_of(s, other, a)
+        j2 = _slot_of(s, other, b)
+        l2 = _slot_of(s, other, s.cell[t, k])
+        k = 6 - i2 - j2 - l2
+        t, i, j, l = other, i2, j2, l2
+    return -1, 0
+
+
+@compiled
+def _angle_about(s, a, b, c, d):  # type: ignore[no-untyped-def]
+    """Dihedral angle at the edge a b between candidates c and d."""
+    x0, y0, z0 = s.x[a], s.y[a], s.z[a]
+    ex, ey, ez = s.x[b] - x0, s.y[b] - y0, s.z[b] - z0
+    cx, cy, cz = s.x[c] - x0, s.y[c] - y0, s.z[c] - z0
+    dx, dy, dz = s.x[d] - x0, s.y[d] - y0, s.z[d] - z0
+    mx, my, mz = ey * cz - ez * cy, ez * cx - ex * cz, ex * cy - ey * cx
+    nx, ny, nz = ey * dz - ez * dy, ez * dx - ex * dz, ex * dy - ey * dx
+    kx, ky, kz = my * nz - mz * ny, mz * nx - mx * nz, mx * ny - my * nx
+    return np.arctan2(np.sqrt(kx * kx + ky * ky + kz * kz), mx * nx + my * ny + mz * nz)
+
+
+@compiled
+def _covered_half_angle(s, a, ex, ey, ez, mx, my, mz, c, qx, qy, qz):  # type: ignore[no-untyped-def]
+    """Angle about the axis e between candidate c and the arc's end q - m."""
+    wx, wy, wz = s.x[c] - mx, s.y[c] - my, s.z[c] - mz
+    along = wx * ex + wy * ey + wz * ez
+    wx, wy, wz = wx - along * ex, wy - along * ey, wz - along * ez
+    vx, vy, vz = qx - mx, qy - my, qz - mz
+    kx, ky, kz = wy * vz - wz * vy, wz * vx - wx * vz, wx * vy - wy * vx
+    return np.arctan2(np.sqrt(kx * kx + ky * ky + kz * kz), wx * vx + wy * vy + wz * vz)
+
+
+@compiled
+def _turned(s, t, i, j, k, l, n_cells):  # type: ignore[no-untyped-def]
+    """Sum of the dihedral angles that `_rotate` passes."""
+    a, b = s.cell[t, i], s.cell[t, j]
+    total = 0.0
+    for _ in range(4 * n_cells):
+        total += _angle_about(s, a, b, s.cell[t, l], s.cell[t, k])
+        other = s.across[t, l]
+        if other < 0:
+            break
+        i2 = _slot_of(s, other, a)
+        j2 = _slot_of(s, other, b)
+        l2 = _slot_of(s, other, s.cell[t, k])
+        k = 6 - i2 - j2 - l2
+        t, i, j, l = other, i2, j2, l2
+    return total
+
+
+@compiled
+def _arcs(s, n_cells, n_corners):  # type: ignore[no-untyped-def]
+    """Walk every arc of the wall once and add it to its two spheres."""
+    for q in range(n_corners):
+        for f in range(4):
+            s.walked[q, f] = 0
+    for q in range(n_corners):
+        t = s.corner_cell[q]
+        k = s.corner_face[q]
+        for l in range(4):
+            if l == k or s.walked[q, l] == 1:
+                continue
+            i = 0
+            while i == k or i == l:
+                i += 1
+            j = 6 - i - k - l
+            a, b = s.cell[t, i], s.cell[t, j]
+            end, end_slot = _rotate(s, t, i, j, k, l, n_cells)
+            if end < 0:
+                return INVALID
+            s.walked[q, l] = 1
+            s.walked[end, end_slot] = 1
+            ax, ay, az = s.x[a], s.y[a], s.z[a]
+            ex, ey, ez = s.x[b] - ax, s.y[b] - ay, s.z[b] - az
+            cx, cy, cz = s.x[s.cell[t, l]] - ax, s.y[s.cell[t, l]] - ay, s.z[s.cell[t, l]] - az
+            dx, dy, dz = s.x[s.cell[t, k]] - ax, s.y[s.cell[t, k]] - ay, s.z[s.cell[t, k]] - az
+            sense = (
+                ex * (cy * dz - cz * dy)
+                + ey * (cz * dx - cx * dz)
+                + ez * (cx * dy - cy * dx)
+            )
+            # from here on the arc runs counterclockwise about a -> b
+            p1, p2 = q, end
+            if sense < 0.0:
+                p1, p2 = end, q
+            length = np.sqrt(ex * ex + ey * ey + ez * ez)
+            ex, ey, ez = ex / length, ey / length, ez / length
+            ra, rb = s.reach[a], s.reach[b]
+            height = 0.5 * (length + (ra - rb) * (ra + rb) / length)
+            rho2 = max((ra - height) * (ra + height), 0.0)
+            mx, my, mz = ax + height * ex, ay + height * ey, az + height * ez
+            x1, y1, z1 = s.corner[p1, 0], s.corner[p1, 1], s.corner[p1, 2]
+            x2, y2, z2 = s.corner[p2, 0], s.corner[p2, 1], s.corner[p2, 2]
+            dx, dy, dz = x2 - x1, y2 - y1, z2 - z1
+            qx, qy, qz = x1 - mx, y1 - my, z1 - mz
+            chord2 = dx * dx + dy * dy + dz * dz
+            sine = (
+                ex * (qy * dz - qz * dy)
+                + ey * (qz * dx - qx * dz)
+                + ez * (qx * dy - qy * dx)
+            )
+            angle = np.arctan2(sine, rho2 - 0.5 * chord2)
+            if chord2 < 1e-6 * rho2 or rho2 == 0.0:
+                # next to nothing or next to a full circle: ask the flood
+                expected = (
+                    _turned(s, t, i, j, k, l, n_cells)
+                    - _covered_half_angle(
+                        s, a, ex, ey, ez, mx, my, mz, s.cell[t, l],
+                        s.corner[q, 0], s.corner[q, 1], s.corner[q, 2],
+                    )
+                    - _covered_half_angle(
+                        s, a, ex, ey, ez, mx, my, mz,
+                        s.cell[s.corner_cell[end], end_slot],
+                        s.corner[end, 0], s.corner[end, 1], s.corner[end, 2],
+                    )
+                )
+                if expected > np.pi:
+                    angle += 2.0 * np.pi
+            elif angle < 0.0:
+                angle += 2.0 * np.pi
+            _touch(s, a, x1, y1, z1)
+            _touch(s, b, x1, y1, z1)
+            # counterclockwise about a -> b is clockwise about b -> a
+            _add_arc(s, b, -ex, -ey, -ez, length - height, rho2, angle, x1, y1, z1, dx, dy, dz)
+            _add_arc(s, a, ex, ey, ez, height, rho2, angle, x2, y2, z2, -dx, -dy, -dz)
+    return CLOSED
+
+
+@compiled
+def _ring_is_open(s, t, i, j, n_cells):  # type: ignore[no-untyped-def]
+    """Tell whether all cells about an edge are in the cage, t the first of them."""
+    a, b = s.cell[t, i], s.cell[t, j]
+    k = 0
+    while k == i or k == j:
+        k += 1
+    l = 6 - i - j - k
+    first = t
+    for _ in range(4 * n_cells):
+        other = s.across[t, l]
+        if other <= first:
+            # round once; or a corner, or a ring already seen from an earlier cell
+            return other == first
+        i2 = _slot_of(s, other, a)
+        j2 = _slot_of(s, other, b)
+        l2 = _slot_of(s, other, s.cell[t, k])
+        k = 6 - i2 - j2 - l2
+        t, i, j, l = other, i2, j2, l2
+    return False
+
+
+@compiled
+def _circles_and_islands(s, n, n_cells):  # type: ignore[no-untyped-def]
+    """Add full circles in which two spheres meet, and spheres without any arc."""
+    for t in range(n_cells):
+        for i in range(3):
+            for j in range(i + 1, 4):
+                # the two faces of this cell at the edge must be open
+                k = 0
+                while k == i or k == j:
+                    k += 1
+                l = 6 - i - j - k
+                if s.across[t, k] < t or s.across[t, l] < t:
+                    continue
+                a, b = s.cell[t, i], s.cell[t, j]
+                ex, ey, ez = s.x[b] - s.x[a], s.y[b] - s.y[a], s.z[b] - s.z[a]
+                length = np.sqrt(ex * ex + ey * ey + ez * ez)
+                ra, rb = s.reach[a], s.reach[b]
+                height = 0.5 * (length + (ra - rb) * (ra + rb) / length)
+                rho2 = (ra - height) * (ra + height)
+                if rho2 <= 0.0 or not _ring_is_open(s, t, i, j, n_cells):
+                    continue
+                ex, ey, ez = ex / length, ey / length, ez / length
+                mx = s.x[a] + height * ex
+                my = s.y[a] + height * ey
+                mz = s.z[a] + height * ez
+                hidden = False
+                for k in range(n):
+                    dx, dy, dz = s.x[k] - mx, s.y[k] - my, s.z[k] - mz
+                    if (
+                        dx * dx + dy * dy + dz * dz - s.reach[k] * s.reach[k] < -rho2
+                        and k != a
+                        and k != b
+                    ):
+                        hidden = True
+                if hidden:
+                    continue
+                _touch(s, a, mx, my, mz)
+                _touch(s, b, mx, my, mz)
+                s.patch[a, _TURN] -= 2.0 * np.pi * (1.0 - height / ra)
+                s.patch[b, _TURN] -= 2.0 * np.pi * (1.0 - (length - height) / rb)
+                half = np.pi * rho2
+                s.patch[a, _AX] -= half * ex
+                s.patch[a, _AY] -= half * ey
+                s.patch[a, _AZ] -= half * ez
+                s.patch[b, _AX] += half * ex
+                s.patch[b, _AY] += half * ey
+                s.patch[b, _AZ] += half * ez
+    for t in range(n_cells):
+        for i in range(4):
+            a = s.cell[t, i]
+            if s.patch[a, _STAMP] == s.clock[0]:
+                continue
+            own = s.reach[a] * s.reach[a]
+            hidden = False
+            for k in range(n):
+                dx, dy, dz = s.x[k] - s.x[a], s.y[k] - s.y[a], s.z[k] - s.z[a]
+                if dx * dx + dy * dy + dz * dz - s.reach[k] * s.reach[k] < -own and k != a:
+                    hidden = True
+            _touch(s, a, s.x[a], s.y[a], s.z[a])
+            if hidden:
+                # nothing of this sphere is seen: mark it as looked at
+                s.patch[a, _ARCS] = -1.0
+
+
+@compiled
+def _patch_area(s, a):  # type: ignore[no-untyped-def]
+    """Area of the wall on sphere a over R^2, between 0 and 4 pi."""
+    if s.patch[a, _ARCS] < 0.0:
+        return 0.0
+    area = s.patch[a, _TURN]
+    if s.patch[a, _ARCS] == 0.0:
+        return area + _FULL
+    area += 2.0 * np.arctan2(s.patch[a, _IM], s.patch[a, _RE])
+    area -= _FULL * np.floor(area / _FULL)
+    if area > _FULL - 1e-6:
+        # rounding below zero, or a sphere all but free: its vector area tells
+        outward = (
+            s.patch[a, _AX] * s.patch[a, _X0]
+            + s.patch[a, _AY] * s.patch[a, _Y0]
+            + s.patch[a, _AZ] * s.patch[a, _Z0]
+        )
+        r = s.reach[a]
+        if outward > -1e-14 * r * r * r:
+            area -= _FULL
+    return area
+
+
+@compiled
+def integrate_wall(s, n, n_cells, n_corners):  # type: ignore[no-untyped-def]
+    """Volume, area, wall sum, bounding neighbors and weakest window of a cage.
+
+    Returns
+    -------
+    code, volume, surface, wall_sum, bounding, weakest, corner
+        ``weakest`` is the largest opening ratio over the shut windows and
+        ``corner`` the corner behind it (-1 if the wall has none).
+    """
+    polish_corners(s, n_corners)
+    code = _arcs(s, n_cells, n_corners)
+    if code != CLOSED:
+        return code, 0.0, 0.0, 0.0, 0, 0.0, -1
+    _circles_and_islands(s, n, n_cells)
+    volume = 0.0
+    surface = 0.0
+    wall_sum = 0.0
+    tx, ty, tz = 0.0, 0.0, 0.0
+    for t in range(n_cells):
+        for i in range(4):
+            a = s.cell[t, i]
+            if s.patch[a, _STAMP] != s.clock[0]:
+                continue
+            s.patch[a, _STAMP] = -s.clock[0]
+            r = s.reach[a]
+            area = _patch_area(s, a) * r * r
+            s.patch[a, _AREA] = area
+            ax, ay, az = s.patch[a, _AX], s.patch[a, _AY], s.patch[a, _AZ]
+            tx += ax
+            ty += ay
+            tz += az
+            x, y, z = s.x[a], s.y[a], s.z[a]
+            # int |x|^2 dA from |x|^2 = 2 x . x_j - g on the sphere
+            moment = (
+                2.0 * (x * (x * area + r * ax) + y * (y * area + r * ay) + z * (z * area + r * az))
+                - s.power[a] * area
+            )
+            volume += (s.power[a] * area - moment) / (6.0 * r)
+            surface += area
+            wall_sum += r * area
+    closure = np.sqrt(tx * tx + ty * ty + tz * tz)
+    if not closure <= 1e-7 * surface + 1e-280:
+        return INVALID, 0.0, 0.0, 0.0, 0, 0.0, -1
+    bounding = 0
+    for t in range(n_cells):
+        for i in range(4):
+            a = s.cell[t, i]
+            if s.patch[a, _STAMP] == -s.clock[0]:
+                # count each sphere once; patches born from broken ties have no area
+                if s.patch[a, _AREA] > 1e-10 * surface:
+                    bounding += 1
+                    s.patch[a, _STAMP] = -s.clock[0] - 0.25
+                else:
+                    s.patch[a, _STAMP] = -s.clock[0] - 0.5
+    weakest = -1.0
+    where = -1
+    for q in range(n_corners):
+        t = s.corner_cell[q]
+        f = s.corner_face[q]
+        ratio = opening_ratio(
+            s,
+            s.cell[t, 1 if f == 0 else 0],
+            s.cell[t, 2 if f <= 1 else 1],
+            s.cell[t, 3 if f <= 2 else 2],
+        )
+        if ratio > weakest:
+            weakest = ratio
+            where = q
+    return CLOSED, volume, surface, wall_sum, bounding, weakest, where
