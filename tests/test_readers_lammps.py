@@ -303,6 +303,20 @@ def test_lattice_printed_in_full_is_not_taken_for_coarse(tmp_path):
         assert trajectory.frame(0).resolution <= 1.01e-5
 
 
+def test_dump_under_any_name(tmp_path):
+    path = write(tmp_path / "dump.melt", dump_frame(["1 1 1 2 3"]))
+    with open_dump(path) as trajectory:
+        assert trajectory.describe().format == "LAMMPS dump"
+
+
+def test_box_bounds_in_the_wrong_order(tmp_path):
+    path = write(
+        tmp_path / "a.dump", dump_frame(["1 1 1 2 3"], bounds=["10 0", "0 9", "0 9"])
+    )
+    with pytest.raises(FrameError, match="bounds low < high"):
+        open_dump(path)
+
+
 def test_no_timestep_lines(tmp_path):
     path = tmp_path / "a.dump"
     path.write_text("nothing of the kind\n")

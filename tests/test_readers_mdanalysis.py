@@ -5,6 +5,7 @@ import shutil
 import subprocess
 import sys
 
+import gsd.hoomd
 import h5py
 import MDAnalysis
 import numpy as np
@@ -349,3 +350,64 @@ def test_topology_without_coordinates(tmp_path):
     )
     with pytest.raises(InputError, match="no coordinates; give the trajectory"):
         open_files(path)
+
+
+def test_pdb_placeholder_box_is_no_box(tmp_path):
+    path = tmp_path / "a.pdb"
+    path.write_text(
+        "CRYST1    1.000    1.000    1.000  90.00  90.00  90.00 P 1           1\n"
+        "ATOM      1  A   HS  A   1       1.000   2.000   3.000  1.00  0.00\nEND\n"
+    )
+    with pytest.raises(InputError, match="no box"):
+        open_files(path)
+    with open_files(path, box="9,9,9") as trajectory:
+        assert any("CRYST1" in note for note in trajectory.describe().notes)
+
+
+def test_pdb_names_go_before_elements(tmp_path):
+    path = tmp_path / "a.pdb"
+    rows = [
+        f"ATOM      {i}  {name}   HS  A   1       {i}.000   2.000   3.000  1.00  0.00"
+        "           C"
+        for i, name in enumerate("BAB", start=1)
+    ]
+    path.write_text("\n".join([*rows, "END"]) + "\n")
+    with open_files(path, box="9,9,9", diameter="A=1,B=2") as trajectory:
+        assert trajectory.frame(0).radii.tolist() == [1.0, 0.5, 1.0]
+
+
+def test_gsd_topology_beside_dcd_makes_no_radii_up(tmp_path):
+    frame = gsd.hoomd.Frame()
+    frame.particles.N = 4
+    frame.particles.position = POSITIONS
+    frame.particles.types = ["A", "B"]
+    frame.particles.typeid = [0, 1, 1, 0]
+    run = write_frames(tmp_path / "run.dcd")
+    for diameters in (None, [1.0, 1.4, 1.4, 1.0]):
+        frame.particles.diameter = diameters
+        with gsd.hoomd.open(str(tmp_path / "top.gsd"), "w") as file:
+            file.append(frame)
+        if diameters is None:
+            with pytest.raises(InputError, match="no particle diameters"):
+                open_files(tmp_path / "top.gsd", run, diameter=None)
+        else:
+            with open_files(tmp_path / "top.gsd", run, diameter=None) as trajectory:
+                radii = trajectory.frame(2).radii
+            np.testing.assert_allclose(radii, [0.5, 0.7, 0.7, 0.5], rtol=1e-7)
+
+
+def test_h5md_in_the_open_needs_no_edges(tmp_path):
+    path = write_h5md(tmp_path / "a.h5md", boundary=("none",) * 3)
+    with h5py.File(path, "a") as file:
+        del file["particles/colloids/box/edges"]
+    with open_files(path) as trajectory:
+        box = trajectory.frame(0).box
+    np.testing.assert_allclose(box.lengths, [2.75, 3.0, 4.0])
+    assert box.periodic == (False, False, False)
+
+
+def test_frames_own_their_arrays(tmp_path):
+    with open_files(write_frames(tmp_path / "run.dcd")) as trajectory:
+        first = trajectory.frame(0)
+        trajectory.frame(2)
+    np.testing.assert_allclose(first.positions, POSITIONS, atol=1e-6)

@@ -6,21 +6,24 @@ changes and rounds to single precision.
 """
 
 import mmap
-import re
-from dataclasses import dataclass
 from pathlib import Path
 
 import numpy as np
 from numpy.typing import NDArray
 
 from trajcage.errors import FrameError, InputError
+from trajcage.readers.lammps_text import (
+    BLOCK_HEAD,
+    DumpBlock,
+    DumpError,
+    find_blocks,
+    parse_block,
+)
 from trajcage.readers.source import Particles, RawFrame, Source
 from trajcage.readers.text import decimal_spacing, to_floats, to_integers
 
 __all__ = ["LammpsDumpSource"]
 
-_FRAME_MARK = b"ITEM: TIMESTEP"
-_TIME = re.compile(rb"ITEM: TIME\r?\n\s*(\S+)\s*\r?\n$")
 # Coordinate columns by preference: wrapped before unwrapped, plain before scaled.
 _COORDINATES = {
     "x": ("x", "y", "z"),
@@ -28,19 +31,6 @@ _COORDINATES = {
     "xs": ("xs", "ys", "zs"),
     "xsu": ("xsu", "ysu", "zsu"),
 }
-
-
-@dataclass(frozen=True, eq=False)
-class _Block:
-    """The parts of one frame's text."""
-
-    step: int
-    time: float | None
-    vectors: NDArray[np.float64]
-    origin: NDArray[np.float64]
-    periodic: tuple[bool, ...] | None
-    columns: list[str]
-    words: NDArray[np.bytes_]
 
 
 class LammpsDumpSource(Source):
@@ -69,12 +59,12 @@ class LammpsDumpSource(Source):
         self._companion = companion
         with path.open("rb") as file:
             self._map = mmap.mmap(file.fileno(), 0, access=mmap.ACCESS_READ)
-        self._offsets = _find_frames(self._map)
+        self._offsets = find_blocks(self._map)
         self.n_frames = len(self._offsets) - 1
         if self.n_frames == 0:
             self.close()
             raise InputError(
-                f"expected a LAMMPS text dump with lines '{_FRAME_MARK.decode()}', "
+                f"expected a LAMMPS text dump with lines '{BLOCK_HEAD.decode()}', "
                 f"found none in {path}"
             )
         try:
@@ -150,7 +140,7 @@ class LammpsDumpSource(Source):
         """Close the file."""
         self._map.close()
 
-    def _assemble(self, block: _Block, index: int) -> RawFrame:
+    def _assemble(self, block: DumpBlock, index: int) -> RawFrame:
         words, columns = block.words, block.columns
         missing = [name for name in self._coordinates if name not in columns]
         if missing:
@@ -230,79 +220,16 @@ class LammpsDumpSource(Source):
             images[:, axis] = to_integers(words[:, columns.index(name)])
         return images
 
-    def _block(self, index: int) -> _Block:
+    def _block(self, index: int) -> DumpBlock:
         start, stop = self._offsets[index], self._offsets[index + 1]
-        found = _TIME.search(self._map[max(0, start - 100) : start])
-        step: int | None = None
         try:
-            lines = _Lines(self._map[start:stop])
-            lines.expect(b"ITEM: TIMESTEP")
-            step = int(lines.next())
-            lines.expect(b"ITEM: NUMBER OF ATOMS")
-            n = int(lines.next())
-            vectors, origin, periodic = _read_box(lines)
-            columns = lines.expect(b"ITEM: ATOMS").decode().split()
-            words = lines.table(n, len(columns))
-            time = float(found[1]) if found else None
-        except ValueError as error:
+            return parse_block(
+                self._map[start:stop], before=self._map[max(0, start - 100) : start]
+            )
+        except DumpError as error:
             raise FrameError(
-                f"cannot read {self.files[0]}: {error}", frame=index, step=step
+                f"cannot read {self.files[0]}: {error}", frame=index, step=error.step
             ) from None
-        return _Block(step, time, vectors, origin, periodic, columns, words)
-
-
-class _Lines:
-    """A cursor over the lines of one frame."""
-
-    def __init__(self, text: bytes) -> None:
-        self._text = text
-        self._at = 0
-
-    def next(self) -> bytes:
-        """Return the next line; raises ValueError past the last complete one."""
-        end = self._text.find(b"\n", self._at)
-        if end < 0:
-            raise ValueError("the file ends inside this frame (truncated?)")
-        line, self._at = self._text[self._at : end], end + 1
-        return line.strip()
-
-    def expect(self, head: bytes) -> bytes:
-        """Return what follows the head on the next line."""
-        line = self.next()
-        if not line.startswith(head):
-            raise ValueError(f"expected {head.decode()!r}, found {line[:60]!r}")
-        return line[len(head) :].strip()
-
-    def table(self, n: int, n_columns: int) -> NDArray[np.bytes_]:
-        """Return n lines of words, (n, n_columns)."""
-        text = self._text[self._at :]
-        if n == 0:
-            raise ValueError("expected particles, found none")
-        if not text.endswith(b"\n"):
-            raise ValueError(
-                "the file ends inside a line (truncated?); end a complete file with "
-                "a line break"
-            )
-        rows = text.split(b"\n")
-        if len(rows) - 1 < n:
-            raise ValueError(f"expected {n} particles, found {len(rows) - 1} lines")
-        words = b" ".join(rows[:n]).split()
-        if len(words) != n * n_columns:
-            raise ValueError(
-                f"expected {n} lines of {n_columns} columns, found {len(words)} words "
-                f"instead of {n * n_columns}"
-            )
-        return np.array(words).reshape(n, n_columns)
-
-
-def _find_frames(text: mmap.mmap) -> list[int]:
-    """Byte offsets of the frames and of the end of the file."""
-    offsets = []
-    at = text.find(_FRAME_MARK)
-    while at >= 0:
-        offsets.append(at)
-        at = text.find(_FRAME_MARK, at + len(_FRAME_MARK))
-    return [*offsets, len(text)]
 
 
 def _choose_coordinates(columns: list[str], path: Path) -> tuple[str, ...]:
@@ -316,35 +243,6 @@ def _choose_coordinates(columns: list[str], path: Path) -> tuple[str, ...]:
         "expected one of the coordinate columns x y z, xu yu zu, xs ys zs or "
         f"xsu ysu zsu, {path} has {' '.join(columns)}"
     )
-
-
-def _read_box(
-    lines: _Lines,
-) -> tuple[NDArray[np.float64], NDArray[np.float64], tuple[bool, ...] | None]:
-    head = lines.expect(b"ITEM: BOX BOUNDS").decode().split()
-    rows = [np.array(lines.next().split()).astype(np.float64) for _ in range(3)]
-    flags = [word for word in head if re.fullmatch("[pfsm]{2}", word)]
-    periodic = tuple(word == "pp" for word in flags) if len(flags) == 3 else None
-    if head[:2] == ["abc", "origin"]:  # general triclinic: three vectors and a corner
-        general = np.array(rows)
-        if general.shape != (3, 4):
-            raise ValueError("expected three lines of four numbers after BOX BOUNDS")
-        return general[:, :3], general[:, 3], periodic
-    tilted = head[:3] == ["xy", "xz", "yz"]
-    if any(len(row) != (3 if tilted else 2) for row in rows):
-        raise ValueError(
-            f"expected three lines of {3 if tilted else 2} numbers after BOX BOUNDS"
-        )
-    low, high = np.array([row[:2] for row in rows]).T
-    if not tilted:
-        return np.diag(high - low), low, periodic
-    xy, xz, yz = (float(row[2]) for row in rows)
-    # BOX BOUNDS of a tilted box are those of its bounding box.
-    low = low - [min(0.0, xy, xz, xy + xz), min(0.0, yz), 0.0]
-    high = high - [max(0.0, xy, xz, xy + xz), max(0.0, yz), 0.0]
-    lx, ly, lz = high - low
-    vectors = np.array([[lx, 0.0, 0.0], [xy, ly, 0.0], [xz, yz, lz]])
-    return vectors, low, periodic
 
 
 def _rows(companion: Particles, ids: NDArray[np.int64]) -> NDArray[np.intp]:

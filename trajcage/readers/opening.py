@@ -23,6 +23,11 @@ _FRAMES: dict[str, type[GsdSource] | type[LammpsDumpSource] | type[XyzSource]] =
     ".extxyz": XyzSource,
 }
 _DATA_SUFFIXES = {".data", ".lammpsdata"}
+# First bytes that settle the format whatever the file is called (dump.melt).
+_FIRST_BYTES = {
+    b"ITEM: ": ".dump",
+    (0x65DF65DF65DF65DF).to_bytes(8, "little"): ".gsd",
+}
 
 
 def open_trajectory(options: InputOptions) -> Trajectory:
@@ -30,7 +35,8 @@ def open_trajectory(options: InputOptions) -> Trajectory:
 
     GSD, LAMMPS and XYZ files are read here, since MDAnalysis loses boxes,
     boundaries, diameters or columns of theirs; all others by MDAnalysis. The
-    suffix of a file names its format.
+    suffix of a file names its format, except that LAMMPS dumps and GSD files
+    are known by their first bytes under any name.
 
     Parameters
     ----------
@@ -61,29 +67,35 @@ def open_trajectory(options: InputOptions) -> Trajectory:
 
 def _open_source(topology: Path, trajectory: Path | None) -> Source:
     path = topology if trajectory is None else trajectory
-    suffix = path.suffix.lower()
-    if suffix in _DATA_SUFFIXES:
+    kind = _kind(path)
+    if kind in _DATA_SUFFIXES:
         if trajectory is not None:
             raise InputError(f"a LAMMPS data file holds no trajectory: {path}")
         return LammpsDataSource(path)
-    if suffix in _FRAMES:
+    if kind in _FRAMES:
         companion = None if trajectory is None else _companion(topology)
-        return _FRAMES[suffix](path, companion)
-    if trajectory is None:
-        return UniverseSource(topology)
-    own = topology.suffix.lower() in {*_FRAMES, *_DATA_SUFFIXES}
-    return UniverseSource(_companion(topology) if own else topology, trajectory)
+        return _FRAMES[kind](path, companion)
+    own = _kind(topology) in {*_FRAMES, *_DATA_SUFFIXES}
+    return UniverseSource(_companion(topology) if own else topology, path)
+
+
+def _kind(path: Path) -> str:
+    """Suffix that names the format."""
+    with path.open("rb") as file:
+        head = file.read(8)
+    named = (suffix for first, suffix in _FIRST_BYTES.items() if head.startswith(first))
+    return next(named, path.suffix.lower())
 
 
 def _companion(topology: Path) -> Particles:
     """Read the particles from a topology beside a trajectory."""
-    suffix = topology.suffix.lower()
-    if suffix not in {*_FRAMES, *_DATA_SUFFIXES}:
+    kind = _kind(topology)
+    if kind not in {*_FRAMES, *_DATA_SUFFIXES}:
         return read_topology(topology)
     source = (
         LammpsDataSource(topology)
-        if suffix in _DATA_SUFFIXES
-        else _FRAMES[suffix](topology)
+        if kind in _DATA_SUFFIXES
+        else _FRAMES[kind](topology)
     )
     try:
         raw = source.read(0)

@@ -51,7 +51,7 @@ class Region:
             self.box_source = "Box given by the user."
         elif first.vectors is not None:
             self.box_source = f"Box from {source.box_source}."
-        elif options.periodic == "none":
+        elif _open_everywhere(options.periodic, first):
             self.box_source = (
                 "No box: the region is the bounding box of the particle centers, "
                 "frame by frame."
@@ -148,7 +148,7 @@ class Region:
         return np.diag(self._given)
 
     def _bounding_box(self, raw: RawFrame) -> Box:
-        if self._periodic != "none":
+        if not _open_everywhere(self._periodic, raw):
             raise InputError("the frame has no box, unlike the first frame")
         points = raw.positions[:, : self.dimensions]
         points = points[np.isfinite(points).all(axis=1)]
@@ -178,6 +178,12 @@ class Region:
             f"at the origin and {outside['center']} if it is centered there; give a "
             "box that holds them, or move the particles"
         )
+
+
+def _open_everywhere(periodic: str | None, raw: RawFrame) -> bool:
+    if periodic is not None:
+        return periodic == "none"
+    return raw.periodic is not None and not any(raw.periodic)
 
 
 def _dimensions(

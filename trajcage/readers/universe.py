@@ -5,7 +5,6 @@ particle diameter would come out ten times too large beside diameters given by
 the user: `convert_units` is always False here.
 """
 
-import math
 from collections.abc import Iterable, Iterator
 from itertools import islice
 from pathlib import Path
@@ -14,12 +13,12 @@ from typing import Any
 import MDAnalysis
 import numpy as np
 from MDAnalysis.coordinates.core import reader as open_reader
-from MDAnalysis.coordinates.H5MD import H5MDReader
 from MDAnalysis.lib.formats.libmdaxdr import XTCFile
 from numpy.typing import NDArray
 
 from trajcage.errors import FrameError, InputError
 from trajcage.model import Box
+from trajcage.readers.h5md import PlainH5MDReader
 from trajcage.readers.source import (
     Particles,
     RawFrame,
@@ -38,39 +37,6 @@ _TIMED = {*_STEPPED, "NCDF"}
 _H5MD_SUFFIXES = {".h5md", ".h5"}
 
 
-class _H5MDReader(H5MDReader):  # type: ignore[misc] # MDAnalysis ships no types
-    """MDAnalysis' H5MD reader without units, and with what it leaves out."""
-
-    def _set_translated_units(self) -> None:
-        """Leave units alone: unknown ones must not be an error, none is used."""
-        self.units = dict.fromkeys(("time", "length", "velocity", "force"))
-
-    def positions(self, index: int) -> NDArray[np.floating[Any]]:
-        """Return positions in the precision of the file."""
-        return np.asarray(self._particle_group["position/value"][index])
-
-    def edges(self, index: int) -> NDArray[np.float64] | None:
-        """Return the box edges as rows, unrotated."""
-        if "edges" not in self._particle_group["box"]:
-            return None
-        edges = np.array(self._particle_group["box/edges/value"][index], np.float64)
-        return np.diag(edges) if edges.ndim == 1 else edges
-
-    def boundary(self) -> tuple[bool, ...]:
-        """Return which edges are periodic."""
-        flags = self._particle_group["box"].attrs["boundary"]
-        words = [f.decode() if isinstance(f, bytes) else str(f) for f in flags]
-        return tuple(word == "periodic" for word in words)
-
-    def static(self, name: str) -> NDArray[Any] | None:
-        """Return the first value of a particle element, if it is there."""
-        if name not in self._particle_group:
-            return None
-        element = self._particle_group[name]
-        values = element["value"][0] if hasattr(element, "keys") else element[()]
-        return np.asarray(values)
-
-
 class UniverseSource(Source):
     """A trajectory opened by MDAnalysis.
 
@@ -78,8 +44,8 @@ class UniverseSource(Source):
     ----------
     topology : Path or Particles
         A topology file, or the particles if another reader has read them.
-    trajectory : Path, optional
-        The file with the frames, if it is another one.
+    path : Path
+        The file with the frames; it can be the topology itself.
 
     Raises
     ------
@@ -87,46 +53,37 @@ class UniverseSource(Source):
         If MDAnalysis cannot read the files or they do not match.
     """
 
-    def __init__(
-        self, topology: Path | Particles, trajectory: Path | None = None
-    ) -> None:
+    def __init__(self, topology: Path | Particles, path: Path) -> None:
         self.notes = []
-        path = trajectory if trajectory is not None else topology
-        if isinstance(path, Particles):
-            raise TypeError("particles without a trajectory file")
         self.files = (path,)
+        self._reader: Any = None
         self.format = path.suffix.lstrip(".").upper() or "file without suffix"
-        self.box_source = f"the {self.format} file"
         try:
             with collect_warnings(self.notes):
                 particles = self._open(topology, path)
+            self.n_frames = int(self._reader.n_frames)
+            self._unit = _stored_spacing(path, self.format)
         except InputError:
             raise
         except Exception as error:  # third parties raise what they like
             raise InputError(
                 f"MDAnalysis cannot read {path}: {_one_line(error)}; expected a format "
-                "that MDAnalysis knows by its suffix (GSD, LAMMPS dump or data, XYZ, "
-                "XTC, TRR, DCD, GRO, PDB, H5MD, ...), with a topology file before it "
-                "if it needs one"
+                "that MDAnalysis knows by its suffix (XTC, TRR, DCD, GRO, PDB, H5MD, "
+                "...) or GSD, LAMMPS (.dump, .lammpstrj, .data) or XYZ, with a "
+                "topology file before it if it needs one"
             ) from error
+        self.box_source = f"the {self.format} file"
         self.type_names = particles.type_names
         self.radii_source = particles.radii_source
         self._particles = particles
-        self.n_frames = int(self._reader.n_frames)
-        self._unit = _stored_spacing(path, self.format)
-        lost = path.stat().st_size - self._end_of_frames()
-        if lost > 0:
-            self.notes.append(
-                f"{lost} bytes after the last frame are no complete frame: the file "
-                "was truncated, or is still being written"
-            )
+        self._note_lost_bytes()
 
     def _open(self, topology: Path | Particles, path: Path) -> Particles:
         if path.suffix.lower() in _H5MD_SUFFIXES:
-            self._reader = _H5MDReader(str(path), convert_units=False)
+            self._reader = PlainH5MDReader(str(path), convert_units=False)
             self.format = "H5MD"
             if topology == path:
-                found = _h5md_particles(self._reader)
+                found = self._reader.particles()
             elif isinstance(topology, Particles):
                 found = topology
             else:
@@ -160,27 +117,28 @@ class UniverseSource(Source):
         """Read one frame."""
         try:
             with collect_warnings(self.notes):
-                ts = self._reader[index]
+                return self._extract(self._reader[index], index)
         except Exception as error:  # third parties raise what they like
             raise FrameError(
                 f"cannot read {self.files[0]}: {_one_line(error)}; the file may be "
                 "truncated or damaged",
                 frame=index,
             ) from error
-        positions = np.array(ts.positions, dtype=np.float64)
-        self._dtype: type = np.float32
-        vectors, periodic = _vectors(ts.dimensions), None
-        if isinstance(self._reader, _H5MDReader):
+
+    def _extract(self, ts: Any, index: int) -> RawFrame:
+        if isinstance(self._reader, PlainH5MDReader):
             stored = self._reader.positions(index)
-            self._dtype = stored.dtype.type
-            positions = np.array(stored, dtype=np.float64)
             vectors = self._reader.edges(index)
             periodic = self._reader.boundary()
+        else:
+            stored, vectors, periodic = ts.positions, _vectors(ts.dimensions), None
+        self._dtype: type = stored.dtype.type
         step, time = self._clock(ts, index)
         radii, ids = self._particles.radii, self._particles.ids
+        n = len(stored)
         return RawFrame(
-            positions=positions,
-            ids=np.arange(len(positions), dtype=np.int64) if ids is None else ids,
+            positions=np.array(stored, dtype=np.float64),
+            ids=np.arange(n, dtype=np.int64) if ids is None else ids.copy(),
             types=self._particles.types.copy(),
             vectors=vectors,
             periodic=periodic,
@@ -197,19 +155,26 @@ class UniverseSource(Source):
         """Close the reader."""
         self._reader.close()
 
-    def _end_of_frames(self) -> float:
-        """Position behind the last frame where MDAnalysis drops a rest silently."""
+    def _note_lost_bytes(self) -> None:
+        """Tell of an incomplete last frame, which MDAnalysis drops in silence."""
         if self.format == "DCD":
             dcd = self._reader._file  # noqa: SLF001 - not exposed otherwise
             sizes = dcd._header_size, dcd._firstframesize, dcd._framesize  # noqa: SLF001
-            return float(sizes[0] + sizes[1] + (self.n_frames - 1) * sizes[2])
-        if self.format in {"XTC", "TRR"}:
+            end = int(sizes[0] + sizes[1] + (self.n_frames - 1) * sizes[2])
+        elif self.format in {"XTC", "TRR"}:
             try:
                 self.read(self.n_frames - 1)
             except FrameError:
-                return math.inf  # no silence: reading that frame will say so
-            return float(self._reader._xdr._bytes_tell())  # noqa: SLF001 - as above
-        return math.inf
+                return  # no silence: whoever reads that frame is told
+            end = int(self._reader._xdr._bytes_tell())  # noqa: SLF001 - as above
+        else:
+            return
+        lost = self.files[0].stat().st_size - end
+        if lost > 0:
+            self.notes.append(
+                f"{lost} bytes after the last frame are no complete frame: the file "
+                "was truncated, or is still being written"
+            )
 
     def _clock(self, ts: Any, index: int) -> tuple[int | None, float | None]:
         if self.format == "DCD":
@@ -244,8 +209,11 @@ def read_topology(path: Path) -> Particles:
 def _particles(universe: Any, path: Path) -> Particles:
     """Types and radii that stand in the file, nothing guessed."""
     atoms = universe.atoms
+    # Beside names, the types of these formats are chemical elements.
+    by_name = path.suffix.lower() in {".pdb", ".ent", ".gro", ".pqr"}
+    order = ("names", "types") if by_name else ("types", "names")
     names = next(
-        (getattr(atoms, name) for name in ("types", "names") if hasattr(atoms, name)),
+        (getattr(atoms, name) for name in order if hasattr(atoms, name)),
         np.full(len(atoms), "A"),
     )
     type_names, types = np.unique(np.asarray(names, dtype=str), return_inverse=True)
@@ -255,22 +223,6 @@ def _particles(universe: Any, path: Path) -> Particles:
         source = "the radii in the PQR file"
     return Particles(
         tuple(type_names.tolist()), types.ravel().astype(np.int32), radii, source
-    )
-
-
-def _h5md_particles(reader: _H5MDReader) -> Particles:
-    n = int(reader.n_atoms)
-    species, radii = reader.static("species"), reader.static("radius")
-    if species is None or species.shape != (n,):
-        species = np.full(n, "A")
-    names, types = np.unique(species.astype(str), return_inverse=True)
-    if radii is not None and radii.shape != (n,):
-        radii = None
-    return Particles(
-        tuple(names.tolist()),
-        types.ravel().astype(np.int32),
-        None if radii is None else radii.astype(np.float64),
-        "the radius element of the H5MD file",
     )
 
 
