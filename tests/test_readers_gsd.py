@@ -256,3 +256,29 @@ def test_options_pickle_and_open_again(tmp_path):
     options = InputOptions(path, diameter={"A": 1.0}, box=[10, 12, 14])
     with open_trajectory(pickle.loads(pickle.dumps(options))) as trajectory:
         assert trajectory.frame(0).radii.tolist() == [0.5] * 4
+
+
+def test_type_index_without_name(tmp_path):
+    frame = make_frame(step=3, types=["A"], typeid=[0, 0, 5, 0])
+    path = write(tmp_path / "a.gsd", [frame])
+    with pytest.raises(FrameError, match=r"step 3\): expected type indices below 1"):
+        open_gsd(path, diameter=1.0)
+
+
+def test_damaged_bytes_end_in_errors_of_our_own(tmp_path):
+    path = write(tmp_path / "a.gsd", [make_frame(diameter=[1.2] * 4)] * 3)
+    data = path.read_bytes()
+    rng = np.random.default_rng(5)
+    outcomes = set()
+    for _ in range(60):
+        damaged = bytearray(data)
+        damaged[int(rng.integers(len(data)))] = int(rng.integers(256))
+        path.write_bytes(bytes(damaged))
+        try:
+            with open_gsd(path) as trajectory:
+                for index in range(min(trajectory.n_frames, 3)):
+                    trajectory.frame(index)
+            outcomes.add("fine")
+        except InputError:
+            outcomes.add("refused")
+    assert outcomes == {"fine", "refused"}

@@ -411,3 +411,11 @@ def test_frames_own_their_arrays(tmp_path):
         first = trajectory.frame(0)
         trajectory.frame(2)
     np.testing.assert_allclose(first.positions, POSITIONS, atol=1e-6)
+
+
+@pytest.mark.parametrize("suffix", ["h5md", "xtc", "trr", "dcd", "gro", "pdb", "pqr"])
+def test_foreign_bytes_under_the_suffix(tmp_path, suffix):
+    path = tmp_path / f"a.{suffix}"
+    path.write_bytes(b"these bytes are no trajectory\n" * 40)
+    with pytest.raises(InputError, match=rf"a\.{suffix}"):
+        open_files(path)

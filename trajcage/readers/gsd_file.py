@@ -40,54 +40,60 @@ class GsdSource(Source):
     def __init__(self, path: Path, companion: Particles | None = None) -> None:
         self.files = (path,)
         self.notes = []
+        self._companion = companion
         try:
             self._file = gsd.hoomd.open(str(path), "r")
         except (OSError, RuntimeError, UnicodeError) as error:
             raise InputError(
                 f"expected a GSD file in the HOOMD schema, cannot open {path}: {error}"
             ) from error
-        self.n_frames = len(self._file)
-        if self.n_frames == 0:
-            self.close()
-            raise InputError(f"expected a trajectory, {path} has no frames")
-        handle = self._file.file
-        names = set(handle.find_matching_chunk_names(""))
-        # A chunk that equals the schema's default is not written, so absent
-        # means unknown, not 1.0.
-        self._has_images = "particles/image" in names
-        self._has_box = handle.chunk_exists(frame=0, name="configuration/box")
-        self._companion = companion
-        self._first_n = self._n_particles(0)
         try:
-            first = self._file[0]
-        except (OSError, RuntimeError, ValueError, KeyError) as error:
+            self._learn(path)
+        except InputError:
+            self.close()
+            raise
+        except Exception as error:  # a damaged file ends in any of a dozen errors
             self.close()
             raise FrameError(f"cannot read {path}: {error}", frame=0) from error
-        stored = handle.chunk_exists(frame=0, name="particles/diameter")
-        if companion is not None and not stored:
-            self.radii_source = companion.radii_source
-        has_types = handle.chunk_exists(frame=0, name="particles/types")
-        if companion is not None and len(companion.types) != self._first_n:
-            self.close()
+
+    def _learn(self, path: Path) -> None:
+        """Find out what the file stores; absent means unknown.
+
+        A chunk that equals the schema's default is not written, so nothing
+        tells a true diameter of 1.0 from one that nobody has set.
+        """
+        self.n_frames = len(self._file)
+        if self.n_frames == 0:
+            raise InputError(f"expected a trajectory, {path} has no frames")
+        first, companion = self._file[0], self._companion
+        self._first_n = int(first.particles.N)
+        names = self._file.file.find_matching_chunk_names("particles/image")
+        self._has_images = "particles/image" in names
+        self._has_box = self._stored(0, "configuration/box")
+        if self._stored(0, "configuration/dimensions"):
+            self.planar = int(first.configuration.dimensions) == 2
+        elif self._has_box and first.configuration.box[2] == 0.0:
+            self.planar = True
+        self.type_names = tuple(first.particles.types)
+        self._borrowed_types = None
+        if companion is None:
+            return
+        if len(companion.types) != self._first_n:
             raise InputError(
                 f"the topology has {len(companion.types)} particles, {path} has "
                 f"{self._first_n}"
             )
-        self._types_from_companion = companion is not None and not has_types
-        if companion is not None and not has_types:
+        if not self._stored(0, "particles/diameter"):
+            self.radii_source = companion.radii_source
+        if not self._stored(0, "particles/types"):
             self.type_names = companion.type_names
-        else:
-            self.type_names = tuple(first.particles.types)
-        if handle.chunk_exists(frame=0, name="configuration/dimensions"):
-            self.planar = int(first.configuration.dimensions) == 2
-        elif self._has_box and first.configuration.box[2] == 0.0:
-            self.planar = True
+            self._borrowed_types = companion.types
 
     def read(self, index: int) -> RawFrame:
         """Read one frame."""
         try:
             frame = self._file[index]
-        except (OSError, RuntimeError, ValueError, KeyError, IndexError) as error:
+        except Exception as error:  # as above
             raise FrameError(
                 f"cannot read {self.files[0]}: {error}; the file may be truncated",
                 frame=index,
@@ -95,10 +101,17 @@ class GsdSource(Source):
         particles, step = frame.particles, int(frame.configuration.step)
         n = int(particles.N)
         positions = np.array(particles.position, dtype=np.float64)
-        if self._types_from_companion and self._companion is not None:
-            types = self._companion.types.copy()
+        if self._borrowed_types is not None:
+            types = self._borrowed_types.copy()
         else:
             types = np.array(particles.typeid, dtype=np.int32)
+            if n and not 0 <= types.min() <= types.max() < len(particles.types):
+                raise FrameError(
+                    f"expected type indices below {len(particles.types)}, found "
+                    f"{types.min()} to {types.max()}",
+                    frame=index,
+                    step=step,
+                )
             if tuple(particles.types) != self.type_names:
                 names = np.array(particles.types, dtype=str)[types]
                 types = self.index_types(list(names), index)
@@ -130,11 +143,6 @@ class GsdSource(Source):
 
     def _stored(self, index: int, name: str) -> bool:
         return bool(self._file.file.chunk_exists(frame=index, name=name))
-
-    def _n_particles(self, index: int) -> int:
-        if not self._stored(index, "particles/N"):
-            return 0
-        return int(self._file.file.read_chunk(frame=index, name="particles/N")[0])
 
     def _radii(self, index: int, n: int, diameters: np.ndarray) -> np.ndarray | None:
         inherited = self._stored(0, "particles/diameter") and n == self._first_n

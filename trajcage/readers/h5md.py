@@ -14,6 +14,11 @@ __all__ = ["PlainH5MDReader"]
 class PlainH5MDReader(H5MDReader):  # type: ignore[misc] # MDAnalysis ships no types
     """MDAnalysis' H5MD reader without units, and with what it leaves out."""
 
+    def close(self) -> None:
+        """Close the file, if it could be opened."""
+        if hasattr(self, "_file"):
+            self._file.close()
+
     def _set_translated_units(self) -> None:
         """Leave units alone: unknown ones must not be an error, none is used."""
         self.units = dict.fromkeys(("time", "length", "velocity", "force"))

@@ -12,7 +12,7 @@ import numpy as np
 
 from trajcage.errors import InputError
 from trajcage.readers.source import RawFrame, Source
-from trajcage.readers.text import decimal_spacing, to_floats, to_integers
+from trajcage.readers.text import decimal_spacing, to_floats, to_integers, to_names
 
 __all__ = ["LammpsDataSource"]
 
@@ -74,8 +74,8 @@ class LammpsDataSource(Source):
         order = np.argsort(ids, kind="stable")
         picked = words[:, [columns.index(name) for name in "xyz"]]
         self._spacing = decimal_spacing(picked.ravel().tolist())
-        types = np.char.decode(words[order, columns.index("type")])
-        self.type_names = tuple(sorted(set(types.tolist()), key=lambda t: (len(t), t)))
+        types = to_names(words[order, columns.index("type")])
+        self.type_names = tuple(sorted(set(types), key=lambda t: (len(t), t)))
         radii = None
         if "diameter" in columns:
             self.radii_source = "the diameters in the LAMMPS data file"
@@ -87,7 +87,7 @@ class LammpsDataSource(Source):
         self._raw = RawFrame(
             positions=to_floats(picked)[order],
             ids=ids[order],
-            types=self.index_types(types.tolist(), 0),
+            types=self.index_types(types, 0),
             vectors=vectors,
             origin=low,
             radii=radii,

@@ -20,7 +20,7 @@ from trajcage.readers.lammps_text import (
     parse_block,
 )
 from trajcage.readers.source import Particles, RawFrame, Source
-from trajcage.readers.text import decimal_spacing, to_floats, to_integers
+from trajcage.readers.text import decimal_spacing, to_floats, to_integers, to_names
 
 __all__ = ["LammpsDumpSource"]
 
@@ -88,7 +88,7 @@ class LammpsDumpSource(Source):
         )
         if self._type_column is not None:
             column = block.words[:, block.columns.index(self._type_column)]
-            names = {word.decode() for word in np.unique(column)}
+            names = set(to_names(np.unique(column)))
             if companion is not None:
                 names |= set(companion.type_names)
             self.type_names = tuple(sorted(names, key=_natural_order))
@@ -190,7 +190,7 @@ class LammpsDumpSource(Source):
             if self._type_column not in columns:
                 raise ValueError(f"expected the column {self._type_column}")
             column = words[:, columns.index(self._type_column)]
-            return self.index_types(np.char.decode(column).tolist(), index)
+            return self.index_types(to_names(column), index)
         if self._companion is None:
             return np.zeros(len(words), dtype=np.int32)
         return self._companion.types[_rows(self._companion, ids)]

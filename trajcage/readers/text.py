@@ -5,7 +5,7 @@ from collections.abc import Iterable
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["decimal_spacing", "to_floats", "to_integers"]
+__all__ = ["decimal_spacing", "to_floats", "to_integers", "to_names"]
 
 
 def to_floats(words: NDArray[np.bytes_]) -> NDArray[np.float64]:
@@ -22,6 +22,11 @@ def to_integers(words: NDArray[np.bytes_]) -> NDArray[np.int64]:
         return words.astype(np.int64)
     except ValueError:
         raise ValueError(f"expected an integer, found {_culprit(words, int)}") from None
+
+
+def to_names(words: NDArray[np.bytes_]) -> list[str]:
+    """Decode an array of words, whatever bytes they hold."""
+    return [word.decode(errors="replace") for word in words.tolist()]
 
 
 def _culprit(words: NDArray[np.bytes_], kind: type) -> str:

@@ -53,10 +53,11 @@ class UniverseSource(Source):
         If MDAnalysis cannot read the files or they do not match.
     """
 
+    _reader: Any
+
     def __init__(self, topology: Path | Particles, path: Path) -> None:
         self.notes = []
         self.files = (path,)
-        self._reader: Any = None
         self.format = path.suffix.lstrip(".").upper() or "file without suffix"
         try:
             with collect_warnings(self.notes):
@@ -83,7 +84,7 @@ class UniverseSource(Source):
             self._reader = PlainH5MDReader(str(path), convert_units=False)
             self.format = "H5MD"
             if topology == path:
-                found = self._reader.particles()
+                found: Particles = self._reader.particles()
             elif isinstance(topology, Particles):
                 found = topology
             else:

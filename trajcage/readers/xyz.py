@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 
 from trajcage.errors import FrameError, InputError
 from trajcage.readers.source import Particles, RawFrame, Source
-from trajcage.readers.text import decimal_spacing, to_floats, to_integers
+from trajcage.readers.text import decimal_spacing, to_floats, to_integers, to_names
 
 __all__ = ["XyzSource"]
 
@@ -61,8 +61,8 @@ class XyzSource(Source):
             self.type_names = companion.type_names
             self.radii_source = companion.radii_source
         elif "species" in columns:
-            names = np.char.decode(words[:, columns["species"].start])
-            self.type_names = tuple(sorted(set(names.tolist())))
+            names = to_names(words[:, columns["species"].start])
+            self.type_names = tuple(sorted(set(names)))
         else:
             self.type_names = ("A",)
         for name in _RADII:
@@ -121,8 +121,8 @@ class XyzSource(Source):
                 )
             types, radii = self._companion.types.copy(), self._companion.radii
         elif "species" in columns:
-            names = np.char.decode(words[:, columns["species"].start])
-            types = self.index_types(names.tolist(), index)
+            names = to_names(words[:, columns["species"].start])
+            types = self.index_types(names, index)
         else:
             types = np.zeros(n, dtype=np.int32)
         for name, factor in _RADII.items():
