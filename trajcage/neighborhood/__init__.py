@@ -7,6 +7,7 @@ recomputed in float64 from the true lattice vectors.
 """
 
 from trajcage.neighborhood.bond_order import hexatic, steinhardt
+from trajcage.neighborhood.clusters import connected_groups
 from trajcage.neighborhood.pairs import PairRule, check_distinct, neighbor_list
 from trajcage.neighborhood.tessellation import voronoi
 from trajcage.neighborhood.threads import set_threads
@@ -14,6 +15,7 @@ from trajcage.neighborhood.threads import set_threads
 __all__ = [
     "PairRule",
     "check_distinct",
+    "connected_groups",
     "hexatic",
     "neighbor_list",
     "set_threads",
