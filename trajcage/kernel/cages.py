@@ -9,8 +9,8 @@ from numpy.typing import NDArray
 from trajcage.kernel.codes import CLOSED, INVALID, NEED_CAPACITY, NEED_HALO
 from trajcage.kernel.flood3d import flood as flood3d
 from trajcage.kernel.grid import Grid, build_grid
-from trajcage.kernel.jit import compiled
-from trajcage.kernel.scratch import make_scratch
+from trajcage.kernel.jit import compiled, helper
+from trajcage.kernel.scratch import X, Y, Z, make_scratch
 from trajcage.kernel.wall3d import integrate_wall as integrate3d
 from trajcage.kernel.wall3d import opening_ratio as ratio3d
 
@@ -79,7 +79,7 @@ def _make_rows(size: int) -> _Rows:
     )
 
 
-@compiled
+@helper
 def _keep_rows(grid, s, i, n_cells, n_corners, surface, rows):  # type: ignore[no-untyped-def]
     """Copy patches and windows of one cage; False if the rows are full."""
     if (
@@ -97,13 +97,13 @@ def _keep_rows(grid, s, i, n_cells, n_corners, surface, rows):  # type: ignore[n
                 rows.patch_owner[row] = i
                 rows.patch_neighbor[row] = grid.owner[s.found[a]]
                 rows.patch_numbers[row, 0] = s.patch[a, 11]
-                rows.patch_numbers[row, 1] = s.x[a]
-                rows.patch_numbers[row, 2] = s.y[a]
-                rows.patch_numbers[row, 3] = s.z[a]
+                rows.patch_numbers[row, 1] = s.near[X, a]
+                rows.patch_numbers[row, 2] = s.near[Y, a]
+                rows.patch_numbers[row, 3] = s.near[Z, a]
                 rows.count[0] += 1
     for q in range(n_corners):
-        t = s.corner_cell[q]
-        f = s.corner_face[q]
+        t = s.mark[q, 0]
+        f = s.mark[q, 1]
         a = s.cell[t, 1 if f == 0 else 0]
         b = s.cell[t, 2 if f <= 1 else 1]
         c = s.cell[t, 3 if f <= 2 else 2]
@@ -153,8 +153,8 @@ def _measure_range(grid, s, todo, begin, radii, settings, shifts, keep, rows, nu
             numbers[i, 3] = weakest if where >= 0 else np.nan
             members[i, 0] = bounding
             if where >= 0:
-                t = s.corner_cell[where]
-                f = s.corner_face[where]
+                t = s.mark[where, 0]
+                f = s.mark[where, 1]
                 members[i, 1] = grid.owner[s.found[s.cell[t, 1 if f == 0 else 0]]]
                 members[i, 2] = grid.owner[s.found[s.cell[t, 2 if f <= 1 else 1]]]
                 members[i, 3] = grid.owner[s.found[s.cell[t, 3 if f <= 2 else 2]]]

@@ -15,13 +15,14 @@ import numpy as np
 
 from trajcage.kernel.codes import BORDER, CLOSED, INVALID, NEED_CAPACITY, NEED_HALO
 from trajcage.kernel.codes import OPEN, OVERLAP
-from trajcage.kernel.grid import gather
-from trajcage.kernel.jit import compiled
+from trajcage.kernel.grid import CORNER, INVERSE_HEIGHT, gather
+from trajcage.kernel.jit import helper
+from trajcage.kernel.scratch import GAP, POWER, REACH, SHIFTED, TIE, X, Y, Z
 
 __all__ = ["collect", "flood"]
 
 
-@compiled
+@helper
 def collect(grid, s, i, xi, yi, zi, ri, n, inner, outer, tolerance, shift):  # type: ignore[no-untyped-def]
     """Make candidates of the grid points in a shell; return (code, count).
 
@@ -34,10 +35,10 @@ def collect(grid, s, i, xi, yi, zi, ri, n, inner, outer, tolerance, shift):  # t
     code = CLOSED
     for k in range(n, total):
         slot = s.found[k]
-        dx = grid.x[slot] - xi
-        dy = grid.y[slot] - yi
-        dz = grid.z[slot] - zi
-        reach = ri + grid.radius[slot]
+        dx = grid.points[X, slot] - xi
+        dy = grid.points[Y, slot] - yi
+        dz = grid.points[Z, slot] - zi
+        reach = ri + grid.points[REACH, slot]
         distance = np.sqrt(dx * dx + dy * dy + dz * dz)
         # (d - R)(d + R) keeps all digits of a small gap
         power = (distance - reach) * (distance + reach)
@@ -46,44 +47,41 @@ def collect(grid, s, i, xi, yi, zi, ri, n, inner, outer, tolerance, shift):  # t
                 code = OVERLAP
             reach = distance
             power = 0.0
-        s.x[k] = dx
-        s.y[k] = dy
-        s.z[k] = dz
-        s.reach[k] = reach
-        s.power[k] = power
-        s.shifted[k] = power * (1.0 + shift * s.tie[k])
+        s.near[X, k] = dx
+        s.near[Y, k] = dy
+        s.near[Z, k] = dz
+        s.near[REACH, k] = reach
+        s.near[POWER, k] = power
+        s.near[SHIFTED, k] = power * (1.0 + shift * s.near[TIE, k])
     return code, total
 
 
-@compiled
+@helper
 def outside(grid, xi, yi, zi, px, py, pz, radius):  # type: ignore[no-untyped-def]
     """Tell whether a ball about a point reaches beyond an open edge of the box."""
-    dx = xi + px - grid.corner[0]
-    dy = yi + py - grid.corner[1]
-    dz = zi + pz - grid.corner[2]
+    geometry = grid.geometry
+    dx = xi + px - geometry[CORNER, 0]
+    dy = yi + py - geometry[CORNER, 1]
+    dz = zi + pz - geometry[CORNER, 2]
     for axis in range(3):
-        if not grid.periodic[axis]:
-            f = (
-                dx * grid.inverse[0, axis]
-                + dy * grid.inverse[1, axis]
-                + dz * grid.inverse[2, axis]
-            )
-            w = radius * grid.inverse_heights[axis]
+        if grid.shape[1, axis] == 0:
+            f = dx * geometry[0, axis] + dy * geometry[1, axis] + dz * geometry[2, axis]
+            w = radius * geometry[INVERSE_HEIGHT, axis]
             if f - w < 0.0 or f + w > 1.0:
                 return True
     return False
 
 
-@compiled
+@helper
 def _solve(s, a, b, c, d):  # type: ignore[no-untyped-def]
     """Point of equal power to four candidates, and that power."""
-    x0, y0, z0, g0 = s.x[a], s.y[a], s.z[a], s.shifted[a]
-    x1, y1, z1 = s.x[b] - x0, s.y[b] - y0, s.z[b] - z0
-    x2, y2, z2 = s.x[c] - x0, s.y[c] - y0, s.z[c] - z0
-    x3, y3, z3 = s.x[d] - x0, s.y[d] - y0, s.z[d] - z0
-    h1 = s.shifted[b] - g0
-    h2 = s.shifted[c] - g0
-    h3 = s.shifted[d] - g0
+    x0, y0, z0, g0 = s.near[X, a], s.near[Y, a], s.near[Z, a], s.near[SHIFTED, a]
+    x1, y1, z1 = s.near[X, b] - x0, s.near[Y, b] - y0, s.near[Z, b] - z0
+    x2, y2, z2 = s.near[X, c] - x0, s.near[Y, c] - y0, s.near[Z, c] - z0
+    x3, y3, z3 = s.near[X, d] - x0, s.near[Y, d] - y0, s.near[Z, d] - z0
+    h1 = s.near[SHIFTED, b] - g0
+    h2 = s.near[SHIFTED, c] - g0
+    h3 = s.near[SHIFTED, d] - g0
     ux, uy, uz = y2 * z3 - z2 * y3, z2 * x3 - x2 * z3, x2 * y3 - y2 * x3
     vx, vy, vz = y3 * z1 - z3 * y1, z3 * x1 - x3 * z1, x3 * y1 - y3 * x1
     wx, wy, wz = y1 * z2 - z1 * y2, z1 * x2 - x1 * z2, x1 * y2 - y1 * x2
@@ -96,26 +94,26 @@ def _solve(s, a, b, c, d):  # type: ignore[no-untyped-def]
     return px, py, pz, power
 
 
-@compiled
+@helper
 def _next_along(s, n, px, py, pz, nx, ny, nz, a, b, c):  # type: ignore[no-untyped-def]
     """First candidate to share the power of ``a`` along the ray p + t n."""
-    x0, y0, z0, g0 = s.x[a], s.y[a], s.z[a], s.shifted[a]
+    x0, y0, z0, g0 = s.near[X, a], s.near[Y, a], s.near[Z, a], s.near[SHIFTED, a]
     best = np.inf
     who = -1
     for k in range(n):
-        dx = s.x[k] - x0
-        dy = s.y[k] - y0
-        dz = s.z[k] - z0
+        dx = s.near[X, k] - x0
+        dy = s.near[Y, k] - y0
+        dz = s.near[Z, k] - z0
         h = 2.0 * (nx * dx + ny * dy + nz * dz)
         if h > 0.0 and k != a and k != b and k != c:
-            t = (s.shifted[k] - g0 - 2.0 * (px * dx + py * dy + pz * dz)) / h
+            t = (s.near[SHIFTED, k] - g0 - 2.0 * (px * dx + py * dy + pz * dz)) / h
             if t < best:
                 best = t
                 who = k
     return who, best
 
 
-@compiled
+@helper
 def _ray_to_sphere(px, py, pz, nx, ny, nz, radius):  # type: ignore[no-untyped-def]
     """Parameter at which p + t n leaves the sphere of that radius about 0."""
     aa = nx * nx + ny * ny + nz * nz
@@ -126,7 +124,7 @@ def _ray_to_sphere(px, py, pz, nx, ny, nz, radius):  # type: ignore[no-untyped-d
     return (-bb + np.sqrt(bb * bb - aa * cc)) / aa
 
 
-@compiled
+@helper
 def _climb(grid, s, i, xi, yi, zi, ri, n, known, limits, shift):  # type: ignore[no-untyped-def]
     """Walk up the power distance from the particle to the first vertex.
 
@@ -141,8 +139,8 @@ def _climb(grid, s, i, xi, yi, zi, ri, n, known, limits, shift):  # type: ignore
     d = -1
     least = np.inf
     for k in range(n):
-        if s.shifted[k] < least:
-            least = s.shifted[k]
+        if s.near[SHIFTED, k] < least:
+            least = s.near[SHIFTED, k]
             a = k
     px, py, pz = 0.0, 0.0, 0.0
     stage = 0
@@ -152,11 +150,11 @@ def _climb(grid, s, i, xi, yi, zi, ri, n, known, limits, shift):  # type: ignore
         step = np.inf
         nx, ny, nz = 0.0, 0.0, 0.0
         if a >= 0:
-            ax, ay, az = s.x[a], s.y[a], s.z[a]
+            ax, ay, az = s.near[X, a], s.near[Y, a], s.near[Z, a]
             if stage == 0:
                 nx, ny, nz = -ax, -ay, -az
             elif stage == 1:
-                ux, uy, uz = s.x[b] - ax, s.y[b] - ay, s.z[b] - az
+                ux, uy, uz = s.near[X, b] - ax, s.near[Y, b] - ay, s.near[Z, b] - az
                 vx, vy, vz = px - ax, py - ay, pz - az
                 uu = ux * ux + uy * uy + uz * uz
                 along = (vx * ux + vy * uy + vz * uz) / uu
@@ -170,8 +168,8 @@ def _climb(grid, s, i, xi, yi, zi, ri, n, known, limits, shift):  # type: ignore
                     else:
                         nx, ny, nz = uy, -ux, 0.0
             else:
-                ux, uy, uz = s.x[b] - ax, s.y[b] - ay, s.z[b] - az
-                vx, vy, vz = s.x[c] - ax, s.y[c] - ay, s.z[c] - az
+                ux, uy, uz = s.near[X, b] - ax, s.near[Y, b] - ay, s.near[Z, b] - az
+                vx, vy, vz = s.near[X, c] - ax, s.near[Y, c] - ay, s.near[Z, c] - az
                 nx, ny, nz = uy * vz - uz * vy, uz * vx - ux * vz, ux * vy - uy * vx
                 if (px - ax) * nx + (py - ay) * ny + (pz - az) * nz < 0.0:
                     nx, ny, nz = -nx, -ny, -nz
@@ -201,8 +199,8 @@ def _climb(grid, s, i, xi, yi, zi, ri, n, known, limits, shift):  # type: ignore
                 return code, n, known, a, b, c, d
             known = need
             for k in range(n, total):
-                if stage == 0 and s.shifted[k] < least:
-                    least = s.shifted[k]
+                if stage == 0 and s.near[SHIFTED, k] < least:
+                    least = s.near[SHIFTED, k]
                     a = k
             n = total
             continue
@@ -221,7 +219,7 @@ def _climb(grid, s, i, xi, yi, zi, ri, n, known, limits, shift):  # type: ignore
     return CLOSED, n, known, a, b, c, d
 
 
-@compiled
+@helper
 def _sorted4(a, b, c, d):  # type: ignore[no-untyped-def]
     if a > b:
         a, b = b, a
@@ -236,15 +234,15 @@ def _sorted4(a, b, c, d):  # type: ignore[no-untyped-def]
     return a, b, c, d
 
 
-@compiled
+@helper
 def _find(s, a, b, c, d):  # type: ignore[no-untyped-def]
     """Look up a sorted cell; return (cell or -1, free slot of the hash table)."""
-    mask = len(s.table) - 1
+    mask = len(s.slots) - 1
     clock = s.clock[0]
     key = (a * 73856093) ^ (b * 19349663) ^ (c * 83492791) ^ (d * 49979687)
     slot = (key ^ (key >> 15)) & mask
-    while s.stamp[slot] == clock:
-        t = s.table[slot]
+    while s.slots[slot, 0] == clock:
+        t = s.slots[slot, 1]
         if (
             s.cell[t, 0] == a
             and s.cell[t, 1] == b
@@ -256,36 +254,40 @@ def _find(s, a, b, c, d):  # type: ignore[no-untyped-def]
     return -1, slot
 
 
-@compiled
+@helper
 def _new_cell(s, t, slot, a, b, c, d, px, py, pz, power):  # type: ignore[no-untyped-def]
     s.cell[t, 0] = a
     s.cell[t, 1] = b
     s.cell[t, 2] = c
     s.cell[t, 3] = d
     for f in range(4):
-        s.across[t, f] = -1
+        s.cell[t, 4 + f] = -1
     s.vertex[t, 0] = px
     s.vertex[t, 1] = py
     s.vertex[t, 2] = pz
     s.vertex[t, 3] = power
-    s.table[slot] = t
-    s.stamp[slot] = s.clock[0]
+    s.slots[slot, 1] = t
+    s.slots[slot, 0] = s.clock[0]
 
 
-@compiled
-def _gaps(s, begin, n, t, nx, ny, nz):  # type: ignore[no-untyped-def]
+@helper
+def _gaps(s, begin, n, t):  # type: ignore[no-untyped-def]
     """Power of candidates above that of vertex t; infinite for its own four."""
     a = s.cell[t, 0]
     px, py, pz = s.vertex[t, 0], s.vertex[t, 1], s.vertex[t, 2]
-    x, y, z, g, gap = s.x, s.y, s.z, s.shifted, s.gap
-    base = g[a] - 2.0 * (px * x[a] + py * y[a] + pz * z[a])
+    near = s.near
+    base = near[SHIFTED, a] - 2.0 * (px * near[X, a] + py * near[Y, a] + pz * near[Z, a])
     for k in range(begin, n):
-        gap[k] = g[k] - 2.0 * (px * x[k] + py * y[k] + pz * z[k]) - base
+        near[GAP, k] = (
+            near[SHIFTED, k]
+            - 2.0 * (px * near[X, k] + py * near[Y, k] + pz * near[Z, k])
+            - base
+        )
     for f in range(4):
-        gap[s.cell[t, f]] = np.inf
+        near[GAP, s.cell[t, f]] = np.inf
 
 
-@compiled
+@helper
 def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):  # type: ignore[no-untyped-def]
     """Find all power vertices of the cage and the corners of its wall.
 
@@ -350,6 +352,7 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):  # type: ignore[no-
     n_cells = 1
     n_corners = 0
     room = len(s.cell)
+    near = s.near
     s.stack[0] = 0
     height = 1
     while height > 0:
@@ -357,18 +360,18 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):  # type: ignore[no-
         t = s.stack[height]
         open_faces = 0
         for f in range(4):
-            if s.across[t, f] == -1:
+            if s.cell[t, 4 + f] == -1:
                 open_faces += 1
         if open_faces == 0:
             continue
         v0, v1, v2, v3 = s.cell[t, 0], s.cell[t, 1], s.cell[t, 2], s.cell[t, 3]
         px, py, pz = s.vertex[t, 0], s.vertex[t, 1], s.vertex[t, 2]
         power = s.vertex[t, 3]
-        _gaps(s, 0, n, t, px, py, pz)
-        x0, y0, z0 = s.x[v0], s.y[v0], s.z[v0]
-        x1, y1, z1 = s.x[v1] - x0, s.y[v1] - y0, s.z[v1] - z0
-        x2, y2, z2 = s.x[v2] - x0, s.y[v2] - y0, s.z[v2] - z0
-        x3, y3, z3 = s.x[v3] - x0, s.y[v3] - y0, s.z[v3] - z0
+        _gaps(s, 0, n, t)
+        x0, y0, z0 = s.near[X, v0], s.near[Y, v0], s.near[Z, v0]
+        x1, y1, z1 = s.near[X, v1] - x0, s.near[Y, v1] - y0, s.near[Z, v1] - z0
+        x2, y2, z2 = s.near[X, v2] - x0, s.near[Y, v2] - y0, s.near[Z, v2] - z0
+        x3, y3, z3 = s.near[X, v3] - x0, s.near[Y, v3] - y0, s.near[Z, v3] - z0
         ux, uy, uz = y2 * z3 - z2 * y3, z2 * x3 - x2 * z3, x2 * y3 - y2 * x3
         vx, vy, vz = y3 * z1 - z3 * y1, z3 * x1 - x3 * z1, x3 * y1 - y3 * x1
         wx, wy, wz = y1 * z2 - z1 * y2, z1 * x2 - x1 * z2, x1 * y2 - y1 * x2
@@ -377,13 +380,13 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):  # type: ignore[no-
             vx, vy, vz = -vx, -vy, -vz
             wx, wy, wz = -wx, -wy, -wz
         for f in range(4):
-            if s.across[t, f] != -1:
+            if s.cell[t, 4 + f] != -1:
                 continue
             # outward normal of the face opposite to slot f, and a point on it
             bx, by, bz = x0, y0, z0
             if f == 0:
                 nx, ny, nz = -(ux + vx + wx), -(uy + vy + wy), -(uz + vz + wz)
-                bx, by, bz = s.x[v1], s.y[v1], s.z[v1]
+                bx, by, bz = s.near[X, v1], s.near[Y, v1], s.near[Z, v1]
             elif f == 1:
                 nx, ny, nz = ux, uy, uz
             elif f == 2:
@@ -401,15 +404,14 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):  # type: ignore[no-
             while True:
                 who = -1
                 step = np.inf
-                x, y, z, gap = s.x, s.y, s.z, s.gap
                 level = nx * bx + ny * by + nz * bz
                 blocked = True
                 if crossing < np.inf:
                     twice = 2.0 * crossing
                     before = 0
                     for k in range(n):
-                        h = nx * x[k] + ny * y[k] + nz * z[k] - level
-                        before += gap[k] < twice * h
+                        h = nx * near[X, k] + ny * near[Y, k] + nz * near[Z, k] - level
+                        before += near[GAP, k] < twice * h
                     blocked = before == 0
                 else:
                     blocked = False
@@ -421,9 +423,11 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):  # type: ignore[no-
                     ball = largest
                 else:
                     for k in range(n):
-                        h = 2.0 * (nx * x[k] + ny * y[k] + nz * z[k] - level)
-                        if h > 0.0 and gap[k] < step * h:
-                            step = gap[k] / h
+                        h = 2.0 * (
+                            nx * near[X, k] + ny * near[Y, k] + nz * near[Z, k] - level
+                        )
+                        if h > 0.0 and near[GAP, k] < step * h:
+                            step = near[GAP, k] / h
                             who = k
                     edge = _ray_to_sphere(px, py, pz, nx, ny, nz, reach)
                     if who < 0 or step > edge:
@@ -459,7 +463,7 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):  # type: ignore[no-
                 )
                 if code != CLOSED:
                     return code, n, n_cells, n_corners
-                _gaps(s, n, total, t, px, py, pz)
+                _gaps(s, n, total, t)
                 n = total
                 known = need
             if blocked:
@@ -468,9 +472,9 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):  # type: ignore[no-
                 s.corner[n_corners, 0] = qx
                 s.corner[n_corners, 1] = qy
                 s.corner[n_corners, 2] = qz
-                s.corner_cell[n_corners] = t
-                s.corner_face[n_corners] = f
-                s.across[t, f] = -2 - n_corners
+                s.mark[n_corners, 0] = t
+                s.mark[n_corners, 1] = f
+                s.cell[t, 4 + f] = -2 - n_corners
                 n_corners += 1
                 continue
             if who < 0:
@@ -491,8 +495,8 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):  # type: ignore[no-
             back = 0
             while back < 4 and s.cell[other, back] != who:
                 back += 1
-            if back == 4 or s.across[other, back] != -1:
+            if back == 4 or s.cell[other, 4 + back] != -1:
                 return INVALID, n, n_cells, n_corners
-            s.across[t, f] = other
-            s.across[other, back] = t
+            s.cell[t, 4 + f] = other
+            s.cell[other, 4 + back] = t
     return CLOSED, n, n_cells, n_corners

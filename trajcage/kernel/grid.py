@@ -9,33 +9,32 @@ from typing import NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
-from trajcage.kernel.jit import compiled
+from trajcage.kernel.jit import compiled, helper
 
-__all__ = ["Grid", "build_grid", "gather"]
+__all__ = ["CORNER", "INVERSE_HEIGHT", "Grid", "build_grid", "gather"]
+
+
+# rows of Grid.geometry; rows 0 to 2 turn Cartesian into fractional coordinates
+LOWEST = 3  # fractional coordinate where the grid starts
+PER_EDGE = 4  # cells per unit of fractional coordinate
+INVERSE_HEIGHT = 5
+CORNER = 6  # origin of the fractional coordinates
 
 
 class Grid(NamedTuple):
-    """Points sorted by cell; z (the last axis) runs fastest.
+    """Points sorted by cell; the last axis runs fastest.
 
     In 2D the third axis is one cell thick and all z are zero.
     """
 
-    x: NDArray[np.float64]  #: (m,) coordinates of particles and images
-    y: NDArray[np.float64]
-    z: NDArray[np.float64]
-    radius: NDArray[np.float64]  #: (m,)
+    points: NDArray[np.float64]  #: (4, m) x, y, z, radius of particles and images
     owner: NDArray[np.int64]  #: (m,) particle behind each point
     start: NDArray[np.int64]  #: (cells + 1,) first point of each cell
-    shape: NDArray[np.int64]  #: (3,) cells along each axis
-    lowest: NDArray[np.float64]  #: (3,) fractional coordinate where the grid starts
-    cells_per_edge: NDArray[np.float64]  #: (3,) cells per unit of fractional coordinate
-    inverse: NDArray[np.float64]  #: (3, 3) Cartesian to fractional
-    inverse_heights: NDArray[np.float64]  #: (3,)
-    corner: NDArray[np.float64]  #: (3,) origin of the fractional coordinates
-    periodic: NDArray[np.bool_]  #: (3,)
-    halo: float  #: images are complete up to this distance from the box
+    geometry: NDArray[np.float64]  #: (7, 3) rows as named above
+    shape: NDArray[np.int64]  #: (2, 3) cells along each axis; 1 where periodic
     home: NDArray[np.float64]  #: (n, 3) the particles inside the box
     order: NDArray[np.int64]  #: (n,) particles in the order of the grid
+    halo: float  #: images are complete up to this distance from the box
 
 
 def build_grid(
@@ -79,22 +78,13 @@ def build_grid(
     extent = (high - low) * heights
     side = max(cell_side, float(np.prod(extent) / (8.0 * len(home) + 64.0)) ** (1 / 3))
     shape = np.maximum(np.ceil(extent / side), 1.0).astype(np.int64)
-    arrays = _fill(
-        home, fractions, vectors, radii, periodic, width, low, shape / (high - low), shape
+    per_edge = shape / (high - low)
+    points, owner, start, order = _fill(
+        home, fractions, vectors, radii, periodic, width, low, per_edge, shape
     )
-    return Grid(
-        *arrays[:6],
-        shape,
-        low,
-        shape / (high - low),
-        inverse,
-        1.0 / heights,
-        origin.astype(np.float64),
-        periodic.astype(np.bool_),
-        float(halo),
-        home,
-        arrays[6],
-    )
+    geometry = np.vstack([inverse, low, per_edge, 1.0 / heights, origin])
+    grid_shape = np.vstack([shape, periodic]).astype(np.int64)
+    return Grid(points, owner, start, geometry, grid_shape, home, order, float(halo))
 
 
 @compiled
@@ -107,10 +97,7 @@ def _fill(home, fractions, vectors, radii, periodic, width, low, per_edge, shape
     last = np.zeros(3, np.int64)
     cell = np.zeros(3, np.int64)
     total = 0
-    x = np.zeros(0)
-    y = np.zeros(0)
-    z = np.zeros(0)
-    radius = np.zeros(0)
+    points = np.zeros((4, 0))
     owner = np.zeros(0, np.int64)
     order = np.zeros(n, np.int64)
     home_slot = np.zeros(0, np.int64)
@@ -122,10 +109,7 @@ def _fill(home, fractions, vectors, radii, periodic, width, low, per_edge, shape
                 start[c] = running
                 running += count
             start[n_cells] = running
-            x = np.empty(total)
-            y = np.empty(total)
-            z = np.empty(total)
-            radius = np.empty(total)
+            points = np.empty((4, total))
             owner = np.empty(total, np.int64)
             home_slot = np.zeros(total, np.int64)
         for i in range(n):
@@ -151,16 +135,13 @@ def _fill(home, fractions, vectors, radii, periodic, width, low, per_edge, shape
                             continue
                         slot = start[c]
                         start[c] += 1
-                        x[slot] = home[i, 0] + (
-                            u * vectors[0, 0] + v * vectors[1, 0] + w * vectors[2, 0]
-                        )
-                        y[slot] = home[i, 1] + (
-                            u * vectors[0, 1] + v * vectors[1, 1] + w * vectors[2, 1]
-                        )
-                        z[slot] = home[i, 2] + (
-                            u * vectors[0, 2] + v * vectors[1, 2] + w * vectors[2, 2]
-                        )
-                        radius[slot] = radii[i]
+                        for axis in range(3):
+                            points[axis, slot] = home[i, axis] + (
+                                u * vectors[0, axis]
+                                + v * vectors[1, axis]
+                                + w * vectors[2, axis]
+                            )
+                        points[3, slot] = radii[i]
                         owner[slot] = i
                         if u == 0 and v == 0 and w == 0:
                             home_slot[slot] = 1
@@ -173,46 +154,36 @@ def _fill(home, fractions, vectors, radii, periodic, width, low, per_edge, shape
         if home_slot[slot] == 1:
             order[count] = owner[slot]
             count += 1
-    return x, y, z, radius, owner, start, order
+    return points, owner, start, order
 
 
-@compiled
+@helper
 def gather(grid, i, xi, yi, zi, inner, outer, found, n_found):  # type: ignore[no-untyped-def]
     """Append the points with ``inner < distance <= outer`` from particle i.
 
     Images of i itself are left out: they move along with it and never wall
     its cage. Returns the new number of points, or -1 if ``found`` is full.
     """
-    low0 = grid.corner[0]
-    low1 = grid.corner[1]
-    low2 = grid.corner[2]
-    f0 = (
-        (xi - low0) * grid.inverse[0, 0]
-        + (yi - low1) * grid.inverse[1, 0]
-        + (zi - low2) * grid.inverse[2, 0]
-    )
-    f1 = (
-        (xi - low0) * grid.inverse[0, 1]
-        + (yi - low1) * grid.inverse[1, 1]
-        + (zi - low2) * grid.inverse[2, 1]
-    )
-    f2 = (
-        (xi - low0) * grid.inverse[0, 2]
-        + (yi - low1) * grid.inverse[1, 2]
-        + (zi - low2) * grid.inverse[2, 2]
-    )
-    reach = outer * (1.0 + 1e-12)
-    w0 = reach * grid.inverse_heights[0]
-    w1 = reach * grid.inverse_heights[1]
-    w2 = reach * grid.inverse_heights[2]
-    s0, s1, s2 = grid.shape[0], grid.shape[1], grid.shape[2]
-    a0 = max(int((f0 - w0 - grid.lowest[0]) * grid.cells_per_edge[0]), 0)
-    b0 = min(int((f0 + w0 - grid.lowest[0]) * grid.cells_per_edge[0]), s0 - 1)
-    a1 = max(int((f1 - w1 - grid.lowest[1]) * grid.cells_per_edge[1]), 0)
-    b1 = min(int((f1 + w1 - grid.lowest[1]) * grid.cells_per_edge[1]), s1 - 1)
-    a2 = max(int((f2 - w2 - grid.lowest[2]) * grid.cells_per_edge[2]), 0)
-    b2 = min(int((f2 + w2 - grid.lowest[2]) * grid.cells_per_edge[2]), s2 - 1)
-    gx, gy, gz = grid.x, grid.y, grid.z
+    geometry = grid.geometry
+    dx = xi - geometry[CORNER, 0]
+    dy = yi - geometry[CORNER, 1]
+    dz = zi - geometry[CORNER, 2]
+    s1 = grid.shape[0, 1]
+    s2 = grid.shape[0, 2]
+    a0, a1, a2, b0, b1, b2 = 0, 0, 0, 0, 0, 0
+    for axis in range(3):
+        f = dx * geometry[0, axis] + dy * geometry[1, axis] + dz * geometry[2, axis]
+        f -= geometry[LOWEST, axis]
+        w = outer * (1.0 + 1e-12) * geometry[INVERSE_HEIGHT, axis]
+        low = max(int((f - w) * geometry[PER_EDGE, axis]), 0)
+        high = min(int((f + w) * geometry[PER_EDGE, axis]), grid.shape[0, axis] - 1)
+        if axis == 0:
+            a0, b0 = low, high
+        elif axis == 1:
+            a1, b1 = low, high
+        else:
+            a2, b2 = low, high
+    points = grid.points
     start = grid.start
     owner = grid.owner
     inner2 = inner * inner
@@ -228,9 +199,9 @@ def gather(grid, i, xi, yi, zi, inner, outer, found, n_found):  # type: ignore[n
             if n_found + (end - begin) > room:
                 return -1
             for k in range(begin, end):
-                dx = gx[k] - xi
-                dy = gy[k] - yi
-                dz = gz[k] - zi
+                dx = points[0, k] - xi
+                dy = points[1, k] - yi
+                dz = points[2, k] - zi
                 d2 = dx * dx + dy * dy + dz * dz
                 # store always, keep if inside: no branch to mispredict
                 found[n_found] = k

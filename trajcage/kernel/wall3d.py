@@ -14,7 +14,8 @@ nothing cancels however small the cage.
 import numpy as np
 
 from trajcage.kernel.codes import CLOSED, INVALID
-from trajcage.kernel.jit import compiled
+from trajcage.kernel.jit import helper
+from trajcage.kernel.scratch import POWER, REACH, X, Y, Z
 
 __all__ = ["integrate_wall", "opening_ratio", "polish_corners"]
 
@@ -24,7 +25,7 @@ _FULL = 4.0 * np.pi
 _STAMP, _X0, _Y0, _Z0, _RE, _IM, _TURN, _AX, _AY, _AZ, _ARCS, _AREA = range(12)
 
 
-@compiled
+@helper
 def polish_corners(s, n_corners):  # type: ignore[no-untyped-def]
     """Move the corners from the spheres with broken ties to the true ones.
 
@@ -33,31 +34,31 @@ def polish_corners(s, n_corners):  # type: ignore[no-untyped-def]
     throat it closes has no width there).
     """
     for q in range(n_corners):
-        t = s.corner_cell[q]
-        f = s.corner_face[q]
+        t = s.mark[q, 0]
+        f = s.mark[q, 1]
         a = s.cell[t, 1 if f == 0 else 0]
         b = s.cell[t, 2 if f <= 1 else 1]
         c = s.cell[t, 3 if f <= 2 else 2]
         px, py, pz = s.corner[q, 0], s.corner[q, 1], s.corner[q, 2]
         pp = px * px + py * py + pz * pz
-        ax, ay, az = px - s.x[a], py - s.y[a], pz - s.z[a]
-        bx, by, bz = px - s.x[b], py - s.y[b], pz - s.z[b]
-        cx, cy, cz = px - s.x[c], py - s.y[c], pz - s.z[c]
-        fa = pp - 2.0 * (px * s.x[a] + py * s.y[a] + pz * s.z[a]) + s.power[a]
-        fb = pp - 2.0 * (px * s.x[b] + py * s.y[b] + pz * s.z[b]) + s.power[b]
-        fc = pp - 2.0 * (px * s.x[c] + py * s.y[c] + pz * s.z[c]) + s.power[c]
+        ax, ay, az = px - s.near[X, a], py - s.near[Y, a], pz - s.near[Z, a]
+        bx, by, bz = px - s.near[X, b], py - s.near[Y, b], pz - s.near[Z, b]
+        cx, cy, cz = px - s.near[X, c], py - s.near[Y, c], pz - s.near[Z, c]
+        fa = pp - 2.0 * (px * s.near[X, a] + py * s.near[Y, a] + pz * s.near[Z, a]) + s.near[POWER, a]
+        fb = pp - 2.0 * (px * s.near[X, b] + py * s.near[Y, b] + pz * s.near[Z, b]) + s.near[POWER, b]
+        fc = pp - 2.0 * (px * s.near[X, c] + py * s.near[Y, c] + pz * s.near[Z, c]) + s.near[POWER, c]
         ux, uy, uz = by * cz - bz * cy, bz * cx - bx * cz, bx * cy - by * cx
         vx, vy, vz = cy * az - cz * ay, cz * ax - cx * az, cx * ay - cy * ax
         wx, wy, wz = ay * bz - az * by, az * bx - ax * bz, ax * by - ay * bx
         det = ax * ux + ay * uy + az * uz
-        if abs(det) > 1e-4 * s.reach[a] * s.reach[b] * s.reach[c]:
+        if abs(det) > 1e-4 * s.near[REACH, a] * s.near[REACH, b] * s.near[REACH, c]:
             scale = -0.5 / det
             s.corner[q, 0] = px + scale * (fa * ux + fb * vx + fc * wx)
             s.corner[q, 1] = py + scale * (fa * uy + fb * vy + fc * wy)
             s.corner[q, 2] = pz + scale * (fa * uz + fb * vz + fc * wz)
 
 
-@compiled
+@helper
 def opening_ratio(s, a, b, c):  # type: ignore[no-untyped-def]
     """Factor on the exclusion radii at which the window a, b, c is just shut.
 
@@ -65,14 +66,14 @@ def opening_ratio(s, a, b, c):  # type: ignore[no-untyped-def]
     |y - x_a|^2 = mu R_a^2 and likewise b and c, where y is linear in
     mu = lambda^2. For equal spheres lambda is circumradius / R.
     """
-    x1, y1, z1 = s.x[b] - s.x[a], s.y[b] - s.y[a], s.z[b] - s.z[a]
-    x2, y2, z2 = s.x[c] - s.x[a], s.y[c] - s.y[a], s.z[c] - s.z[a]
+    x1, y1, z1 = s.near[X, b] - s.near[X, a], s.near[Y, b] - s.near[Y, a], s.near[Z, b] - s.near[Z, a]
+    x2, y2, z2 = s.near[X, c] - s.near[X, a], s.near[Y, c] - s.near[Y, a], s.near[Z, c] - s.near[Z, a]
     d11 = x1 * x1 + y1 * y1 + z1 * z1
     d22 = x2 * x2 + y2 * y2 + z2 * z2
     d12 = x1 * x2 + y1 * y2 + z1 * z2
-    ra = s.reach[a] * s.reach[a]
-    rb = s.reach[b] * s.reach[b]
-    rc = s.reach[c] * s.reach[c]
+    ra = s.near[REACH, a] * s.near[REACH, a]
+    rb = s.near[REACH, b] * s.near[REACH, b]
+    rc = s.near[REACH, c] * s.near[REACH, c]
     det = d11 * d22 - d12 * d12
     # y - x_a = p e1 + q e2 with p, q linear in mu
     p0 = 0.5 * (d11 * d22 - d22 * d12) / det
@@ -88,14 +89,14 @@ def opening_ratio(s, a, b, c):  # type: ignore[no-untyped-def]
     return np.sqrt(cc / (np.sqrt(root) - bb))
 
 
-@compiled
+@helper
 def _touch(s, a, px, py, pz):  # type: ignore[no-untyped-def]
     """Start the sums of sphere a, with p as reference point, at first use."""
     if s.patch[a, _STAMP] != s.clock[0]:
         s.patch[a, _STAMP] = s.clock[0]
-        s.patch[a, _X0] = px - s.x[a]
-        s.patch[a, _Y0] = py - s.y[a]
-        s.patch[a, _Z0] = pz - s.z[a]
+        s.patch[a, _X0] = px - s.near[X, a]
+        s.patch[a, _Y0] = py - s.near[Y, a]
+        s.patch[a, _Z0] = pz - s.near[Z, a]
         s.patch[a, _RE] = 1.0
         s.patch[a, _IM] = 0.0
         s.patch[a, _TURN] = 0.0
@@ -105,15 +106,15 @@ def _touch(s, a, px, py, pz):  # type: ignore[no-untyped-def]
         s.patch[a, _ARCS] = 0.0
 
 
-@compiled
+@helper
 def _add_arc(s, a, ex, ey, ez, height, rho2, angle, px, py, pz, dx, dy, dz):  # type: ignore[no-untyped-def]
     """Add the arc p -> p + d, clockwise about the outward axis e of sphere a.
 
     ``height`` is the distance of the arc's plane from the center along e.
     """
-    r = s.reach[a]
+    r = s.near[REACH, a]
     x0, y0, z0 = s.patch[a, _X0], s.patch[a, _Y0], s.patch[a, _Z0]
-    r1x, r1y, r1z = px - s.x[a], py - s.y[a], pz - s.z[a]
+    r1x, r1y, r1z = px - s.near[X, a], py - s.near[Y, a], pz - s.near[Z, a]
     r2x, r2y, r2z = r1x + dx, r1y + dy, r1z + dz
     # spherical triangle (reference, p, p + d): E = 2 arg(re + i im)
     u1x, u1y, u1z = r1x - x0, r1y - y0, r1z - z0
@@ -160,7 +161,7 @@ def _add_arc(s, a, ex, ey, ez, height, rho2, angle, px, py, pz, dx, dy, dz):  # 
     s.patch[a, _ARCS] += 1.0
 
 
-@compiled
+@helper
 def _slot_of(s, t, a):  # type: ignore[no-untyped-def]
     if s.cell[t, 0] == a:
         return 0
@@ -171,7 +172,7 @@ def _slot_of(s, t, a):  # type: ignore[no-untyped-def]
     return 3
 
 
-@compiled
+@helper
 def _rotate(s, t, i, j, k, l, n_cells):  # type: ignore[no-untyped-def]
     """Turn about the pair in slots i, j of cell t from slot l to k and on.
 
@@ -179,7 +180,7 @@ def _rotate(s, t, i, j, k, l, n_cells):  # type: ignore[no-untyped-def]
     """
     a, b = s.cell[t, i], s.cell[t, j]
     for _ in range(4 * n_cells):
-        other = s.across[t, l]
+        other = s.cell[t, 4 + l]
         if other < 0:
             return -2 - other, k
         i2 = _slot_of(s, other, a)
@@ -190,23 +191,23 @@ def _rotate(s, t, i, j, k, l, n_cells):  # type: ignore[no-untyped-def]
     return -1, 0
 
 
-@compiled
+@helper
 def _angle_about(s, a, b, c, d):  # type: ignore[no-untyped-def]
     """Dihedral angle at the edge a b between candidates c and d."""
-    x0, y0, z0 = s.x[a], s.y[a], s.z[a]
-    ex, ey, ez = s.x[b] - x0, s.y[b] - y0, s.z[b] - z0
-    cx, cy, cz = s.x[c] - x0, s.y[c] - y0, s.z[c] - z0
-    dx, dy, dz = s.x[d] - x0, s.y[d] - y0, s.z[d] - z0
+    x0, y0, z0 = s.near[X, a], s.near[Y, a], s.near[Z, a]
+    ex, ey, ez = s.near[X, b] - x0, s.near[Y, b] - y0, s.near[Z, b] - z0
+    cx, cy, cz = s.near[X, c] - x0, s.near[Y, c] - y0, s.near[Z, c] - z0
+    dx, dy, dz = s.near[X, d] - x0, s.near[Y, d] - y0, s.near[Z, d] - z0
     mx, my, mz = ey * cz - ez * cy, ez * cx - ex * cz, ex * cy - ey * cx
     nx, ny, nz = ey * dz - ez * dy, ez * dx - ex * dz, ex * dy - ey * dx
     kx, ky, kz = my * nz - mz * ny, mz * nx - mx * nz, mx * ny - my * nx
     return np.arctan2(np.sqrt(kx * kx + ky * ky + kz * kz), mx * nx + my * ny + mz * nz)
 
 
-@compiled
+@helper
 def _covered_half_angle(s, a, ex, ey, ez, mx, my, mz, c, qx, qy, qz):  # type: ignore[no-untyped-def]
     """Angle about the axis e between candidate c and the arc's end q - m."""
-    wx, wy, wz = s.x[c] - mx, s.y[c] - my, s.z[c] - mz
+    wx, wy, wz = s.near[X, c] - mx, s.near[Y, c] - my, s.near[Z, c] - mz
     along = wx * ex + wy * ey + wz * ez
     wx, wy, wz = wx - along * ex, wy - along * ey, wz - along * ez
     vx, vy, vz = qx - mx, qy - my, qz - mz
@@ -214,14 +215,14 @@ def _covered_half_angle(s, a, ex, ey, ez, mx, my, mz, c, qx, qy, qz):  # type: i
     return np.arctan2(np.sqrt(kx * kx + ky * ky + kz * kz), wx * vx + wy * vy + wz * vz)
 
 
-@compiled
+@helper
 def _turned(s, t, i, j, k, l, n_cells):  # type: ignore[no-untyped-def]
     """Sum of the dihedral angles that `_rotate` passes."""
     a, b = s.cell[t, i], s.cell[t, j]
     total = 0.0
     for _ in range(4 * n_cells):
         total += _angle_about(s, a, b, s.cell[t, l], s.cell[t, k])
-        other = s.across[t, l]
+        other = s.cell[t, 4 + l]
         if other < 0:
             break
         i2 = _slot_of(s, other, a)
@@ -232,17 +233,17 @@ def _turned(s, t, i, j, k, l, n_cells):  # type: ignore[no-untyped-def]
     return total
 
 
-@compiled
+@helper
 def _arcs(s, n_cells, n_corners):  # type: ignore[no-untyped-def]
     """Walk every arc of the wall once and add it to its two spheres."""
     for q in range(n_corners):
         for f in range(4):
-            s.walked[q, f] = 0
+            s.mark[q, 2 + f] = 0
     for q in range(n_corners):
-        t = s.corner_cell[q]
-        k = s.corner_face[q]
+        t = s.mark[q, 0]
+        k = s.mark[q, 1]
         for l in range(4):
-            if l == k or s.walked[q, l] == 1:
+            if l == k or s.mark[q, 2 + l] == 1:
                 continue
             i = 0
             while i == k or i == l:
@@ -252,12 +253,12 @@ def _arcs(s, n_cells, n_corners):  # type: ignore[no-untyped-def]
             end, end_slot = _rotate(s, t, i, j, k, l, n_cells)
             if end < 0:
                 return INVALID
-            s.walked[q, l] = 1
-            s.walked[end, end_slot] = 1
-            ax, ay, az = s.x[a], s.y[a], s.z[a]
-            ex, ey, ez = s.x[b] - ax, s.y[b] - ay, s.z[b] - az
-            cx, cy, cz = s.x[s.cell[t, l]] - ax, s.y[s.cell[t, l]] - ay, s.z[s.cell[t, l]] - az
-            dx, dy, dz = s.x[s.cell[t, k]] - ax, s.y[s.cell[t, k]] - ay, s.z[s.cell[t, k]] - az
+            s.mark[q, 2 + l] = 1
+            s.mark[end, 2 + end_slot] = 1
+            ax, ay, az = s.near[X, a], s.near[Y, a], s.near[Z, a]
+            ex, ey, ez = s.near[X, b] - ax, s.near[Y, b] - ay, s.near[Z, b] - az
+            cx, cy, cz = s.near[X, s.cell[t, l]] - ax, s.near[Y, s.cell[t, l]] - ay, s.near[Z, s.cell[t, l]] - az
+            dx, dy, dz = s.near[X, s.cell[t, k]] - ax, s.near[Y, s.cell[t, k]] - ay, s.near[Z, s.cell[t, k]] - az
             sense = (
                 ex * (cy * dz - cz * dy)
                 + ey * (cz * dx - cx * dz)
@@ -269,7 +270,7 @@ def _arcs(s, n_cells, n_corners):  # type: ignore[no-untyped-def]
                 p1, p2 = end, q
             length = np.sqrt(ex * ex + ey * ey + ez * ez)
             ex, ey, ez = ex / length, ey / length, ez / length
-            ra, rb = s.reach[a], s.reach[b]
+            ra, rb = s.near[REACH, a], s.near[REACH, b]
             height = 0.5 * (length + (ra - rb) * (ra + rb) / length)
             rho2 = max((ra - height) * (ra + height), 0.0)
             mx, my, mz = ax + height * ex, ay + height * ey, az + height * ez
@@ -294,7 +295,7 @@ def _arcs(s, n_cells, n_corners):  # type: ignore[no-untyped-def]
                     )
                     - _covered_half_angle(
                         s, a, ex, ey, ez, mx, my, mz,
-                        s.cell[s.corner_cell[end], end_slot],
+                        s.cell[s.mark[end, 0], end_slot],
                         s.corner[end, 0], s.corner[end, 1], s.corner[end, 2],
                     )
                 )
@@ -310,7 +311,7 @@ def _arcs(s, n_cells, n_corners):  # type: ignore[no-untyped-def]
     return CLOSED
 
 
-@compiled
+@helper
 def _ring_is_open(s, t, i, j, n_cells):  # type: ignore[no-untyped-def]
     """Tell whether all cells about an edge are in the cage, t the first of them."""
     a, b = s.cell[t, i], s.cell[t, j]
@@ -320,7 +321,7 @@ def _ring_is_open(s, t, i, j, n_cells):  # type: ignore[no-untyped-def]
     l = 6 - i - j - k
     first = t
     for _ in range(4 * n_cells):
-        other = s.across[t, l]
+        other = s.cell[t, 4 + l]
         if other <= first:
             # round once; or a corner, or a ring already seen from an earlier cell
             return other == first
@@ -332,7 +333,7 @@ def _ring_is_open(s, t, i, j, n_cells):  # type: ignore[no-untyped-def]
     return False
 
 
-@compiled
+@helper
 def _circles_and_islands(s, n, n_cells):  # type: ignore[no-untyped-def]
     """Add full circles in which two spheres meet, and spheres without any arc."""
     for t in range(n_cells):
@@ -343,25 +344,25 @@ def _circles_and_islands(s, n, n_cells):  # type: ignore[no-untyped-def]
                 while k == i or k == j:
                     k += 1
                 l = 6 - i - j - k
-                if s.across[t, k] < t or s.across[t, l] < t:
+                if s.cell[t, 4 + k] < t or s.cell[t, 4 + l] < t:
                     continue
                 a, b = s.cell[t, i], s.cell[t, j]
-                ex, ey, ez = s.x[b] - s.x[a], s.y[b] - s.y[a], s.z[b] - s.z[a]
+                ex, ey, ez = s.near[X, b] - s.near[X, a], s.near[Y, b] - s.near[Y, a], s.near[Z, b] - s.near[Z, a]
                 length = np.sqrt(ex * ex + ey * ey + ez * ez)
-                ra, rb = s.reach[a], s.reach[b]
+                ra, rb = s.near[REACH, a], s.near[REACH, b]
                 height = 0.5 * (length + (ra - rb) * (ra + rb) / length)
                 rho2 = (ra - height) * (ra + height)
                 if rho2 <= 0.0 or not _ring_is_open(s, t, i, j, n_cells):
                     continue
                 ex, ey, ez = ex / length, ey / length, ez / length
-                mx = s.x[a] + height * ex
-                my = s.y[a] + height * ey
-                mz = s.z[a] + height * ez
+                mx = s.near[X, a] + height * ex
+                my = s.near[Y, a] + height * ey
+                mz = s.near[Z, a] + height * ez
                 hidden = False
                 for k in range(n):
-                    dx, dy, dz = s.x[k] - mx, s.y[k] - my, s.z[k] - mz
+                    dx, dy, dz = s.near[X, k] - mx, s.near[Y, k] - my, s.near[Z, k] - mz
                     if (
-                        dx * dx + dy * dy + dz * dz - s.reach[k] * s.reach[k] < -rho2
+                        dx * dx + dy * dy + dz * dz - s.near[REACH, k] * s.near[REACH, k] < -rho2
                         and k != a
                         and k != b
                     ):
@@ -384,19 +385,19 @@ def _circles_and_islands(s, n, n_cells):  # type: ignore[no-untyped-def]
             a = s.cell[t, i]
             if s.patch[a, _STAMP] == s.clock[0]:
                 continue
-            own = s.reach[a] * s.reach[a]
+            own = s.near[REACH, a] * s.near[REACH, a]
             hidden = False
             for k in range(n):
-                dx, dy, dz = s.x[k] - s.x[a], s.y[k] - s.y[a], s.z[k] - s.z[a]
-                if dx * dx + dy * dy + dz * dz - s.reach[k] * s.reach[k] < -own and k != a:
+                dx, dy, dz = s.near[X, k] - s.near[X, a], s.near[Y, k] - s.near[Y, a], s.near[Z, k] - s.near[Z, a]
+                if dx * dx + dy * dy + dz * dz - s.near[REACH, k] * s.near[REACH, k] < -own and k != a:
                     hidden = True
-            _touch(s, a, s.x[a], s.y[a], s.z[a])
+            _touch(s, a, s.near[X, a], s.near[Y, a], s.near[Z, a])
             if hidden:
                 # nothing of this sphere is seen: mark it as looked at
                 s.patch[a, _ARCS] = -1.0
 
 
-@compiled
+@helper
 def _patch_area(s, a):  # type: ignore[no-untyped-def]
     """Area of the wall on sphere a over R^2, between 0 and 4 pi."""
     if s.patch[a, _ARCS] < 0.0:
@@ -413,13 +414,13 @@ def _patch_area(s, a):  # type: ignore[no-untyped-def]
             + s.patch[a, _AY] * s.patch[a, _Y0]
             + s.patch[a, _AZ] * s.patch[a, _Z0]
         )
-        r = s.reach[a]
+        r = s.near[REACH, a]
         if outward > -1e-14 * r * r * r:
             area -= _FULL
     return area
 
 
-@compiled
+@helper
 def integrate_wall(s, n, n_cells, n_corners):  # type: ignore[no-untyped-def]
     """Volume, area, wall sum, bounding neighbors and weakest window of a cage.
 
@@ -444,20 +445,20 @@ def integrate_wall(s, n, n_cells, n_corners):  # type: ignore[no-untyped-def]
             if s.patch[a, _STAMP] != s.clock[0]:
                 continue
             s.patch[a, _STAMP] = -s.clock[0]
-            r = s.reach[a]
+            r = s.near[REACH, a]
             area = _patch_area(s, a) * r * r
             s.patch[a, _AREA] = area
             ax, ay, az = s.patch[a, _AX], s.patch[a, _AY], s.patch[a, _AZ]
             tx += ax
             ty += ay
             tz += az
-            x, y, z = s.x[a], s.y[a], s.z[a]
+            x, y, z = s.near[X, a], s.near[Y, a], s.near[Z, a]
             # int |x|^2 dA from |x|^2 = 2 x . x_j - g on the sphere
             moment = (
                 2.0 * (x * (x * area + r * ax) + y * (y * area + r * ay) + z * (z * area + r * az))
-                - s.power[a] * area
+                - s.near[POWER, a] * area
             )
-            volume += (s.power[a] * area - moment) / (6.0 * r)
+            volume += (s.near[POWER, a] * area - moment) / (6.0 * r)
             surface += area
             wall_sum += r * area
     closure = np.sqrt(tx * tx + ty * ty + tz * tz)
@@ -477,8 +478,8 @@ def integrate_wall(s, n, n_cells, n_corners):  # type: ignore[no-untyped-def]
     weakest = -1.0
     where = -1
     for q in range(n_corners):
-        t = s.corner_cell[q]
-        f = s.corner_face[q]
+        t = s.mark[q, 0]
+        f = s.mark[q, 1]
         ratio = opening_ratio(
             s,
             s.cell[t, 1 if f == 0 else 0],
