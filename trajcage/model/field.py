@@ -24,6 +24,8 @@ class Field:
         Whether there is one value a particle and frame, or one a frame.
     shape : tuple of int
         Trailing shape of one value, empty for scalars.
+    codes : tuple of str
+        Names of the values 0, 1, 2, ... of a field of codes, empty otherwise.
     """
 
     name: str
@@ -32,3 +34,4 @@ class Field:
     dtype: str = "f8"
     per_particle: bool = True
     shape: tuple[int, ...] = ()
+    codes: tuple[str, ...] = ()

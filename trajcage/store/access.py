@@ -1,0 +1,185 @@
+"""Opening HDF5 files that are complete, being written, killed, foreign or hostile.
+
+Only what trajcage itself writes is accepted: hard links, plain numbers and
+fixed-length strings, storage inside the file. Everything else could make a
+reader open other files, load code or allocate without limit.
+"""
+
+import io
+import os
+from pathlib import Path
+from typing import Any
+
+import h5py
+
+from trajcage.errors import ResultFileError
+from trajcage.store.commit import Commit, latest_commit
+from trajcage.store.guard import guard
+from trajcage.store.lock import is_being_written
+from trajcage.store.superblock import Superblock, read_superblock
+
+__all__ = [
+    "check_contents",
+    "open_for_reading",
+    "open_for_writing",
+    "open_mended",
+    "read_commit",
+    "read_text",
+]
+
+_FILTERS = {h5py.h5z.FILTER_DEFLATE, h5py.h5z.FILTER_SHUFFLE}
+_MAX_DEPTH = 16
+_MAX_OBJECTS = 10_000
+
+
+class _Mended(io.FileIO):
+    """The file as it would be with another superblock; the disk is not touched."""
+
+    def __init__(self, path: Path, superblock: Superblock) -> None:
+        super().__init__(path, "rb")
+        self._head = superblock.pack()
+
+    def readinto(self, buffer: Any) -> int | None:
+        start = self.tell()
+        count = super().readinto(buffer)
+        if count and start < len(self._head):
+            end = min(start + count, len(self._head))
+            memoryview(buffer).cast("B")[: end - start] = self._head[start:end]
+        return count
+
+
+def open_for_reading(path: Path, *, alone: bool = False) -> Any:
+    """Open a result file whatever its writer is doing.
+
+    Parameters
+    ----------
+    path : Path
+        The file.
+    alone : bool
+        Whether the caller holds the writer lock, so that nobody is writing.
+
+    Raises
+    ------
+    ResultFileError
+        If the file is missing, truncated, damaged or no HDF5 file.
+    """
+    superblock = read_superblock(path)
+    size = path.stat().st_size
+    if size < superblock.end_of_file + superblock.base:
+        raise ResultFileError(
+            f"{path} is truncated: expected {superblock.end_of_file} bytes, found "
+            f"{size}; trajcage.store.salvage copies the frames that are left"
+        )
+    with guard(path, "opening"):
+        if not superblock.open_for_writing:
+            return h5py.File(path, "r")
+        if not alone and is_being_written(path):
+            return h5py.File(path, "r", swmr=True)
+    return open_mended(path, superblock.closed(size))
+
+
+def open_mended(path: Path, superblock: Superblock) -> Any:
+    """Open a file for reading as if it had this superblock."""
+    with guard(path, "opening"):
+        return h5py.File(_Mended(path, superblock), "r")
+
+
+def open_for_writing(path: Path) -> Any:
+    """Open an existing file as its single writer with many readers.
+
+    Goes straight to that mode, so the file is never in the state of an
+    ordinary writer, in which a crash leaves anything behind.
+    """
+    access = h5py.h5p.create(h5py.h5p.FILE_ACCESS)
+    access.set_libver_bounds(h5py.h5f.LIBVER_V110, h5py.h5f.LIBVER_V110)
+    access.set_sieve_buf_size(0)  # the commit record goes to disk as it is written
+    flags = h5py.h5f.ACC_RDWR | h5py.h5f.ACC_SWMR_WRITE
+    return h5py.File(h5py.h5f.open(os.fsencode(path), flags, access))
+
+
+def check_contents(file: Any, path: Path) -> None:
+    """Refuse a file with anything in it that trajcage does not write.
+
+    Raises
+    ------
+    ResultFileError
+        Names the first offending object and what is wrong with it.
+    """
+    seen: set[int] = set()
+    waiting = [("", file, 0)]
+    while waiting:
+        prefix, group, depth = waiting.pop()
+        for name in group:
+            where = f"{prefix}/{name}"
+            item = _hard_linked(group, name, path, where)
+            address = h5py.h5o.get_info(item.id).addr
+            if address in seen:
+                continue
+            seen.add(address)
+            if len(seen) > _MAX_OBJECTS or depth > _MAX_DEPTH:
+                raise ResultFileError(
+                    f"{path} holds too many objects for a result file"
+                )
+            if isinstance(item, h5py.Group):
+                waiting.append((where, item, depth + 1))
+            elif isinstance(item, h5py.Dataset):
+                _check_dataset(item, f"{path}: {where}")
+            else:
+                raise ResultFileError(f"{path}: {where} is neither group nor dataset")
+
+
+def _hard_linked(group: Any, name: str, path: Path, where: str) -> Any:
+    link = group.get(name, getlink=True)
+    if not isinstance(link, h5py.HardLink):
+        raise ResultFileError(
+            f"{path}: {where} is a link ({type(link).__name__}) that could lead out "
+            "of the file; remove it or copy the data into the file"
+        )
+    return group[name]
+
+
+def _check_dataset(dataset: Any, where: str) -> None:
+    plist = dataset.id.get_create_plist()
+    if plist.get_layout() == h5py.h5d.VIRTUAL:
+        raise ResultFileError(f"{where} is a virtual dataset made of other files")
+    if plist.get_external_count():
+        raise ResultFileError(f"{where} keeps its data in other files")
+    kind = dataset.id.get_type()
+    if kind.get_class() not in {h5py.h5t.INTEGER, h5py.h5t.FLOAT, h5py.h5t.STRING} or (
+        kind.get_class() == h5py.h5t.STRING and kind.is_variable_str()
+    ):
+        raise ResultFileError(
+            f"{where} is of type {dataset.dtype}, expected numbers or fixed-length text"
+        )
+    filters = {plist.get_filter(i)[0] for i in range(plist.get_nfilters())}
+    if filters - _FILTERS:
+        raise ResultFileError(f"{where} uses unknown filters {filters - _FILTERS}")
+
+
+def read_text(attributes: Any, name: str) -> str:
+    """Return a text attribute, empty if it is missing."""
+    value = attributes.get(name, b"")
+    return value.decode() if isinstance(value, bytes) else str(value)
+
+
+def read_commit(file: Any, path: Path) -> Commit:
+    """Return the valid commit record of an open file.
+
+    Raises
+    ------
+    ResultFileError
+        If the file has none: it is foreign or damaged.
+    """
+    item = file
+    for name in ("trajcage", "commit"):
+        if not isinstance(item, h5py.Group) or name not in item:
+            raise ResultFileError(
+                f"{path} is an HDF5 file but not a result of trajcage: it has no "
+                "/trajcage/commit"
+            )
+        item = _hard_linked(item, name, path, f"{item.name}/{name}")
+    _check_dataset(item, f"{path}: /trajcage/commit")
+    if item.size > _MAX_OBJECTS:
+        raise ResultFileError(f"{path}: the commit record has an unexpected shape")
+    columns = tuple(read_text(item.attrs, "columns").split("\n"))
+    return latest_commit(item[()], columns)
