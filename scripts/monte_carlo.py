@@ -104,7 +104,7 @@ class MonteCarlo:
 
     @property
     def images(self) -> Integers:
-        """Box crossings of every particle since the start, (n, d): a copy."""
+        """Box crossings of every particle since the clock started, (n, d): a copy."""
         return self._images.copy()
 
     @property
@@ -126,6 +126,11 @@ class MonteCarlo:
     def swap_acceptance(self) -> float:
         """Accepted share of the radius exchanges since the last change of the step."""
         return float(self._tally[3] / max(self._tally[2], 1))
+
+    def start_clock(self) -> None:
+        """Count sweeps and box crossings from here."""
+        self.sweeps = 0
+        self._images[:] = 0
 
     def freeze(self, particles: ArrayLike = ()) -> None:
         """Let these particles stay where they are, and all others move.
