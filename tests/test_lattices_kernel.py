@@ -1,6 +1,7 @@
 """Lattice cages and the compiled kernel against each other and against grids."""
 
 import math
+from importlib.util import find_spec
 
 import numpy as np
 import pytest
@@ -12,11 +13,17 @@ from trajcage.model import CageStatus
 if not hasattr(trajcage.kernel, "measure_cages"):
     pytest.skip("the kernel is not there yet", allow_module_level=True)
 
+# without its plane half the kernel does not return from a plane configuration
+needs_plane = pytest.mark.skipif(
+    find_spec("trajcage.kernel.flood2d") is None,
+    reason="the kernel does not measure in the plane yet",
+)
+
 PAST_FIRST_SHELL = ["sc", "bcc", "fcc", "hcp"]
 
 
 def measure(name, phi):
-    """One cage of a noiseless periodic block, lengths in diameters."""
+    """Cages of a noiseless periodic block, that of particle 0 measured."""
     spacing = (LATTICES[name].close_packing.value / phi) ** (
         1 / LATTICES[name].dimensions
     )
@@ -29,7 +36,7 @@ def measure(name, phi):
         np.zeros(d),
         np.ones(d, dtype=bool),
         np.full(len(positions), 0.5),
-        subset=np.array([len(positions) // 2]),
+        subset=np.array([0]),
     )
 
 
@@ -58,13 +65,13 @@ def test_cages_of_several_shells_against_grids(name, phi, volume):
 @pytest.mark.parametrize(
     ("name", "phi"),
     [
-        ("square", 0.22),
-        ("square", 0.39),
-        ("square", 0.7),
-        ("triangular", 0.3),
-        ("triangular", 0.9),
-        ("honeycomb", 0.2),
-        ("honeycomb", 0.5),
+        pytest.param("square", 0.22, marks=needs_plane),
+        pytest.param("square", 0.39, marks=needs_plane),
+        pytest.param("square", 0.7, marks=needs_plane),
+        pytest.param("triangular", 0.3, marks=needs_plane),
+        pytest.param("triangular", 0.9, marks=needs_plane),
+        pytest.param("honeycomb", 0.2, marks=needs_plane),
+        pytest.param("honeycomb", 0.5, marks=needs_plane),
         ("sc", 0.2),
         ("sc", 0.3),
         ("sc", 0.5),
@@ -94,7 +101,13 @@ def test_kernel_measures_the_reference(name, phi):
     assert cage.weakest_window[0] == pytest.approx(found.weakest_window, rel=1e-7)
 
 
-@pytest.mark.parametrize("name", LATTICES)
+@pytest.mark.parametrize(
+    "name",
+    [
+        pytest.param(name, marks=[needs_plane] if entry.dimensions == 2 else [])
+        for name, entry in LATTICES.items()
+    ],
+)
 def test_kernel_finds_the_open_cages(name):
     escape = thresholds(name).escape.value
     assert measure(name, escape * 1.001).status[0] == CageStatus.CLOSED

@@ -4,7 +4,7 @@ from trajcage.lattices.effective_diameter import effective_diameter_wca
 from trajcage.lattices.equation import EquationOfState
 from trajcage.lattices.equations import EQUATIONS, equations, reference_equations
 from trajcage.lattices.exact import SMALLEST_VORONOI_CELL, ExactNumber
-from trajcage.lattices.ideal import LATTICES, lattice_sites
+from trajcage.lattices.ideal import LATTICES
 from trajcage.lattices.mixture_equations import disk_mixture, sphere_mixture
 from trajcage.lattices.phases import PHASE_MARKS, PhaseMark, phase_marks
 from trajcage.lattices.reference import (
@@ -14,6 +14,7 @@ from trajcage.lattices.reference import (
     lattice,
     thresholds,
 )
+from trajcage.lattices.sites import lattice_sites
 
 __all__ = [
     "EQUATIONS",

@@ -2,8 +2,6 @@
 
 import math
 
-from scipy.integrate import quad
-
 from trajcage.errors import UsageError
 
 __all__ = ["effective_diameter_wca"]
@@ -38,6 +36,8 @@ def effective_diameter_wca(epsilon_over_kt: float) -> float:
     if not (math.isfinite(epsilon_over_kt) and epsilon_over_kt > 0):
         msg = f"epsilon over kT must be a positive number, got {epsilon_over_kt!r}"
         raise UsageError(msg)
+    from scipy.integrate import quad  # here: it takes longer to load than all else
+
     contact = 2 ** (1 / 6)
     # inside this distance u exceeds 50 kT and the integrand is 1 to rounding:
     # u = epsilon (2 r^-6 - 1)^2

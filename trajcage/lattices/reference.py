@@ -8,13 +8,7 @@ import numpy as np
 
 from trajcage.errors import UsageError
 from trajcage.lattices.exact import ExactNumber
-from trajcage.lattices.ideal import (
-    CageStage,
-    IdealLattice,
-    find_lattice,
-    lattice_sites,
-    nearest_directions,
-)
+from trajcage.lattices.ideal import CageStage, IdealLattice, find_lattice
 from trajcage.lattices.shell import (
     CageSize,
     FacetEdges,
@@ -23,6 +17,7 @@ from trajcage.lattices.shell import (
     plane_stage_two,
     space_shell,
 )
+from trajcage.lattices.sites import lattice_sites, nearest_directions
 from trajcage.model import CageStatus
 
 __all__ = ["LatticeReference", "LatticeThresholds", "Window", "lattice", "thresholds"]
@@ -270,7 +265,7 @@ def _limiting_edges(name: str) -> FacetEdges:
 
 def _measured_cage(entry: IdealLattice, stage: CageStage, gap: float) -> CageSize:
     """Measure a cage of several shells with the kernel."""
-    from trajcage.kernel import measure_cages
+    from trajcage.kernel import measure_cages  # here: numba is slow to load
 
     upper = entry.stages[entry.stages.index(stage) - 1].spacing_ratio
     diameter = min(1.0 - gap, upper * (1 - _THRESHOLD_MARGIN))

@@ -3,8 +3,6 @@
 import math
 from functools import partial
 
-from scipy.optimize import brentq
-
 from trajcage.lattices.equation import EquationOfState
 from trajcage.lattices.ideal import LATTICES
 from trajcage.lattices.phases import HEXATIC_SOLID, MELTING
@@ -56,6 +54,8 @@ def _almarza_work(y: float) -> float:
 
 
 def _almarza(phi: float) -> float:
+    from scipy.optimize import brentq  # here: it takes longer to load than all else
+
     volume = math.pi / (6 * phi)
     excess = volume * (_FCC - phi) / _FCC
     # y * work(y) rises with y over the stable crystal, where y stays below 0.09
