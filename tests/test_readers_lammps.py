@@ -303,6 +303,19 @@ def test_lattice_printed_in_full_is_not_taken_for_coarse(tmp_path):
         assert trajectory.frame(0).resolution <= 1.01e-5
 
 
+def test_more_lines_than_announced(tmp_path):
+    path = write(tmp_path / "a.dump", dump_frame(["1 1 1 2 3", "2 1 1 2 4"], n=1))
+    with pytest.raises(FrameError, match="expected 1 particles, found more lines"):
+        open_dump(path)
+
+
+def test_line_of_another_length_is_named(tmp_path):
+    rows = ["1 1 1 2 3", "2 1 1 2", "3 1 1 2 4 5"]
+    path = write(tmp_path / "a.dump", dump_frame(rows))
+    with pytest.raises(FrameError, match="5 columns, found 4 on line 2 of the"):
+        open_dump(path)
+
+
 def test_dump_under_any_name(tmp_path):
     path = write(tmp_path / "dump.melt", dump_frame(["1 1 1 2 3"]))
     with open_dump(path) as trajectory:

@@ -5,6 +5,7 @@ import pytest
 
 from trajcage.errors import InputError, UsageError
 from trajcage.readers import InputOptions, open_trajectory
+from trajcage.readers.text import decimal_spacing
 
 TEXT = "3\n\nbig 1.0 2.0 3.0\nsmall 4.0 5.0 6.0\nbig 7.5 8.25 9.125\n"
 
@@ -185,3 +186,23 @@ def test_frames_beyond_the_end(xyz):
         for index in (1, -1):
             with pytest.raises(InputError, match=f"no frame {index}: .* 0 to 0"):
                 trajectory.frame(index)
+
+
+@pytest.mark.parametrize(
+    ("words", "spacing"),
+    [
+        ("0.125 1.250 10.001 3.000", 1e-3),  # fixed decimals
+        ("12.3456 1.5 0.001", 1e-4),  # six significant digits
+        ("1.5 0.25 3", 1e-5),  # too few digits to tell: six are assumed
+        ("0.5 1.0 1.5 2.0", 1e-5),  # a lattice printed in full, not 0.1
+        ("0.1 1.2 2.3 3.4 4.5 5.6 6.7", 0.1),  # one decimal, all digits occur
+        ("1.5e-05 12.5", 1e-4),
+        ("nan 1.250 2.375 0.111", 1e-3),
+        ("0.10000000000000001 7.25", 1e-16),
+        ("0 0", 0.0),
+        ("", 0.0),
+    ],
+)
+def test_spacing_of_printed_numbers(words, spacing):
+    found = decimal_spacing(words.encode().split())
+    assert spacing <= found <= 1.001 * spacing + 9e-16

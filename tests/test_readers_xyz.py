@@ -122,3 +122,22 @@ def test_open_edges_find_the_corner_of_a_given_box(tmp_path):
         assert t.frame(0).box.origin.tolist() == [-5, -5, -5]
     with pytest.raises(InputError, match="1 of 3 lie outside if it starts"):
         open_xyz(tmp_path / "c.xyz", xyz_frame(), box="10,10,8", periodic="xy")
+
+
+def test_types_and_radii_of_a_topology(tmp_path):
+    topology = tmp_path / "top.xyz"
+    topology.write_text(
+        "2\nProperties=species:S:1:pos:R:3:radius:R:1\nA 0 0 0 0.5\nB 1 1 1 0.7\n"
+    )
+    run = tmp_path / "run.xyz"
+    run.write_text(xyz_frame(["X 1 2 3", "X 4 5 6"]) * 2)
+    options = InputOptions(topology, run, box="9,9,9")
+    with open_trajectory(options) as trajectory:
+        frame = trajectory.frame(1)
+        assert trajectory.type_names == ("A", "B")
+        assert "radius column" in trajectory.describe().radii_source
+    assert frame.radii.tolist() == [0.5, 0.7]
+    assert frame.positions.tolist() == [[1, 2, 3], [4, 5, 6]]
+    run.write_text(xyz_frame())
+    with pytest.raises(InputError, match="topology has 2 particles"):
+        open_trajectory(options)

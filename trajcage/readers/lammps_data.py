@@ -12,7 +12,7 @@ import numpy as np
 
 from trajcage.errors import InputError
 from trajcage.readers.source import RawFrame, Source
-from trajcage.readers.text import decimal_spacing, to_floats, to_integers, to_names
+from trajcage.readers.text import Table, to_floats
 
 __all__ = ["LammpsDataSource"]
 
@@ -60,38 +60,32 @@ class LammpsDataSource(Source):
 
     def _read(self, lines: list[bytes]) -> None:
         head, style, rows = _split(lines)
-        columns = _columns(style, rows).split()
-        n_columns = len(columns)
-        short = [row for row in rows if len(row) < n_columns]
+        names = _columns(style, rows).split()
         n = int(head.get("atoms", [b"-1"])[0])
-        if short or len(rows) != n:
-            raise ValueError(
-                f"expected {n} atoms of at least {n_columns} columns, found "
-                f"{len(rows)} lines, {len(short)} of them too short (truncated?)"
-            )
-        words = np.array([row[:n_columns] for row in rows])
-        ids = to_integers(words[:, columns.index("id")])
+        if len(rows) != n:
+            raise ValueError(f"expected {n} atoms, found {len(rows)} (truncated?)")
+        columns = {name: k for k, name in enumerate([*names, "ix", "iy", "iz"])}
+        table = Table(rows, columns, len(names))
+        ids = table.integers("id")[:, 0]
         order = np.argsort(ids, kind="stable")
-        picked = words[:, [columns.index(name) for name in "xyz"]]
-        self._spacing = decimal_spacing(picked.ravel().tolist())
-        types = to_names(words[order, columns.index("type")])
+        self._spacing = table.spacing("x", "y", "z")
+        types = table.names("type")
         self.type_names = tuple(sorted(set(types), key=lambda t: (len(t), t)))
-        radii = None
-        if "diameter" in columns:
+        radii = images = None
+        if "diameter" in table:
             self.radii_source = "the diameters in the LAMMPS data file"
-            radii = to_floats(words[order, columns.index("diameter")]) / 2.0
-        images = None
-        if all(len(row) == n_columns + 3 for row in rows):
-            images = to_integers(np.array([row[n_columns:] for row in rows]))[order]
+            radii = table.floats("diameter")[order, 0] / 2.0
+        if all(len(row) == len(columns) for row in table.rows):
+            images = table.integers("ix", "iy", "iz")[order].astype(np.int32)
         low, vectors = _box(head)
         self._raw = RawFrame(
-            positions=to_floats(picked)[order],
+            positions=table.floats("x", "y", "z")[order],
             ids=ids[order],
-            types=self.index_types(types, 0),
+            types=self.index_types(types, 0)[order],
             vectors=vectors,
             origin=low,
             radii=radii,
-            images=None if images is None else images.astype(np.int32),
+            images=images,
         )
 
     def read(self, index: int) -> RawFrame:  # noqa: ARG002 - there is one frame
@@ -108,8 +102,8 @@ class LammpsDataSource(Source):
 
 def _split(
     lines: list[bytes],
-) -> tuple[dict[str, list[bytes]], str, list[list[bytes]]]:
-    """Header values by keyword, atom style, and the words of the Atoms section."""
+) -> tuple[dict[str, list[bytes]], str, list[bytes]]:
+    """Header values by keyword, atom style, and the lines of the Atoms section."""
     head: dict[str, list[bytes]] = {}
     style, rows, section = "", [], ""
     for line in lines[1:]:  # the first line is a title
@@ -122,9 +116,10 @@ def _split(
             if section == "Atoms":
                 style = comment.strip().decode()
             continue
-        words = text.partition(b"#")[0].split()
+        text = text.partition(b"#")[0]
+        words = text.split()
         if section == "Atoms" and words:
-            rows.append(words)
+            rows.append(text)
         elif not section and words:
             n_values = sum(_is_number(word) for word in words)
             keyword = b" ".join(words[n_values:]).decode(errors="replace")
@@ -134,10 +129,13 @@ def _split(
     return head, style, rows
 
 
-def _columns(style: str, rows: list[list[bytes]]) -> str:
+def _columns(style: str, rows: list[bytes]) -> str:
     if style in _STYLES:
         return _STYLES[style]
-    if not style and len(rows[0]) in {5, 8}:  # no other style has as few columns
+    if not style and len(rows[0].split()) in {
+        5,
+        8,
+    }:  # no other style has as few columns
         return _STYLES["atomic"]
     raise ValueError(
         f"atom style {style!r} is not known; head the section as 'Atoms # STYLE' with "
@@ -150,8 +148,8 @@ def _box(head: dict[str, list[bytes]]) -> tuple[np.ndarray, np.ndarray]:
         bounds = [head[f"{axis}lo {axis}hi"] for axis in "xyz"]
     except KeyError as missing:
         raise ValueError(f"expected a line ending in {missing} in the header") from None
-    low, high = to_floats(np.array(bounds)).T
-    xy, xz, yz = to_floats(np.array(head.get("xy xz yz", [b"0", b"0", b"0"])))
+    low, high = np.array([to_floats(pair) for pair in bounds]).T
+    xy, xz, yz = to_floats(head.get("xy xz yz", [b"0", b"0", b"0"]))
     lx, ly, lz = high - low
     return low, np.array([[lx, 0.0, 0.0], [xy, ly, 0.0], [xz, yz, lz]])
 

@@ -6,6 +6,7 @@ changes and rounds to single precision.
 """
 
 import mmap
+from collections.abc import Mapping
 from pathlib import Path
 
 import numpy as np
@@ -20,7 +21,7 @@ from trajcage.readers.lammps_text import (
     parse_block,
 )
 from trajcage.readers.source import Particles, RawFrame, Source
-from trajcage.readers.text import decimal_spacing, to_floats, to_integers, to_names
+from trajcage.readers.text import Table
 
 __all__ = ["LammpsDumpSource"]
 
@@ -75,20 +76,18 @@ class LammpsDumpSource(Source):
 
     def _open(self, path: Path) -> None:
         block = self._block(0)
-        self._coordinates = _choose_coordinates(block.columns, path)
-        self._first_n = len(block.words)
+        self._coordinates = _choose_coordinates(block.table.columns, path)
         companion = self._companion
-        if companion is not None and len(companion.types) != self._first_n:
+        if companion is not None and len(companion.types) != len(block.table):
             raise InputError(
                 f"the topology has {len(companion.types)} particles, {path} has "
-                f"{self._first_n}"
+                f"{len(block.table)}"
             )
         self._type_column = next(
-            (name for name in ("type", "element") if name in block.columns), None
+            (name for name in ("type", "element") if name in block.table.columns), None
         )
         if self._type_column is not None:
-            column = block.words[:, block.columns.index(self._type_column)]
-            names = set(to_names(np.unique(column)))
+            names = set(block.table.names(self._type_column))
             if companion is not None:
                 names |= set(companion.type_names)
             self.type_names = tuple(sorted(names, key=_natural_order))
@@ -98,11 +97,11 @@ class LammpsDumpSource(Source):
             (
                 f"the {name} column of the dump"
                 for name in ("radius", "diameter")
-                if name in block.columns
+                if name in block.table.columns
             ),
             "" if companion is None else companion.radii_source,
         )
-        self.has_ids = "id" in block.columns
+        self.has_ids = "id" in block.table.columns
         if not self.has_ids and self.n_frames > 1:
             self.notes.append(
                 "the dump has no id column: particles are told apart by their order "
@@ -114,8 +113,7 @@ class LammpsDumpSource(Source):
         if self._coordinates[0] in {"xs", "xsu"}:
             self.notes.append("scaled coordinates, turned into lengths with the box")
         self.planar = True if len(self._coordinates) == 2 else None
-        picked = [block.columns.index(name) for name in self._coordinates]
-        self._unit = decimal_spacing(block.words[:200_000, picked].ravel().tolist())
+        self._unit = block.table.spacing(*self._coordinates)
 
     def read(self, index: int) -> RawFrame:
         """Read one frame, particles in the order of their ids."""
@@ -141,83 +139,63 @@ class LammpsDumpSource(Source):
         self._map.close()
 
     def _assemble(self, block: DumpBlock, index: int) -> RawFrame:
-        words, columns = block.words, block.columns
-        missing = [name for name in self._coordinates if name not in columns]
-        if missing:
-            raise ValueError(
-                f"expected the columns {' '.join(self._coordinates)} of the first "
-                f"frame, found {' '.join(columns)}"
-            )
-        if "id" in columns:
-            ids = to_integers(words[:, columns.index("id")])
+        table, companion = block.table, self._companion
+        n = len(table)
+        ids, order = np.arange(n, dtype=np.int64), np.arange(n)
+        if "id" in table:
+            ids = table.integers("id")[:, 0]
             order = np.argsort(ids, kind="stable")
-            ids, words = ids[order], words[order]
-        elif self._companion is not None and self._companion.ids is not None:
-            ids = self._companion.ids.copy()
-        else:
-            ids = np.arange(len(words), dtype=np.int64)
-        if len(words) != self._first_n and self._companion is not None:
-            raise ValueError(
-                f"expected the {self._first_n} particles of the first frame, found "
-                f"{len(words)}"
-            )
-        positions = np.zeros((len(words), 3))
-        for axis, name in enumerate(self._coordinates):
-            positions[:, axis] = to_floats(words[:, columns.index(name)])
+            ids = ids[order]
+        elif companion is not None:
+            ids = companion.own_ids()
+        rows = order if companion is None else companion.rows(ids)
+        positions = np.zeros((n, 3))
+        coordinates = table.floats(*self._coordinates)[order]
+        positions[:, : coordinates.shape[1]] = coordinates
         if self._coordinates[0] in {"xs", "xsu"}:
             positions = block.origin + positions @ block.vectors
+        radii = self._radii(table)
+        if radii is not None:
+            radii = radii[order]
+        elif companion is not None and companion.radii is not None:
+            radii = companion.radii[rows]
+        if self._type_column is not None:
+            types = self.index_types(table.names(self._type_column), index)[order]
+        elif companion is not None:
+            types = companion.types[rows]
+        else:
+            types = np.zeros(n, dtype=np.int32)
+        images = self._images(table)
         return RawFrame(
             positions=positions,
             ids=ids,
-            types=self._types(words, columns, ids, index),
+            types=types,
             vectors=block.vectors,
             origin=block.origin,
             periodic=block.periodic,
             step=block.step,
             time=block.time,
-            radii=self._radii(words, columns, ids),
-            images=self._images(words, columns),
+            radii=radii,
+            images=None if images is None else images[order],
         )
 
-    def _types(
-        self,
-        words: NDArray[np.bytes_],
-        columns: list[str],
-        ids: NDArray[np.int64],
-        index: int,
-    ) -> NDArray[np.int32]:
-        if self._type_column is not None:
-            if self._type_column not in columns:
-                raise ValueError(f"expected the column {self._type_column}")
-            column = words[:, columns.index(self._type_column)]
-            return self.index_types(to_names(column), index)
-        if self._companion is None:
-            return np.zeros(len(words), dtype=np.int32)
-        return self._companion.types[_rows(self._companion, ids)]
+    @staticmethod
+    def _radii(table: Table) -> NDArray[np.float64] | None:
+        if "radius" in table:
+            return table.floats("radius")[:, 0]
+        if "diameter" in table:
+            return table.floats("diameter")[:, 0] / 2.0
+        return None
 
-    def _radii(
-        self, words: NDArray[np.bytes_], columns: list[str], ids: NDArray[np.int64]
-    ) -> NDArray[np.float64] | None:
-        if "radius" in columns:
-            return to_floats(words[:, columns.index("radius")])
-        if "diameter" in columns:
-            return to_floats(words[:, columns.index("diameter")]) / 2.0
-        if self._companion is None or self._companion.radii is None:
-            return None
-        return self._companion.radii[_rows(self._companion, ids)]
-
-    def _images(
-        self, words: NDArray[np.bytes_], columns: list[str]
-    ) -> NDArray[np.int32] | None:
+    def _images(self, table: Table) -> NDArray[np.int32] | None:
+        images = np.zeros((len(table), 3), dtype=np.int32)
         if self._coordinates[0] in {"xu", "xsu"}:
             # Already unwrapped: applying ix iy iz once more would be wrong.
-            return np.zeros((len(words), 3), dtype=np.int32)
-        names = [name for name in ("ix", "iy", "iz") if name in columns]
-        if len(names) < len(self._coordinates):
+            return images
+        names = ("ix", "iy", "iz")[: len(self._coordinates)]
+        if not all(name in table for name in names):
             return None
-        images = np.zeros((len(words), 3), dtype=np.int32)
-        for axis, name in enumerate(names):
-            images[:, axis] = to_integers(words[:, columns.index(name)])
+        images[:, : len(names)] = table.integers(*names)
         return images
 
     def _block(self, index: int) -> DumpBlock:
@@ -232,7 +210,7 @@ class LammpsDumpSource(Source):
             ) from None
 
 
-def _choose_coordinates(columns: list[str], path: Path) -> tuple[str, ...]:
+def _choose_coordinates(columns: Mapping[str, int], path: Path) -> tuple[str, ...]:
     for names in _COORDINATES.values():
         if set(names) <= set(columns):
             return names
@@ -243,17 +221,6 @@ def _choose_coordinates(columns: list[str], path: Path) -> tuple[str, ...]:
         "expected one of the coordinate columns x y z, xu yu zu, xs ys zs or "
         f"xsu ysu zsu, {path} has {' '.join(columns)}"
     )
-
-
-def _rows(companion: Particles, ids: NDArray[np.int64]) -> NDArray[np.intp]:
-    """Rows of the companion that hold these ids."""
-    if companion.ids is None:
-        return np.arange(len(ids))
-    order = np.argsort(companion.ids)
-    rows = order[np.searchsorted(companion.ids[order], ids).clip(max=len(order) - 1)]
-    if not np.array_equal(companion.ids[rows], ids):
-        raise ValueError("the particle ids of the dump are not those of the topology")
-    return np.asarray(rows)
 
 
 def _natural_order(name: str) -> tuple[int, str]:

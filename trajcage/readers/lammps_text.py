@@ -7,6 +7,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from trajcage.readers.text import Table, to_floats
+
 __all__ = ["BLOCK_HEAD", "DumpBlock", "DumpError", "find_blocks", "parse_block"]
 
 BLOCK_HEAD = b"ITEM: TIMESTEP"
@@ -33,9 +35,7 @@ class DumpBlock:
         Box edges as rows and the corner where they start.
     periodic : tuple of 3 bool or None
         Periodic edges, if the BOX BOUNDS line has flags.
-    columns : list of str
-        Names of the columns.
-    words : (n, n_columns) bytes
+    table : Table
         The columns as text.
     """
 
@@ -44,8 +44,7 @@ class DumpBlock:
     vectors: NDArray[np.float64]
     origin: NDArray[np.float64]
     periodic: tuple[bool, ...] | None
-    columns: list[str]
-    words: NDArray[np.bytes_]
+    table: Table
 
 
 def find_blocks(text: mmap.mmap) -> list[int]:
@@ -82,14 +81,14 @@ def parse_block(text: bytes, before: bytes = b"") -> DumpBlock:
         n = int(lines.next())
         vectors, origin, periodic = _read_box(lines)
         columns = lines.expect(b"ITEM: ATOMS").decode().split()
-        words = lines.table(n, len(columns))
+        table = lines.table(n, columns)
         found = _TIME.search(before)
         time = float(found[1]) if found else None
     except ValueError as error:
         failure = DumpError(str(error))
         failure.step = step
         raise failure from None
-    return DumpBlock(step, time, vectors, origin, periodic, columns, words)
+    return DumpBlock(step, time, vectors, origin, periodic, table)
 
 
 class _Lines:
@@ -114,8 +113,8 @@ class _Lines:
             raise ValueError(f"expected {head.decode()!r}, found {line[:60]!r}")
         return line[len(head) :].strip()
 
-    def table(self, n: int, n_columns: int) -> NDArray[np.bytes_]:
-        """Return n lines of words, (n, n_columns)."""
+    def table(self, n: int, columns: list[str]) -> Table:
+        """Return n lines of words."""
         text = self._text[self._at :]
         if n == 0:
             raise ValueError("expected particles, found none")
@@ -124,23 +123,22 @@ class _Lines:
                 "the file ends inside a line (truncated?); end a complete file with "
                 "a line break"
             )
-        rows = text.split(b"\n")
-        if len(rows) - 1 < n:
-            raise ValueError(f"expected {n} particles, found {len(rows) - 1} lines")
-        words = b" ".join(rows[:n]).split()
-        if len(words) != n * n_columns:
+        *lines, rest = text.split(b"\n", n)
+        if len(lines) < n:
             raise ValueError(
-                f"expected {n} lines of {n_columns} columns, found {len(words)} words "
-                f"instead of {n * n_columns}"
+                f"expected {n} particles, found {len(lines)} lines (truncated?)"
             )
-        return np.array(words).reshape(n, n_columns)
+        if rest.strip() and not rest.startswith(b"ITEM:"):
+            raise ValueError(f"expected {n} particles, found more lines than that")
+        numbered = {name: k for k, name in enumerate(columns)}
+        return Table(lines, numbered, len(columns))
 
 
 def _read_box(
     lines: _Lines,
 ) -> tuple[NDArray[np.float64], NDArray[np.float64], tuple[bool, ...] | None]:
     head = lines.expect(b"ITEM: BOX BOUNDS").decode().split()
-    rows = [np.array(lines.next().split()).astype(np.float64) for _ in range(3)]
+    rows = [to_floats(lines.next().split()) for _ in range(3)]
     flags = [word for word in head if re.fullmatch("[pfsm]{2}", word)]
     periodic = tuple(word == "pp" for word in flags) if len(flags) == 3 else None
     if head[:2] == ["abc", "origin"]:  # general triclinic: three vectors and a corner

@@ -4,6 +4,7 @@ from pathlib import Path
 
 from trajcage.errors import InputError
 from trajcage.readers.gsd_file import GsdSource
+from trajcage.readers.h5md import H5mdSource
 from trajcage.readers.lammps_data import LammpsDataSource
 from trajcage.readers.lammps_dump import LammpsDumpSource
 from trajcage.readers.options import InputOptions
@@ -14,8 +15,13 @@ from trajcage.readers.xyz import XyzSource
 
 __all__ = ["open_trajectory"]
 
-_FRAMES: dict[str, type[GsdSource] | type[LammpsDumpSource] | type[XyzSource]] = {
+_FRAMES: dict[
+    str,
+    type[GsdSource] | type[H5mdSource] | type[LammpsDumpSource] | type[XyzSource],
+] = {
     ".gsd": GsdSource,
+    ".h5md": H5mdSource,
+    ".h5": H5mdSource,
     ".dump": LammpsDumpSource,
     ".lammpsdump": LammpsDumpSource,
     ".lammpstrj": LammpsDumpSource,
@@ -33,7 +39,7 @@ _FIRST_BYTES = {
 def open_trajectory(options: InputOptions) -> Trajectory:
     """Open an input.
 
-    GSD, LAMMPS and XYZ files are read here, since MDAnalysis loses boxes,
+    GSD, LAMMPS, XYZ and H5MD files are read here, since MDAnalysis loses boxes,
     boundaries, diameters or columns of theirs; all others by MDAnalysis. The
     suffix of a file names its format, except that LAMMPS dumps and GSD files
     are known by their first bytes under any name.

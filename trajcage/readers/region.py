@@ -73,6 +73,7 @@ class Region:
         self._anchor = source.box_anchor
         if self._anchor is None and first.origin is None:
             self._anchor = self._find_anchor(first)
+        self._box(first, self._anchor)  # refuse an impossible box at once
 
     def positions(self, raw: RawFrame, index: int) -> NDArray[np.float64]:
         """Positions in the dimensions of the input, (n, d) float64, checked flat.

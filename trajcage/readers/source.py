@@ -61,6 +61,34 @@ class Particles:
     radii_source: str = ""
     ids: NDArray[np.int64] | None = None
 
+    def own_ids(self) -> NDArray[np.int64]:
+        """Return the ids, counted from 0 where the file has none."""
+        if self.ids is None:
+            return np.arange(len(self.types), dtype=np.int64)
+        return self.ids.copy()
+
+    def rows(self, ids: NDArray[np.int64]) -> NDArray[np.intp]:
+        """Find the rows of these ids, by order where the file has no ids.
+
+        Raises
+        ------
+        ValueError
+            If the ids, or their number, are others.
+        """
+        if len(ids) != len(self.types):
+            raise ValueError(
+                f"expected the {len(self.types)} particles of the topology, found "
+                f"{len(ids)}"
+            )
+        if self.ids is None:
+            return np.arange(len(ids))
+        order = np.argsort(self.ids)
+        found = np.searchsorted(self.ids[order], ids).clip(max=len(order) - 1)
+        rows = order[found]
+        if not np.array_equal(self.ids[rows], ids):
+            raise ValueError("the particle ids are not those of the topology")
+        return np.asarray(rows)
+
 
 @dataclass(frozen=True, eq=False)
 class RawFrame:
@@ -155,17 +183,16 @@ class Source(ABC):
 
     def index_types(self, names: Sequence[str], frame: int) -> NDArray[np.int32]:
         """Turn type names into indices; a type unknown to frame 0 is an error."""
-        unique, inverse = np.unique(np.asarray(names, dtype=str), return_inverse=True)
         known = {name: k for k, name in enumerate(self.type_names)}
-        unknown = [str(name) for name in unique if str(name) not in known]
-        if unknown:
-            raise FrameError(
-                f"expected the particle types {', '.join(self.type_names)} of the "
-                f"first frame, found {', '.join(unknown)}",
-                frame=frame,
-            )
-        table = np.array([known[str(name)] for name in unique], dtype=np.int32)
-        return np.asarray(table[inverse.ravel()], dtype=np.int32)
+        try:
+            return np.array([known[name] for name in names], dtype=np.int32)
+        except KeyError:
+            unknown = sorted(set(names) - set(known))
+        raise FrameError(
+            f"expected the particle types {', '.join(self.type_names)} of the first "
+            f"frame, found {', '.join(unknown)}",
+            frame=frame,
+        )
 
 
 @contextmanager

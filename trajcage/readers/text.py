@@ -1,42 +1,103 @@
 """Coordinates written as decimal numbers: columns and their resolution."""
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Mapping, Sequence
 
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["decimal_spacing", "to_floats", "to_integers", "to_names"]
+__all__ = ["Table", "decimal_spacing", "to_floats"]
 
 
-def to_floats(words: NDArray[np.bytes_]) -> NDArray[np.float64]:
-    """Parse an array of words as float64; raises ValueError naming the word."""
+class Table:
+    """Rows of words with named columns.
+
+    Parameters
+    ----------
+    lines : sequence of bytes
+        One line a particle.
+    columns : mapping of str to int
+        Position of each named column.
+    width : int
+        Words that every line must have at least.
+
+    Raises
+    ------
+    ValueError
+        If a line has fewer words.
+    """
+
+    def __init__(
+        self, lines: Sequence[bytes], columns: Mapping[str, int], width: int
+    ) -> None:
+        self.columns = columns
+        self.rows = [line.split() for line in lines]
+        for i, row in enumerate(self.rows):
+            if len(row) < width:
+                raise ValueError(
+                    f"expected {width} columns, found {len(row)} on line {i + 1} of "
+                    "the particles (truncated?)"
+                )
+
+    def __len__(self) -> int:
+        return len(self.rows)
+
+    def __contains__(self, name: str) -> bool:
+        return name in self.columns
+
+    def words(self, name: str) -> list[bytes]:
+        """Return one column as it is printed."""
+        if name not in self.columns:
+            raise ValueError(
+                f"expected a column {name} as in the first frame, found "
+                f"{' '.join(self.columns)}"
+            )
+        at = self.columns[name]
+        return [row[at] for row in self.rows]
+
+    def names(self, name: str) -> list[str]:
+        """Return one column as text, whatever bytes it holds."""
+        return [word.decode(errors="replace") for word in self.words(name)]
+
+    def floats(self, *names: str) -> NDArray[np.float64]:
+        """Return columns side by side, (n, n_names) float64."""
+        return np.array([to_floats(self.words(name)) for name in names]).T
+
+    def integers(self, *names: str) -> NDArray[np.int64]:
+        """Return columns side by side, (n, n_names) int64."""
+        columns = []
+        for name in names:
+            words = self.words(name)
+            try:
+                columns.append(np.array([int(word) for word in words], dtype=np.int64))
+            except (ValueError, OverflowError):
+                raise ValueError(
+                    f"expected an integer, found {_culprit(words, int)}"
+                ) from None
+        return np.array(columns).T
+
+    def spacing(self, *names: str) -> float:
+        """Return the spacing of printed coordinates, see `decimal_spacing`."""
+        return decimal_spacing(
+            word for name in names for word in self.words(name)[:100_000]
+        )
+
+
+def to_floats(words: Sequence[bytes]) -> NDArray[np.float64]:
+    """Parse words as float64; raises ValueError quoting the one that is none."""
     try:
-        return words.astype(np.float64)
+        return np.array([float(word) for word in words], dtype=np.float64)
     except ValueError:
         raise ValueError(f"expected a number, found {_culprit(words, float)}") from None
 
 
-def to_integers(words: NDArray[np.bytes_]) -> NDArray[np.int64]:
-    """Parse an array of words as int64; raises ValueError naming the word."""
-    try:
-        return words.astype(np.int64)
-    except ValueError:
-        raise ValueError(f"expected an integer, found {_culprit(words, int)}") from None
-
-
-def to_names(words: NDArray[np.bytes_]) -> list[str]:
-    """Decode an array of words, whatever bytes they hold."""
-    return [word.decode(errors="replace") for word in words.tolist()]
-
-
-def _culprit(words: NDArray[np.bytes_], kind: type) -> str:
-    for word in words.ravel():
+def _culprit(words: Sequence[bytes], kind: type) -> str:
+    for word in words:
         text = word.decode(errors="replace")
         try:
             kind(text)
         except ValueError:
             return repr(text)
-    return "something else"
+    return "a number out of range"
 
 
 def decimal_spacing(words: Iterable[bytes]) -> float:

@@ -56,9 +56,6 @@ class Trajectory:
     ) -> None:
         self.close()
 
-    def __len__(self) -> int:
-        return self.n_frames
-
     def close(self) -> None:
         """Close the files; frames read before stay valid."""
         self._source.close()

@@ -18,7 +18,6 @@ from numpy.typing import NDArray
 
 from trajcage.errors import FrameError, InputError
 from trajcage.model import Box
-from trajcage.readers.h5md import PlainH5MDReader
 from trajcage.readers.source import (
     Particles,
     RawFrame,
@@ -32,9 +31,8 @@ __all__ = ["UniverseSource", "read_topology"]
 
 # Formats that store a step or a time of their own with every frame. The rest
 # get a counter from MDAnalysis that is neither.
-_STEPPED = {"XTC", "TRR", "H5MD", "TNG", "TRC"}
+_STEPPED = {"XTC", "TRR", "TNG", "TRC"}
 _TIMED = {*_STEPPED, "NCDF"}
-_H5MD_SUFFIXES = {".h5md", ".h5"}
 
 
 class UniverseSource(Source):
@@ -80,20 +78,11 @@ class UniverseSource(Source):
         self._note_lost_bytes()
 
     def _open(self, topology: Path | Particles, path: Path) -> Particles:
-        if path.suffix.lower() in _H5MD_SUFFIXES:
-            self._reader = PlainH5MDReader(str(path), convert_units=False)
-            self.format = "H5MD"
-            if topology == path:
-                found: Particles = self._reader.particles()
-            elif isinstance(topology, Particles):
-                found = topology
-            else:
-                found = read_topology(topology)
-        elif isinstance(topology, Particles):
+        if isinstance(topology, Particles):
             self._reader = open_reader(
                 str(path), n_atoms=len(topology.types), convert_units=False
             )
-            found = topology
+            found: Particles = topology
         else:
             files = [str(topology)] if topology == path else [str(topology), str(path)]
             universe = MDAnalysis.Universe(*files, convert_units=False, to_guess=())
@@ -127,22 +116,13 @@ class UniverseSource(Source):
             ) from error
 
     def _extract(self, ts: Any, index: int) -> RawFrame:
-        if isinstance(self._reader, PlainH5MDReader):
-            stored = self._reader.positions(index)
-            vectors = self._reader.edges(index)
-            periodic = self._reader.boundary()
-        else:
-            stored, vectors, periodic = ts.positions, _vectors(ts.dimensions), None
-        self._dtype: type = stored.dtype.type
         step, time = self._clock(ts, index)
-        radii, ids = self._particles.radii, self._particles.ids
-        n = len(stored)
+        radii = self._particles.radii
         return RawFrame(
-            positions=np.array(stored, dtype=np.float64),
-            ids=np.arange(n, dtype=np.int64) if ids is None else ids.copy(),
+            positions=np.array(ts.positions, dtype=np.float64),
+            ids=self._particles.own_ids(),
             types=self._particles.types.copy(),
-            vectors=vectors,
-            periodic=periodic,
+            vectors=_vectors(ts.dimensions),
             step=step,
             time=time,
             radii=None if radii is None else radii.copy(),
@@ -150,7 +130,7 @@ class UniverseSource(Source):
 
     def spacing(self, raw: RawFrame) -> float:
         """Return the coarser of the float spacing and the format's own."""
-        return max(self._unit, float_spacing(raw.positions, self._dtype))
+        return max(self._unit, float_spacing(raw.positions))
 
     def close(self) -> None:
         """Close the reader."""
@@ -241,8 +221,9 @@ def _stored_spacing(path: Path, name: str) -> float:
     """Spacing that the format itself imposes, 0 if only floats do."""
     if name == "XTC":
         with XTCFile(str(path)) as file:
-            precision = float(file.read().prec)
-        return 1.0 / precision if precision > 0.0 else 0.0
+            frame = file.read()
+        # Nine particles or fewer are stored as floats and leave prec unset.
+        return 1.0 / float(frame.prec) if len(frame.x) > 9 else 0.0
     if name in {"GRO", "PDB", "ENT", "PQR"}:
         with path.open("rb") as file:
             return decimal_spacing(_coordinate_words(file, name))

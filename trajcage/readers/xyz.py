@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 
 from trajcage.errors import FrameError, InputError
 from trajcage.readers.source import Particles, RawFrame, Source
-from trajcage.readers.text import decimal_spacing, to_floats, to_integers, to_names
+from trajcage.readers.text import Table, to_floats
 
 __all__ = ["XyzSource"]
 
@@ -48,38 +48,37 @@ class XyzSource(Source):
         self.n_frames = len(self._offsets) - 1
         self._file = path.open("rb")
         try:
-            n, keys, columns, words = self._parse(0)
+            keys, table = self._parse(0)
         except FrameError:
             self.close()
             raise
-        if companion is not None and len(companion.types) != n:
+        if companion is not None and len(companion.types) != len(table):
             self.close()
             raise InputError(
-                f"the topology has {len(companion.types)} particles, {path} has {n}"
+                f"the topology has {len(companion.types)} particles, {path} has "
+                f"{len(table)}"
             )
         if companion is not None:
             self.type_names = companion.type_names
             self.radii_source = companion.radii_source
-        elif "species" in columns:
-            names = to_names(words[:, columns["species"].start])
-            self.type_names = tuple(sorted(set(names)))
+        elif "species" in table:
+            self.type_names = tuple(sorted(set(table.names("species"))))
         else:
             self.type_names = ("A",)
         for name in _RADII:
-            if name in columns:
+            if name in table:
                 self.radii_source = f"the {name} column of the XYZ file"
-        self.has_ids = "id" in columns
-        self.planar = columns["pos"].stop - columns["pos"].start == 2 or None
+        self.has_ids = "id" in table
+        self.planar = None if "z" in table else True
         if "lattice" in keys:
             self.format = "extended XYZ"
-        picked = words[:200_000, columns["pos"]]
-        self._unit = decimal_spacing(picked.ravel().tolist())
+        self._unit = table.spacing(*_axes(table))
 
     def read(self, index: int) -> RawFrame:
         """Read one frame."""
-        n, keys, columns, words = self._parse(index)
+        keys, table = self._parse(index)
         try:
-            return self._assemble(n, keys, columns, words, index)
+            return self._assemble(keys, table, index)
         except ValueError as error:
             if isinstance(error, FrameError):
                 raise
@@ -95,39 +94,30 @@ class XyzSource(Source):
         """Close the file."""
         self._file.close()
 
-    def _assemble(
-        self,
-        n: int,
-        keys: dict[str, str],
-        columns: dict[str, slice],
-        words: NDArray[np.bytes_],
-        index: int,
-    ) -> RawFrame:
-        order = np.arange(n)
-        ids = np.arange(n, dtype=np.int64)
+    def _assemble(self, keys: dict[str, str], table: Table, index: int) -> RawFrame:
+        n, companion = len(table), self._companion
+        ids, order = np.arange(n, dtype=np.int64), np.arange(n)
         if self.has_ids:
-            ids = to_integers(words[:, columns["id"].start])
+            ids = table.integers("id")[:, 0]
             order = np.argsort(ids, kind="stable")
-        words, ids = words[order], ids[order]
+            ids = ids[order]
+        elif companion is not None:
+            ids = companion.own_ids()
+        rows = order if companion is None else companion.rows(ids)
         positions = np.zeros((n, 3))
-        coordinates = to_floats(words[:, columns["pos"]])
+        coordinates = table.floats(*_axes(table))[order]
         positions[:, : coordinates.shape[1]] = coordinates
         radii = None
-        if self._companion is not None:
-            if n != len(self._companion.types):
-                raise ValueError(
-                    f"expected {len(self._companion.types)} particles as in the "
-                    f"topology, found {n}"
-                )
-            types, radii = self._companion.types.copy(), self._companion.radii
-        elif "species" in columns:
-            names = to_names(words[:, columns["species"].start])
-            types = self.index_types(names, index)
+        if companion is not None:
+            types = companion.types[rows]
+            radii = None if companion.radii is None else companion.radii[rows]
+        elif "species" in table:
+            types = self.index_types(table.names("species"), index)[order]
         else:
             types = np.zeros(n, dtype=np.int32)
         for name, factor in _RADII.items():
-            if name in columns:
-                radii = factor * to_floats(words[:, columns[name].start])
+            if name in table:
+                radii = factor * table.floats(name)[order, 0]
         return RawFrame(
             positions=positions,
             ids=ids,
@@ -137,43 +127,35 @@ class XyzSource(Source):
             periodic=_periodic(keys),
             step=_integer(keys, "step", "timestep"),
             time=_float(keys, "time"),
-            radii=None if radii is None else radii.copy(),
+            radii=radii,
         )
 
-    def _parse(
-        self, index: int
-    ) -> tuple[int, dict[str, str], dict[str, slice], NDArray[np.bytes_]]:
-        """Particle number, comment keys, columns and words of one frame."""
+    def _parse(self, index: int) -> tuple[dict[str, str], Table]:
+        """Comment keys and particle lines of one frame."""
         start, stop = self._offsets[index], self._offsets[index + 1]
         self._file.seek(start)
         lines = self._file.read(stop - start).splitlines()
         try:
-            return _parse(lines)
+            n = _count(lines[0])
+            _check_count(n, len(lines) - 2)
+            keys = _keys(lines[1].decode(errors="replace"))
+            columns, width = _columns(keys.get("properties"))
+            return keys, Table(lines[2 : 2 + n], columns, width)
         except ValueError as error:
             raise FrameError(
                 f"cannot read {self.files[0]}: {error}", frame=index
             ) from None
 
 
-def _parse(
-    lines: list[bytes],
-) -> tuple[int, dict[str, str], dict[str, slice], NDArray[np.bytes_]]:
-    n = _count(lines[0])
-    if n == 0:
+def _check_count(expected: int, found: int) -> None:
+    if expected == 0:
         raise ValueError("expected particles, found none")
-    rows = [line.split() for line in lines[2 : 2 + n]]
-    if len(rows) != n:
-        raise ValueError(f"expected {n} particles, found {len(rows)} (truncated?)")
-    keys = _keys(lines[1].decode(errors="replace"))
-    columns = _columns(keys.get("properties"))
-    width = max(column.stop for column in columns.values())
-    for i, row in enumerate(rows):
-        if len(row) < width:
-            raise ValueError(
-                f"expected {width} columns, found {len(row)} on the line of particle "
-                f"{i} (truncated?)"
-            )
-    return n, keys, columns, np.array([row[:width] for row in rows])
+    if found < expected:
+        raise ValueError(f"expected {expected} particles, found {found} (truncated?)")
+
+
+def _axes(table: Table) -> tuple[str, ...]:
+    return ("x", "y", "z") if "z" in table else ("x", "y")
 
 
 def _find_frames(path: Path) -> list[int]:
@@ -212,32 +194,35 @@ def _keys(comment: str) -> dict[str, str]:
     return {key.lower(): value.strip('"') for key, value in _PAIR.findall(comment)}
 
 
-def _columns(properties: str | None) -> dict[str, slice]:
-    """Columns by lower-case name from name:type:count triples."""
+def _columns(properties: str | None) -> tuple[dict[str, int], int]:
+    """Columns by lower-case name, coordinates as x y z, and the width of a line."""
     if properties is None:
-        return {"species": slice(0, 1), "pos": slice(1, 4)}
-    columns: dict[str, slice] = {}
+        return {"species": 0, "x": 1, "y": 2, "z": 3}, 4
+    columns: dict[str, int] = {}
     fields = properties.split(":")
-    at = 0
+    width = n_coordinates = 0
     for name, count in zip(fields[::3], fields[2::3], strict=False):
-        columns[name.lower()] = slice(at, at + int(count))
-        at += int(count)
-    if len(fields) % 3 or "pos" not in columns:
+        if name.lower() == "pos":
+            n_coordinates = int(count)
+            columns |= {axis: width + k for k, axis in enumerate("xyz"[: int(count)])}
+        else:
+            columns[name.lower()] = width
+        width += int(count)
+    if len(fields) % 3 or n_coordinates not in {2, 3}:
         raise ValueError(
-            f"expected Properties with pos:R:3 in the comment line, found {properties}"
+            "expected Properties with pos:R:3 or pos:R:2 in the comment line, found "
+            f"{properties}"
         )
-    if columns["pos"].stop - columns["pos"].start not in {2, 3}:
-        raise ValueError(f"expected two or three coordinates, found {properties}")
-    return columns
+    return columns, width
 
 
 def _numbers(keys: dict[str, str], key: str, count: int) -> NDArray[np.float64] | None:
     if key not in keys:
         return None
-    numbers = np.array(keys[key].replace(",", " ").split())
+    numbers = keys[key].encode().replace(b",", b" ").split()
     if len(numbers) != count:
         raise ValueError(f"expected {count} numbers in {key}, found {keys[key]!r}")
-    values = to_floats(numbers.astype(bytes))
+    values = to_floats(numbers)
     return values.reshape(3, 3) if count == 9 else values
 
 
