@@ -1,7 +1,6 @@
 """Lattice cages and the compiled kernel against each other and against grids."""
 
 import math
-from importlib.util import find_spec
 
 import numpy as np
 import pytest
@@ -12,12 +11,6 @@ from trajcage.model import CageStatus
 
 if not hasattr(trajcage.kernel, "measure_cages"):
     pytest.skip("the kernel is not there yet", allow_module_level=True)
-
-# without its plane half the kernel does not return from a plane configuration
-needs_plane = pytest.mark.skipif(
-    find_spec("trajcage.kernel.flood2d") is None,
-    reason="the kernel does not measure in the plane yet",
-)
 
 PAST_FIRST_SHELL = ["sc", "bcc", "fcc", "hcp"]
 
@@ -65,13 +58,13 @@ def test_cages_of_several_shells_against_grids(name, phi, volume):
 @pytest.mark.parametrize(
     ("name", "phi"),
     [
-        pytest.param("square", 0.22, marks=needs_plane),
-        pytest.param("square", 0.39, marks=needs_plane),
-        pytest.param("square", 0.7, marks=needs_plane),
-        pytest.param("triangular", 0.3, marks=needs_plane),
-        pytest.param("triangular", 0.9, marks=needs_plane),
-        pytest.param("honeycomb", 0.2, marks=needs_plane),
-        pytest.param("honeycomb", 0.5, marks=needs_plane),
+        ("square", 0.22),
+        ("square", 0.39),
+        ("square", 0.7),
+        ("triangular", 0.3),
+        ("triangular", 0.9),
+        ("honeycomb", 0.2),
+        ("honeycomb", 0.5),
         ("sc", 0.2),
         ("sc", 0.3),
         ("sc", 0.5),
@@ -101,13 +94,7 @@ def test_kernel_measures_the_reference(name, phi):
     assert cage.weakest_window[0] == pytest.approx(found.weakest_window, rel=1e-7)
 
 
-@pytest.mark.parametrize(
-    "name",
-    [
-        pytest.param(name, marks=[needs_plane] if entry.dimensions == 2 else [])
-        for name, entry in LATTICES.items()
-    ],
-)
+@pytest.mark.parametrize("name", LATTICES)
 def test_kernel_finds_the_open_cages(name):
     escape = thresholds(name).escape.value
     assert measure(name, escape * 1.001).status[0] == CageStatus.CLOSED
