@@ -1,7 +1,10 @@
 """GSD input: every number below is worked out by hand from what was written."""
 
+import json
 import pickle
+from dataclasses import asdict
 
+import freud
 import gsd.hoomd
 import numpy as np
 import pytest
@@ -282,3 +285,87 @@ def test_damaged_bytes_end_in_errors_of_our_own(tmp_path):
         except InputError:
             outcomes.add("refused")
     assert outcomes == {"fine", "refused"}
+
+
+def test_tilted_box_against_freud(tmp_path):
+    # freud keeps HOOMD's box convention; its matrix has the edges as columns.
+    box = (10, 12, 14, 0.3, -0.2, 0.1)
+    path = write(tmp_path / "a.gsd", [make_frame(box=box)])
+    with open_gsd(path, diameter=1.0) as trajectory:
+        found = trajectory.frame(0).box
+    reference = freud.box.Box(*box)
+    np.testing.assert_allclose(found.vectors, reference.to_matrix().T, rtol=1e-6)
+    assert found.volume == pytest.approx(reference.volume, rel=1e-6)
+
+
+def test_description_is_plain_data(tmp_path):
+    frames = [
+        make_frame(
+            step=s, types=["A", "B"], typeid=[0, 0, 1, 0], diameter=[1, 1, 1.5, 1]
+        )
+        for s in (0, 50)
+    ]
+    path = write(tmp_path / "a.gsd", frames)
+    with open_gsd(path, dt=0.5, periodic="xy") as trajectory:
+        description = json.loads(json.dumps(asdict(trajectory.describe())))
+    assert description == {
+        "files": [str(path)],
+        "format": "GSD",
+        "n_particles": 4,
+        "n_frames": 2,
+        "dimensions": 3,
+        "dimensions_source": "3 dimensions, since z differs between particles.",
+        "box_vectors": [[10, 0, 0], [0, 12, 0], [0, 0, 14]],
+        "box_lengths": [10, 12, 14],
+        "box_origin": [-5, -6, -7],
+        "box_source": "Box from the GSD file.",
+        "periodic": [True, True, False],
+        "periodic_source": "Boundaries given by the user.",
+        "radius_min": 0.5,
+        "radius_max": 0.75,
+        "radius_mean": 0.5625,
+        "radii_source": "Radii from the diameters in the GSD file.",
+        "species": {"A": 3, "B": 1},
+        "first_step": 0,
+        "first_time": 0.0,
+        "last_step": 50,
+        "last_time": 25.0,
+        "dt": 0.5,
+        "time_unit": "time",
+        "time_source": "Time is the step in the file times the given dt.",
+        "resolution": 2.0**-21,
+        "notes": [],
+    }
+
+
+def test_types_are_matched_by_name_in_every_frame(tmp_path):
+    frames = [
+        make_frame(types=["A", "B"], typeid=[0, 1, 1, 0]),
+        make_frame(step=1, types=["B", "A"], typeid=[1, 0, 0, 1]),
+        make_frame(step=2, types=["A", "C"], typeid=[0, 1, 1, 0]),
+    ]
+    path = write(tmp_path / "a.gsd", frames)
+    with open_gsd(path, diameter="A=1,B=2") as trajectory:
+        assert trajectory.frame(1).radii.tolist() == [0.5, 1.0, 1.0, 0.5]
+        with pytest.raises(FrameError, match=r"frame 2.*types A, B.*found C"):
+            trajectory.frame(2)
+
+
+def test_file_without_frames(tmp_path):
+    with pytest.raises(InputError, match="has no frames"):
+        open_gsd(write(tmp_path / "a.gsd", []))
+
+
+def test_topology_of_another_size(tmp_path):
+    top = write(tmp_path / "top.gsd", [make_frame(position=POSITIONS[:3])])
+    run = write(tmp_path / "run.gsd", [make_frame()])
+    with pytest.raises(InputError, match=r"topology has 3 particles, .*run\.gsd has 4"):
+        open_trajectory(InputOptions(top, run, diameter=1.0))
+
+
+def test_types_of_the_topology_where_the_run_has_none(tmp_path):
+    top = tmp_path / "top.xyz"
+    top.write_text("4\n\n" + "".join(f"{name} 0 0 0\n" for name in "BAAB"))
+    run = write(tmp_path / "run.gsd", [make_frame()])
+    with open_trajectory(InputOptions(top, run, diameter="A=1,B=2")) as trajectory:
+        assert trajectory.frame(0).radii.tolist() == [1.0, 0.5, 0.5, 1.0]

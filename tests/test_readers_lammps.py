@@ -1,5 +1,6 @@
 """LAMMPS dumps and data files: numbers worked out from the LAMMPS manual's formulas."""
 
+import MDAnalysis
 import numpy as np
 import pytest
 
@@ -422,3 +423,49 @@ def test_data_beside_dump(tmp_path):
     assert frame.radii.tolist() == [0.5, 0.55, 0.7]
     assert frame.species.tolist() == [0, 0, 1]
     assert frame.positions.tolist() == [[3, 3, 3], [1, 1, 1], [2, 2, 2]]
+
+
+@pytest.mark.filterwarnings("ignore::UserWarning:MDAnalysis")
+def test_tilted_box_against_mdanalysis(tmp_path):
+    # Same shape up to its float32; its origin and flags are what we read ourselves.
+    bounds = ["-2 13 -3", "2 11 2", "3 9 1"]
+    path = write(
+        tmp_path / "a.lammpsdump",
+        dump_frame(["1 1 1 2 3"], head="xy xz yz pp pp pp", bounds=bounds),
+    )
+    universe = MDAnalysis.Universe(
+        str(path), topology_format="LAMMPSDUMP", to_guess=(), convert_units=False
+    )
+    with open_dump(path) as trajectory:
+        box = trajectory.frame(0).box
+    expected = universe.trajectory.ts.triclinic_dimensions
+    np.testing.assert_allclose(box.vectors, expected, rtol=1e-5, atol=2e-6)
+
+
+def test_dump_without_ids_warns_of_the_order(tmp_path):
+    text = dump_frame(["1 1 1 2 3"]), dump_frame(["1 1 1 2 3"], step=1)
+    path = write(tmp_path / "a.dump", *(t.replace("id type", "mol type") for t in text))
+    with open_dump(path) as trajectory:
+        assert trajectory.frame(0).ids.tolist() == [0]
+        assert any("no id column" in note for note in trajectory.describe().notes)
+
+
+def test_column_that_vanishes(tmp_path):
+    path = write(
+        tmp_path / "a.dump",
+        dump_frame(["1 1 1 2 3 0.5"], "id type x y z radius"),
+        dump_frame(["1 1 1 2 3"], step=10),
+        dump_frame(["1 1 0.1 0.2 0.3"], "id type xs ys zs", step=20),
+    )
+    with open_dump(path, diameter=None) as trajectory:
+        with pytest.raises(FrameError, match=r"frame 1 \(step 10\): expected radii"):
+            trajectory.frame(1)
+        with pytest.raises(FrameError, match=r"frame 2 \(step 20\): .*a column x"):
+            trajectory.frame(2)
+
+
+def test_truncated_data_file(tmp_path):
+    path = tmp_path / "a.data"
+    path.write_text(DATA.format(style="atomic", rows="1 1 1 2 3\n2 1 1 2 3", tilt=""))
+    with pytest.raises(InputError, match="expected 3 atoms, found 2"):
+        open_trajectory(InputOptions(path, diameter=1.0))

@@ -1,9 +1,11 @@
 """Formats read through MDAnalysis, against what was written by hand or by it."""
 
+import json
 import os
 import shutil
 import subprocess
 import sys
+from dataclasses import asdict
 
 import gsd.hoomd
 import MDAnalysis
@@ -350,3 +352,41 @@ def test_foreign_bytes_under_the_suffix(tmp_path, suffix):
     path.write_bytes(b"these bytes are no trajectory\n" * 40)
     with pytest.raises(InputError, match=rf"a\.{suffix}"):
         open_files(path)
+
+
+@pytest.mark.parametrize("suffix", ["xtc", "trr", "dcd"])
+def test_description_is_plain_data(tmp_path, suffix):
+    run = write_frames(tmp_path / f"run.{suffix}")
+    with open_files(run) as trajectory:
+        description = json.loads(json.dumps(asdict(trajectory.describe())))
+    assert description["n_frames"] == 3
+    assert description["last_time"] == pytest.approx(1.0)
+    assert description["last_step"] == 200
+    assert description["box_lengths"] == pytest.approx([5, 5, 5])
+
+
+def test_gro_beside_a_dump(tmp_path):
+    dump = tmp_path / "run.dump"
+    dump.write_text(
+        "ITEM: TIMESTEP\n7\nITEM: NUMBER OF ATOMS\n4\n"
+        "ITEM: BOX BOUNDS pp pp ff\n0 5\n0 5\n0 5\nITEM: ATOMS id x y z\n"
+        "4 4 1 1\n2 2 1 1\n3 3 1 2\n1 1 1 1\n"
+    )
+    gro = write_gro(tmp_path / "a.gro")
+    with open_files(gro, dump, diameter="A=1,B=2") as trajectory:
+        frame = trajectory.frame(0)
+    assert frame.radii.tolist() == [0.5, 1.0, 1.0, 0.5]
+    assert frame.positions[:, 0].tolist() == [1, 2, 3, 4]
+    assert frame.step == 7
+    (tmp_path / "broken.psf").write_text("PSF?\n")
+    with pytest.raises(InputError, match=r"cannot read the topology .*broken\.psf"):
+        open_files(tmp_path / "broken.psf", dump)
+
+
+def test_data_file_is_no_trajectory(tmp_path):
+    data = tmp_path / "a.data"
+    data.write_text("title\n")
+    with pytest.raises(InputError, match="holds no trajectory"):
+        open_files(write_gro(tmp_path / "a.gro"), data)
+    with pytest.raises(InputError, match="section 'Atoms'"):
+        open_files(data)

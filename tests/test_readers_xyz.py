@@ -141,3 +141,35 @@ def test_types_and_radii_of_a_topology(tmp_path):
     run.write_text(xyz_frame())
     with pytest.raises(InputError, match="topology has 2 particles"):
         open_trajectory(options)
+
+
+def test_two_coordinates(tmp_path):
+    comment = 'Lattice="10 0 0 0 12 0 0 0 1" Properties=pos:R:2:diameter:R:1'
+    text = xyz_frame(["1 2 1.5", "4 5 1.0"], comment)
+    with open_xyz(tmp_path / "a.xyz", text, diameter=None) as trajectory:
+        frame = trajectory.frame(0)
+        assert trajectory.type_names == ("A",)
+    assert frame.positions.tolist() == [[1, 2], [4, 5]]
+    assert frame.radii.tolist() == [0.75, 0.5]
+    assert frame.box.volume == pytest.approx(120.0)
+
+
+def test_one_particle_spans_no_region(tmp_path):
+    with pytest.raises(InputError, match="at least two particles"):
+        open_xyz(tmp_path / "a.xyz", xyz_frame(ROWS[:1]), periodic="none")
+
+
+def test_box_that_leaves_the_plane(tmp_path):
+    text = xyz_frame(["A 1 2 0", "A 4 5 0"])
+    box = [[10, 0, 1], [0, 10, 0], [0, 0, 10]]
+    with pytest.raises(InputError, match="leave the xy plane"):
+        open_xyz(tmp_path / "a.xyz", text, box=box, dimensions=2)
+
+
+def test_frame_without_box_after_one_with(tmp_path):
+    text = xyz_frame(comment='Lattice="9 0 0 0 9 0 0 0 9"') + xyz_frame()
+    with (
+        open_xyz(tmp_path / "a.xyz", text) as trajectory,
+        pytest.raises(FrameError, match=r"frame 1: .*no box, unlike the first"),
+    ):
+        trajectory.frame(1)

@@ -201,6 +201,8 @@ def _dimensions(
     if given is not None and given.shape in {(2,), (2, 2)}:
         return 2, "2 dimensions, as the given box has two edges."
     z = first.positions[:, 2]
-    if len(z) >= _MIN_PLANAR_PARTICLES and np.all(z == z[0]):
-        return 2, f"2 dimensions, since all particles have z = {z[0]:g}."
-    return 3, "3 dimensions, since z differs between particles."
+    if not np.all(z == z[0]):
+        return 3, "3 dimensions, since z differs between particles."
+    if len(z) < _MIN_PLANAR_PARTICLES:
+        return 3, "3 dimensions: too few particles to tell a plane from a chance."
+    return 2, f"2 dimensions, since all particles have z = {z[0]:g}."

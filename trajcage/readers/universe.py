@@ -160,8 +160,6 @@ class UniverseSource(Source):
     def _clock(self, ts: Any, index: int) -> tuple[int | None, float | None]:
         if self.format == "DCD":
             header = self._reader._file.header  # noqa: SLF001 - not exposed otherwise
-            if int(header["nsavc"]) <= 0:
-                return None, None
             step = int(header["istart"]) + index * int(header["nsavc"])
             # MDAnalysis takes every DCD's time for AKMA units and converts it.
             return step, step * float(header["delta"])
