@@ -12,13 +12,28 @@ Nothing here is used by the package itself.
 
 import math
 from collections.abc import Sequence
-from typing import NamedTuple
 
-import numba
 import numpy as np
+from monte_carlo_kernel import (
+    link_cells,
+    neighbor_cells,
+    resolve_overlaps,
+    smallest_ratio,
+    sweep,
+    wrap,
+)
 from numpy.typing import ArrayLike, NDArray
+from packings import (
+    Packing,
+    bcc,
+    binary,
+    fcc,
+    hcp,
+    polydisperse,
+    solid_volume,
+    triangular,
+)
 from scipy.spatial import cKDTree
-from scipy.special import ndtri
 
 __all__ = [
     "MonteCarlo",
@@ -35,15 +50,6 @@ __all__ = [
 
 Floats = NDArray[np.float64]
 Integers = NDArray[np.int64]
-compiled = numba.njit(cache=True)
-
-
-class Packing(NamedTuple):
-    """A configuration: positions (n, d), box lengths (d,), radii (n,)."""
-
-    positions: Floats
-    lengths: Floats
-    radii: Floats
 
 
 class MonteCarlo:
@@ -82,7 +88,7 @@ class MonteCarlo:
         self._rng = np.random.default_rng(seed)
         self._images = np.zeros(points.shape, dtype=np.int64)
         self._positions = points
-        _wrap(self._positions, self._images, self.lengths)
+        wrap(self._positions, self._images, self.lengths)
         self._images[:] = 0
         self._mobile: Integers = np.arange(self.n_particles)
         self._shape: Integers = np.zeros(self.dimensions, dtype=np.int64)
@@ -115,7 +121,7 @@ class MonteCarlo:
     @property
     def packing_fraction(self) -> float:
         """Volume (area) of the particles over that of the box."""
-        return _solid_volume(self.radii, self.dimensions) / math.prod(self.lengths)
+        return solid_volume(self.radii, self.dimensions) / math.prod(self.lengths)
 
     @property
     def acceptance(self) -> float:
@@ -153,7 +159,7 @@ class MonteCarlo:
         swap_fraction : float
             Share of the trials that exchange two radii instead of moving.
         """
-        self._tally += _sweep(
+        self._tally += sweep(
             self._rng, sweeps, self.step, swap_fraction, self._mobile,
             self._positions, self._images, self.radii, self.lengths,
             self._heads, self._next, self._shape, self._neighbors,
@@ -183,7 +189,7 @@ class MonteCarlo:
         # pairs further apart than a cell is wide are not looked at
         reach = float((self.lengths / self._shape).min() / (2 * self.radii.max()))
         return float(
-            _smallest_ratio(
+            smallest_ratio(
                 reach, self._positions, self.radii, self.lengths,
                 self._heads, self._next, self._shape, self._neighbors,
             )
@@ -239,7 +245,7 @@ class MonteCarlo:
     def _shrink(self, factor: float) -> bool:
         before = self.lengths, self.positions, self.images
         self._rescale(self.lengths / factor, self._positions / factor, self._images)
-        if _resolve(
+        if resolve_overlaps(
             self._rng, 50, self.step, self._mobile,
             self._positions, self._images, self.radii, self.lengths,
             self._heads, self._next, self._shape, self._neighbors,
@@ -250,7 +256,7 @@ class MonteCarlo:
 
     def _rescale(self, lengths: Floats, positions: Floats, images: Integers) -> None:
         self.lengths, self._positions, self._images = lengths, positions, images
-        _wrap(self._positions, self._images, self.lengths)
+        wrap(self._positions, self._images, self.lengths)
         self._link_cells()
 
     def _link_cells(self) -> None:
@@ -264,9 +270,9 @@ class MonteCarlo:
         shape = np.minimum(self.lengths / width, 64).astype(np.int64)
         if not np.array_equal(shape, self._shape):
             self._shape = shape
-            self._neighbors = _neighbor_cells(shape)
+            self._neighbors = neighbor_cells(shape)
             self._heads = np.empty(len(self._neighbors), dtype=np.int64)
-        _link(self._positions, self.lengths, self._shape, self._heads, self._next)
+        link_cells(self._positions, self.lengths, self._shape, self._heads, self._next)
 
 
 def compressibility_factor(
@@ -317,53 +323,6 @@ def compressibility_factor(
     return float(values.mean()), float(values.std(ddof=1) / math.sqrt(blocks))
 
 
-def fcc(n_cells: int | Sequence[int], packing_fraction: float) -> Packing:
-    """Face-centered cubic crystal of spheres of diameter 1; 4 to a cell."""
-    basis = np.array([[0, 0, 0], [0, 0.5, 0.5], [0.5, 0, 0.5], [0.5, 0.5, 0]])
-    return _crystal(n_cells, packing_fraction, [1, 1, 1], basis)
-
-
-def bcc(n_cells: int | Sequence[int], packing_fraction: float) -> Packing:
-    """Body-centered cubic crystal of spheres of diameter 1; 2 to a cell."""
-    return _crystal(
-        n_cells, packing_fraction, [1, 1, 1], np.array([[0] * 3, [0.5] * 3])
-    )
-
-
-def hcp(n_cells: int | Sequence[int], packing_fraction: float) -> Packing:
-    """Hexagonal close-packed crystal of spheres of diameter 1; 4 to a cell."""
-    basis = np.array([[0, 0, 0], [0.5, 0.5, 0], [0.5, 5 / 6, 0.5], [0, 1 / 3, 0.5]])
-    edges = [1, math.sqrt(3), math.sqrt(8 / 3)]
-    return _crystal(n_cells, packing_fraction, edges, basis)
-
-
-def triangular(n_cells: int | Sequence[int], packing_fraction: float) -> Packing:
-    """Triangular crystal of disks of diameter 1; 2 to a cell of edges 1 : sqrt(3)."""
-    basis = np.array([[0, 0], [0.5, 0.5]])
-    return _crystal(n_cells, packing_fraction, [1, math.sqrt(3)], basis)
-
-
-def binary(n: int, ratio: float, *, large_fraction: float = 0.5) -> Floats:
-    """Radii of a mixture: the small ones 0.5 first, the large ones 0.5 * ratio last."""
-    radii = np.full(n, 0.5)
-    radii[n - round(n * large_fraction) :] *= ratio
-    return radii
-
-
-def polydisperse(n: int, deviation: float) -> Floats:
-    """Radii of mean 0.5 at the quantiles of a normal distribution.
-
-    Parameters
-    ----------
-    n : int
-    deviation : float
-        Standard deviation over mean, met exactly.
-    """
-    scores = ndtri((np.arange(n) + 0.5) / n)
-    radii: Floats = 0.5 * (1.0 + deviation * scores / scores.std())
-    return radii
-
-
 def random_fluid(
     n: int,
     packing_fraction: float,
@@ -400,7 +359,7 @@ def random_fluid(
     edges /= math.prod(edges) ** (1 / dimensions)
     grid = np.ceil(edges * n ** (1 / dimensions) - 1e-9).astype(np.int64)
     # the start: a fluid's density, and room between the largest particles
-    volume = _solid_volume(sizes, dimensions) / min(0.42, packing_fraction)
+    volume = solid_volume(sizes, dimensions) / min(0.42, packing_fraction)
     side = volume ** (1 / dimensions)
     side *= max(1.0, 2.1 * sizes.max() / (side * edges / grid).min())
     sites = np.indices(tuple(grid)).reshape(dimensions, -1).T + 0.5
@@ -411,247 +370,3 @@ def random_fluid(
     simulation.compress_to(packing_fraction, swap_fraction=swap_fraction)
     simulation.equilibrate(sweeps, swap_fraction=swap_fraction)
     return simulation
-
-
-def _crystal(
-    n_cells: int | Sequence[int],
-    packing_fraction: float,
-    edges: Sequence[float],
-    basis: Floats,
-) -> Packing:
-    dimensions = len(edges)
-    counts = np.broadcast_to(np.asarray(n_cells, dtype=np.int64), dimensions)
-    corners = np.indices(tuple(counts)).reshape(dimensions, -1).T
-    sites = (corners[:, None, :] + basis).reshape(-1, dimensions)
-    radii = np.full(len(sites), 0.5)
-    cells = counts * np.array(edges, dtype=np.float64)
-    volume = _solid_volume(radii, dimensions) / packing_fraction
-    lengths = cells * (volume / math.prod(cells)) ** (1 / dimensions)
-    return Packing(sites / counts * lengths, lengths, radii)
-
-
-def _solid_volume(radii: Floats, dimensions: int) -> float:
-    unit_ball = math.pi if dimensions == 2 else 4 * math.pi / 3
-    return unit_ball * math.fsum(radii**dimensions)
-
-
-@compiled
-def _wrap(positions: Floats, images: Integers, lengths: Floats) -> None:
-    for i in range(positions.shape[0]):
-        for k in range(positions.shape[1]):
-            turns = math.floor(positions[i, k] / lengths[k])
-            positions[i, k] -= turns * lengths[k]
-            images[i, k] += turns
-            if positions[i, k] >= lengths[k]:  # rounding of a tiny negative number
-                positions[i, k] = 0.0
-                images[i, k] += 1
-
-
-@compiled
-def _cell(point: Floats, lengths: Floats, shape: Integers) -> int:
-    index = 0
-    for k in range(len(point)):
-        index = index * shape[k] + min(
-            int(point[k] / lengths[k] * shape[k]), shape[k] - 1
-        )
-    return index
-
-
-@compiled
-def _neighbor_cells(shape: Integers) -> Integers:
-    """List the cells around each cell and itself, every one once, padded with -1."""
-    d = len(shape)
-    n_cells = 1
-    for k in range(d):
-        n_cells *= shape[k]
-    table = np.full((n_cells, 3**d), -1, dtype=np.int64)
-    for cell in range(n_cells):
-        found = 0
-        for offset in range(3**d):
-            rest_cell, rest_offset, index, stride = cell, offset, 0, 1
-            for k in range(d - 1, -1, -1):
-                at = (rest_cell % shape[k] + rest_offset % 3 - 1) % shape[k]
-                index += at * stride
-                stride *= shape[k]
-                rest_cell //= shape[k]
-                rest_offset //= 3
-            slot = 0
-            while slot < found and table[cell, slot] != index:
-                slot += 1
-            if slot == found:
-                table[cell, found] = index
-                found += 1
-    return table
-
-
-@compiled
-def _link(
-    positions: Floats, lengths: Floats, shape: Integers,
-    heads: Integers, following: Integers,
-) -> None:  # fmt: skip
-    heads[:] = -1
-    for i in range(positions.shape[0]):
-        cell = _cell(positions[i], lengths, shape)
-        following[i] = heads[cell]
-        heads[cell] = i
-
-
-@compiled
-def _overlaps(
-    point: Floats, radius: float, first: int, second: int, cell: int,
-    positions: Floats, radii: Floats, lengths: Floats,
-    heads: Integers, following: Integers, neighbors: Integers,
-) -> bool:  # fmt: skip
-    """Tell whether a sphere meets any particle but `first` and `second`."""
-    for slot in range(neighbors.shape[1]):
-        other = neighbors[cell, slot]
-        if other < 0:
-            break
-        j = heads[other]
-        while j >= 0:
-            if j not in (first, second):
-                square = 0.0
-                for k in range(len(point)):
-                    apart = abs(point[k] - positions[j, k])
-                    apart = min(apart, lengths[k] - apart)
-                    square += apart * apart
-                contact = radius + radii[j]
-                if square < contact * contact:
-                    return True
-            j = following[j]
-    return False
-
-
-@compiled
-def _propose(
-    rng: np.random.Generator, step: float, old: Floats, lengths: Floats,
-    point: Floats, turns: Integers,
-) -> None:  # fmt: skip
-    """Fill `point` with a wrapped trial position, `turns` with its box crossings."""
-    for k in range(len(old)):
-        point[k] = old[k] + step * (2.0 * rng.random() - 1.0)
-        turns[k] = math.floor(point[k] / lengths[k])
-        point[k] -= turns[k] * lengths[k]
-        if point[k] >= lengths[k]:  # rounding of a tiny negative number
-            point[k] = 0.0
-            turns[k] += 1
-
-
-@compiled
-def _place(
-    i: int, point: Floats, turns: Integers, home: int, cell: int,
-    positions: Floats, images: Integers, heads: Integers, following: Integers,
-) -> None:  # fmt: skip
-    positions[i] = point
-    images[i] += turns
-    if cell != home:
-        if heads[home] == i:
-            heads[home] = following[i]
-        else:
-            j = heads[home]
-            while following[j] != i:
-                j = following[j]
-            following[j] = following[i]
-        following[i] = heads[cell]
-        heads[cell] = i
-
-
-@compiled
-def _sweep(
-    rng: np.random.Generator, sweeps: int, step: float, swap_fraction: float,
-    mobile: Integers, positions: Floats, images: Integers, radii: Floats,
-    lengths: Floats, heads: Integers, following: Integers, shape: Integers,
-    neighbors: Integers,
-) -> Integers:  # fmt: skip
-    """Run the chain; count translations tried and accepted, then exchanges."""
-    point = np.empty(positions.shape[1])
-    turns = np.empty(positions.shape[1], dtype=np.int64)
-    tally = np.zeros(4, dtype=np.int64)
-    for _ in range(sweeps * len(mobile)):
-        i = mobile[int(rng.random() * len(mobile))]
-        home = _cell(positions[i], lengths, shape)
-        if swap_fraction > 0.0 and rng.random() < swap_fraction:
-            j = mobile[int(rng.random() * len(mobile))]
-            tally[2] += 1
-            # the contact distance of i and j is the same before and after
-            if i != j and not (
-                _overlaps(
-                    positions[i], radii[j], i, j, home,
-                    positions, radii, lengths, heads, following, neighbors,
-                )
-                or _overlaps(
-                    positions[j], radii[i], i, j, _cell(positions[j], lengths, shape),
-                    positions, radii, lengths, heads, following, neighbors,
-                )
-            ):  # fmt: skip
-                radii[i], radii[j] = radii[j], radii[i]
-                tally[3] += 1
-            continue
-        tally[0] += 1
-        _propose(rng, step, positions[i], lengths, point, turns)
-        cell = _cell(point, lengths, shape)
-        if not _overlaps(
-            point, radii[i], i, i, cell,
-            positions, radii, lengths, heads, following, neighbors,
-        ):  # fmt: skip
-            _place(i, point, turns, home, cell, positions, images, heads, following)
-            tally[1] += 1
-    return tally
-
-
-@compiled
-def _resolve(
-    rng: np.random.Generator, tries: int, step: float,
-    mobile: Integers, positions: Floats, images: Integers, radii: Floats,
-    lengths: Floats, heads: Integers, following: Integers, shape: Integers,
-    neighbors: Integers,
-) -> bool:  # fmt: skip
-    """Move overlapping particles to free places; tell whether no overlap is left."""
-    point = np.empty(positions.shape[1])
-    turns = np.empty(positions.shape[1], dtype=np.int64)
-    for i in mobile:
-        point[:] = positions[i]
-        turns[:] = 0
-        home = _cell(point, lengths, shape)
-        cell = home
-        for _ in range(tries):
-            if not _overlaps(
-                point, radii[i], i, i, cell,
-                positions, radii, lengths, heads, following, neighbors,
-            ):  # fmt: skip
-                _place(i, point, turns, home, cell, positions, images, heads, following)
-                break
-            _propose(rng, step, positions[i], lengths, point, turns)
-            cell = _cell(point, lengths, shape)
-    for i in range(positions.shape[0]):
-        if _overlaps(
-            positions[i], radii[i], i, i, _cell(positions[i], lengths, shape),
-            positions, radii, lengths, heads, following, neighbors,
-        ):  # fmt: skip
-            return False
-    return True
-
-
-@compiled
-def _smallest_ratio(
-    smallest: float, positions: Floats, radii: Floats, lengths: Floats,
-    heads: Integers, following: Integers, shape: Integers, neighbors: Integers,
-) -> float:  # fmt: skip
-    for i in range(positions.shape[0]):
-        cell = _cell(positions[i], lengths, shape)
-        for slot in range(neighbors.shape[1]):
-            other = neighbors[cell, slot]
-            if other < 0:
-                break
-            j = heads[other]
-            while j >= 0:
-                if j < i:
-                    square = 0.0
-                    for k in range(positions.shape[1]):
-                        apart = abs(positions[i, k] - positions[j, k])
-                        apart = min(apart, lengths[k] - apart)
-                        square += apart * apart
-                    ratio = math.sqrt(square) / (radii[i] + radii[j])
-                    smallest = min(smallest, ratio)
-                j = following[j]
-    return smallest
