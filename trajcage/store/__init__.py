@@ -2,6 +2,7 @@
 
 from trajcage.store.provenance import describe_file
 from trajcage.store.result import Result, open_result
+from trajcage.store.salvage import salvage
 from trajcage.store.series import Series
 from trajcage.store.specs import ArraySpec, TableSpec
 from trajcage.store.writer import ResultWriter
@@ -14,4 +15,5 @@ __all__ = [
     "TableSpec",
     "describe_file",
     "open_result",
+    "salvage",
 ]

@@ -13,16 +13,16 @@ from typing import Any
 import h5py
 
 from trajcage.errors import ResultFileError
-from trajcage.store.commit import Commit, latest_commit
+from trajcage.store.commit import FORMAT_VERSION, Commit, latest_commit
 from trajcage.store.guard import guard
 from trajcage.store.lock import is_being_written
 from trajcage.store.superblock import Superblock, read_superblock
 
 __all__ = [
-    "check_contents",
     "open_for_reading",
     "open_for_writing",
     "open_mended",
+    "read_checked",
     "read_commit",
     "read_text",
 ]
@@ -46,6 +46,22 @@ class _Mended(io.FileIO):
             end = min(start + count, len(self._head))
             memoryview(buffer).cast("B")[: end - start] = self._head[start:end]
         return count
+
+
+class _MendedFile(h5py.File):  # type: ignore[misc]  # h5py is untyped
+    """An HDF5 file that closes the stream it is read from."""
+
+    def __init__(self, stream: _Mended) -> None:
+        self._stream = stream
+        try:
+            super().__init__(stream, "r")
+        except BaseException:
+            stream.close()
+            raise
+
+    def close(self) -> None:
+        super().close()
+        self._stream.close()
 
 
 def open_for_reading(path: Path, *, alone: bool = False) -> Any:
@@ -81,7 +97,7 @@ def open_for_reading(path: Path, *, alone: bool = False) -> Any:
 def open_mended(path: Path, superblock: Superblock) -> Any:
     """Open a file for reading as if it had this superblock."""
     with guard(path, "opening"):
-        return h5py.File(_Mended(path, superblock), "r")
+        return _MendedFile(_Mended(path, superblock))
 
 
 def open_for_writing(path: Path) -> Any:
@@ -97,7 +113,7 @@ def open_for_writing(path: Path) -> Any:
     return h5py.File(h5py.h5f.open(os.fsencode(path), flags, access))
 
 
-def check_contents(file: Any, path: Path) -> None:
+def _check_contents(file: Any, path: Path) -> None:
     """Refuse a file with anything in it that trajcage does not write.
 
     Raises
@@ -183,3 +199,24 @@ def read_commit(file: Any, path: Path) -> Commit:
         raise ResultFileError(f"{path}: the commit record has an unexpected shape")
     columns = tuple(read_text(item.attrs, "columns").split("\n"))
     return latest_commit(item[()], columns)
+
+
+def read_checked(file: Any, path: Path) -> Commit:
+    """Check the whole structure of an open file; return its commit record.
+
+    Raises
+    ------
+    ResultFileError
+        If the file is foreign, damaged, hostile or of another format version.
+    """
+    # The record is read before any other dataset is opened: what is opened
+    # later is then at least as far as the record says, also beside a writer.
+    commit = read_commit(file, path)
+    _check_contents(file, path)
+    version = int(file["trajcage/format_version"][()])
+    if version != FORMAT_VERSION:
+        raise ResultFileError(
+            f"{path} has format version {version}, this trajcage reads version "
+            f"{FORMAT_VERSION}"
+        )
+    return commit

@@ -14,7 +14,9 @@ from numpy.typing import NDArray
 
 from trajcage.errors import ResultFileError
 
-__all__ = ["COLUMNS", "Commit", "latest_commit"]
+__all__ = ["COLUMNS", "FORMAT_VERSION", "Commit", "latest_commit"]
+
+FORMAT_VERSION = 1  # of the layout below /trajcage
 
 COLUMNS = (
     "generation",

@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 import trajcage
 from trajcage.errors import UsageError
 from trajcage.model import Field
-from trajcage.store.commit import Commit
+from trajcage.store.commit import FORMAT_VERSION, Commit
 from trajcage.store.specs import (
     ArraySpec,
     TableSpec,
@@ -25,9 +25,8 @@ from trajcage.store.specs import (
     resolve_unit,
 )
 
-__all__ = ["FORMAT_VERSION", "Layout", "build", "counted_names", "position_field"]
+__all__ = ["Layout", "build", "counted_names", "position_field"]
 
-FORMAT_VERSION = 1
 _CHUNK_VALUES = 131_072  # 1 MiB of float64
 _ATTRIBUTE_LIMIT = 32_768  # bytes; longer parameters stand in the document only
 _CELL = {"frame": 256, "row": 1024}
@@ -88,7 +87,7 @@ def counted_names(
     names: list[str] = []
     for table in tables:
         names += [table.name, *(f"{table.name}/{f.name}" for f in table.ragged)]
-    return (*names, *(array.name for array in arrays))
+    return (*names, *(array.name for array in arrays if array.values is None))
 
 
 def _text(value: str) -> np.ndarray[Any, Any]:

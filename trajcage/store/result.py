@@ -9,16 +9,14 @@ from typing import Any, Self
 import numpy as np
 from numpy.typing import NDArray
 
-from trajcage.errors import ResultFileError, UsageError
+from trajcage.errors import UsageError
 from trajcage.model import Box, Field
 from trajcage.store.access import (
-    check_contents,
     open_for_reading,
-    read_commit,
+    read_checked,
     read_text,
 )
 from trajcage.store.guard import guard
-from trajcage.store.layout import FORMAT_VERSION
 from trajcage.store.series import Series
 
 __all__ = ["Result", "open_result"]
@@ -53,11 +51,7 @@ class Result:
         self._file = file
         try:
             with guard(path, "reading"):
-                # Read before any other dataset is opened: what is opened later
-                # is at least as far as this record says.
-                self._commit = read_commit(file, path)
-                check_contents(file, path)
-                self._check_version()
+                self._commit = read_checked(file, path)
                 self._particles = file["particles/all"]
                 self._observables = file["observables"]
                 box = self._particles["box"]
@@ -70,14 +64,6 @@ class Result:
         except BaseException:
             file.close()
             raise
-
-    def _check_version(self) -> None:
-        version = int(self._file["trajcage/format_version"][()])
-        if version != FORMAT_VERSION:
-            raise ResultFileError(
-                f"{self.path} has format version {version}, this trajcage reads "
-                f"version {FORMAT_VERSION}"
-            )
 
     def _read_fields(self) -> Iterator[tuple[str, Field]]:
         for group, per_particle in (

@@ -36,6 +36,12 @@ class RowWriter:
         place.select_hyperslab((start, *(0,) * len(self.shape)), values.shape)
         self.id.write(h5py.h5s.create_simple(values.shape), place, values)
 
+    def replace(self, block: NDArray[np.generic], blank: object) -> None:
+        """Replace the whole contents; rows left over from before become blank."""
+        self.write(0, block)
+        rest = (self._extent - len(block), *self.shape)
+        self.write(len(block), np.full(rest, blank, self.dtype))
+
     def write_all(self, start: int, rows: Sequence[NDArray[np.generic]]) -> None:
         """Write single rows, one after the other, from ``start`` on."""
         self.write(start, np.stack(rows))

@@ -21,7 +21,7 @@ from trajcage.store.layout import Layout, build, position_field
 from trajcage.store.lock import WriterLock
 from trajcage.store.resuming import check_resumable
 from trajcage.store.rows import ParticleWriter, RowWriter
-from trajcage.store.specs import ArraySpec, TableSpec
+from trajcage.store.specs import ArraySpec, TableSpec, fill_value
 from trajcage.store.superblock import repair_superblock
 from trajcage.store.tables import TableBuffer, to_dtype
 
@@ -480,7 +480,7 @@ class ResultWriter:
             elif total != old.frames_complete:
                 values["state_bytes"] = -1
             if text is not None:
-                self._summary.write(0, np.frombuffer(text, np.uint8))
+                self._summary.replace(np.frombuffer(text, np.uint8), ord(" "))
                 values["summary_bytes"] = len(text)
             if new_arrays or text is not None:
                 values["arrays_frames"] = total
@@ -540,7 +540,8 @@ class ResultWriter:
                 dataset[()] = array
                 self._rows[name] = 1
             else:
-                RowWriter(dataset).write(0, array)
+                blank = fill_value(array.dtype)
+                RowWriter(dataset).replace(array, blank)
                 self._rows[name] = len(array)
 
     def _field_writer(self, field: Field) -> RowWriter:
