@@ -1,0 +1,347 @@
+"""Time correlations over logarithmic lags and many time origins.
+
+Origins are kept only as long as a lag needs them: a lag l is measured from
+origins that lie about l / 2 apart, since closer ones bring next to nothing new.
+So the number of origins in memory grows with the logarithm of the longest lag,
+and does not depend on the number of frames.
+"""
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.sparse import csr_array
+from scipy.special import j0
+
+from trajcage.analysis.bonds import Bonds, all_bonds
+from trajcage.analysis.state import State, prefixed, under
+from trajcage.analysis.statistics import BlockMoments
+from trajcage.analysis.unwrapping import Motion
+from trajcage.errors import UsageError
+from trajcage.model import Field, Frame
+
+__all__ = ["CORRELATION_FIELDS", "CorrelationPlan", "Correlations"]
+
+
+def _pair(name: str, description: str, unit: str = "1") -> tuple[Field, Field]:
+    error = f"Blocking error of {name}; NaN with fewer than two origins"
+    return (
+        Field(name, description, unit, "f8", False),
+        Field(f"{name}_error", error, unit, "f8", False),
+    )
+
+
+#: Columns of the table of correlations, a row a lag.
+CORRELATION_FIELDS = (
+    Field("lag_frames", "Lag in frames", "1", "i8", False),
+    Field("lag", "Lag in time, mean over the origins", "time", "f8", False),
+    Field("n_origins", "Time origins averaged over", "1", "i8", False),
+    *_pair("msd", "Mean squared displacement", "length+2"),
+    *_pair(
+        "cage_relative_msd",
+        "Mean squared displacement relative to the mean displacement of the neighbors "
+        "at the origin; particles without neighbors left out",
+        "length+2",
+    ),
+    Field(
+        "without_neighbors",
+        "Particles without neighbors at the origin, mean over the origins; they are left "
+        "out of cage_relative_msd and cage_correlation",
+        "1",
+        "f8",
+        False,
+    ),
+    *_pair(
+        "non_gaussian",
+        "Non-Gaussian parameter d <r^4> / ((d + 2) <r^2>^2) - 1, averages over "
+        "particles and origins",
+    ),
+    *_pair(
+        "overlap", "Share of particles displaced by no more than the overlap length"
+    ),
+    *_pair(
+        "chi_4",
+        "Variance of that share over the origins, times the number of particles",
+    ),
+    *_pair(
+        "self_scattering",
+        "Self-intermediate scattering function at the wave number, direction-averaged",
+    ),
+    *_pair(
+        "neighbor_correlation",
+        "Share of the bonds at the origin (r <= A1 sigma_ij) that are not broken "
+        "(r > A2 sigma_ij) at the lag",
+    ),
+    *_pair(
+        "cage_correlation",
+        "Share of the particles with neighbors at the origin that have lost less than "
+        "the set fraction of them at the lag",
+    ),
+    Field(
+        "errors_converged",
+        "Whether the blocking errors of all columns are converged (else lower bounds)",
+        "1",
+        "i1",
+        False,
+    ),
+)
+
+# Components of the value averaged over origins.
+_R2, _R4, _RELATIVE, _Q, _Q2, _SCATTERING, _BONDS, _CAGES = range(8)
+_MEANS = {
+    "msd": _R2,
+    "cage_relative_msd": _RELATIVE,
+    "overlap": _Q,
+    "self_scattering": _SCATTERING,
+    "neighbor_correlation": _BONDS,
+    "cage_correlation": _CAGES,
+}
+
+
+@dataclass(frozen=True)
+class CorrelationPlan:
+    """Which lags, from which origins, with which lengths.
+
+    Parameters
+    ----------
+    max_lag : int
+        Longest lag in frames.
+    origin_interval : int
+        Every so many frames a time origin.
+    lags_per_octave : int
+        Lags between a lag and its double, as far as whole frames allow.
+    overlap_length : float, length
+        Reach of the overlap function.
+    wave_number : float, 1/length
+        Of the self-intermediate scattering function.
+    bonded, broken, fraction_lost : float
+        As in :class:`~trajcage.analysis.breaking.BreakingRule`.
+    """
+
+    max_lag: int
+    origin_interval: int
+    lags_per_octave: int
+    overlap_length: float
+    wave_number: float
+    bonded: float
+    broken: float
+    fraction_lost: float
+
+    def __post_init__(self) -> None:
+        for name in ("max_lag", "origin_interval", "lags_per_octave"):
+            if getattr(self, name) < 1:
+                raise UsageError(
+                    f"expected {name} of 1 or more, got {getattr(self, name)}"
+                )
+        for name in ("overlap_length", "wave_number"):
+            if not 0.0 < getattr(self, name) < np.inf:
+                raise UsageError(
+                    f"expected a positive {name}, got {getattr(self, name)}"
+                )
+
+    def lags(self) -> list[int]:
+        """Lags in frames, ascending."""
+        lags, octave = set(), 0
+        while 2**octave <= self.max_lag:
+            for part in range(self.lags_per_octave):
+                lags.add(round(2.0 ** (octave + part / self.lags_per_octave)))
+            octave += 1
+        return sorted(lag for lag in lags if lag <= self.max_lag)
+
+    def spacing(self, lag: int) -> int:
+        """Frames between the origins that are used for a lag."""
+        spacing = self.origin_interval
+        while 2 * spacing <= lag / 2:
+            spacing *= 2
+        return spacing
+
+
+@dataclass(frozen=True, eq=False)
+class _Origin:
+    """A frame that later ones are compared with; each pair of particles once."""
+
+    count: int
+    time: float
+    path: NDArray[np.float64]
+    bonds: Bonds
+    n_neighbors: NDArray[np.int64]
+    average: csr_array  # takes the mean over the neighbors
+
+    @classmethod
+    def build(
+        cls, count: int, time: float, path: NDArray[np.float64], bonds: Bonds
+    ) -> "_Origin":
+        n = len(path)
+        first = np.concatenate((bonds.first, bonds.second))
+        second = np.concatenate((bonds.second, bonds.first))
+        n_neighbors = np.bincount(first, minlength=n)
+        average = csr_array((1.0 / n_neighbors[first], (first, second)), shape=(n, n))
+        return cls(count, time, path, bonds, n_neighbors, average)
+
+
+class Correlations:
+    """Accumulate correlations frame by frame in bounded memory.
+
+    Parameters
+    ----------
+    n_particles, dimensions : int
+        Shape of the frames to come.
+    plan : CorrelationPlan
+        What to measure.
+    """
+
+    def __init__(
+        self, n_particles: int, dimensions: int, plan: CorrelationPlan
+    ) -> None:
+        self._n = n_particles
+        self._d = dimensions
+        self._plan = plan
+        self._lags = plan.lags()
+        self._spacings = [plan.spacing(lag) for lag in self._lags]
+        self._moments = BlockMoments(len(self._lags), 8)
+        self._rows = {lag: row for row, lag in enumerate(self._lags)}
+        self._lag_times = np.zeros(len(self._lags))
+        self._left_out = np.zeros(len(self._lags), dtype=np.int64)
+        self._origins: list[_Origin] = []
+
+    def advance(self, count: int, frame: Frame, motion: Motion) -> None:
+        """Take the next frame.
+
+        Parameters
+        ----------
+        count : int
+            Number of frames before this one.
+        frame : Frame
+            The configuration.
+        motion : Motion
+            Its continuous positions and displacements.
+        """
+        for origin in self._origins:
+            row = self._rows.get(count - origin.count)
+            if row is not None and origin.count % self._spacings[row] == 0:
+                self._moments.add(row, self._compare(origin, frame, motion))
+                self._lag_times[row] += frame.time - origin.time
+                self._left_out[row] += np.count_nonzero(origin.n_neighbors == 0)
+        self._origins = [o for o in self._origins if self._needed(o.count, count)]
+        if count % self._plan.origin_interval == 0:
+            bonds = all_bonds(frame, motion, self._plan.bonded)
+            once = bonds.select(np.flatnonzero(bonds.first < bonds.second))
+            self._origins.append(
+                _Origin.build(count, frame.time, motion.path.copy(), once)
+            )
+
+    def _needed(self, origin: int, count: int) -> bool:
+        """Whether a lag is still to be measured from an origin after this frame."""
+        return any(
+            origin + lag > count and origin % spacing == 0
+            for lag, spacing in zip(self._lags, self._spacings, strict=True)
+        )
+
+    def _compare(
+        self, origin: _Origin, frame: Frame, motion: Motion
+    ) -> NDArray[np.float64]:
+        plan = self._plan
+        moved = motion.path - origin.path
+        r2 = np.einsum("ij,ij->i", moved, moved)
+        phase = plan.wave_number * np.sqrt(r2)
+        wave = np.sinc(phase / np.pi) if self._d == 3 else j0(phase)
+        overlap = float(np.mean(r2 <= plan.overlap_length**2))
+        caged = origin.n_neighbors > 0
+        relative = (moved - origin.average @ moved)[caged]
+        bonds = origin.bonds
+        contact = frame.radii[bonds.first] + frame.radii[bonds.second]
+        limit = plan.broken**2 * contact**2
+        lost = bonds.squared_lengths(motion, frame.box) > limit
+        n_lost = np.bincount(bonds.first[lost], minlength=self._n)
+        n_lost += np.bincount(bonds.second[lost], minlength=self._n)
+        whole = n_lost < plan.fraction_lost * origin.n_neighbors - 1e-9
+        n_caged = np.count_nonzero(caged)
+        value = np.full(8, np.nan)
+        value[_R2] = r2.mean()
+        value[_R4] = np.mean(r2 * r2)
+        value[_Q], value[_Q2] = overlap, overlap * overlap
+        value[_SCATTERING] = wave.mean()
+        if n_caged:
+            value[_RELATIVE] = np.einsum("ij,ij->", relative, relative) / n_caged
+            value[_BONDS] = 1.0 - np.count_nonzero(lost) / len(bonds)
+            value[_CAGES] = np.count_nonzero(whole & caged) / n_caged
+        return value
+
+    def table(self) -> dict[str, NDArray[np.generic]]:
+        """Columns under the names of :data:`CORRELATION_FIELDS`, measured lags only."""
+        rows = [row for row in range(len(self._lags)) if self._moments.count(row)]
+        table: dict[str, NDArray[np.generic]] = {
+            field.name: np.full(len(rows), np.nan).astype(field.dtype)
+            if field.dtype == "f8"
+            else np.zeros(len(rows), dtype=field.dtype)
+            for field in CORRELATION_FIELDS
+        }
+        for k, row in enumerate(rows):
+            n_origins = self._moments.count(row)
+            table["lag_frames"][k] = self._lags[row]
+            table["lag"][k] = self._lag_times[row] / n_origins
+            table["n_origins"][k] = n_origins
+            table["without_neighbors"][k] = self._left_out[row] / n_origins
+            converged = True
+            for name, (value, gradient) in self._functions(row).items():
+                estimate = self._moments.estimate(row, value, gradient)
+                table[name][k] = value
+                table[f"{name}_error"][k] = estimate.error
+                converged &= estimate.converged
+            table["errors_converged"][k] = converged
+        return table
+
+    def _functions(self, row: int) -> dict[str, tuple[float, NDArray[np.float64]]]:
+        """Value and gradient, by the means over origins, of each column."""
+        mean, unit = self._moments.mean(row), np.eye(8)
+        functions = {name: (float(mean[k]), unit[k]) for name, k in _MEANS.items()}
+        ratio = self._d / (self._d + 2.0)
+        if mean[_R2] > 0.0:
+            gradient = ratio * (
+                unit[_R4] / mean[_R2] ** 2
+                - 2.0 * unit[_R2] * mean[_R4] / mean[_R2] ** 3
+            )
+            alpha = ratio * mean[_R4] / mean[_R2] ** 2 - 1.0
+            functions["non_gaussian"] = (float(alpha), gradient)
+        # The mean of few or correlated origins follows their fluctuations; its own
+        # variance makes up for what they lose by that.
+        error = self._moments.estimate(row, float(mean[_Q]), unit[_Q]).error
+        if np.isfinite(error):
+            variance = max(mean[_Q2] - mean[_Q] ** 2, 0.0) + error**2
+            gradient = self._n * (unit[_Q2] - 2.0 * mean[_Q] * unit[_Q])
+            functions["chi_4"] = (float(self._n * variance), gradient)
+        return functions
+
+    def state(self) -> State:
+        """All that is needed to continue, as arrays."""
+        state: State = {
+            "lag_times": self._lag_times.copy(),
+            "left_out": self._left_out.copy(),
+        }
+        state["origin_counts"] = np.array(
+            [o.count for o in self._origins], dtype=np.int64
+        )
+        state["origin_times"] = np.array([o.time for o in self._origins])
+        for k, origin in enumerate(self._origins):
+            state[f"origin{k}.path"] = origin.path.copy()
+            state.update(prefixed(f"origin{k}.bonds", origin.bonds.state()))
+        state.update(prefixed("moments", self._moments.state()))
+        return state
+
+    def restore(self, state: Mapping[str, NDArray[np.generic]]) -> None:
+        """Continue from what :meth:`state` returned."""
+        self._lag_times = np.array(state["lag_times"], dtype=np.float64)
+        self._left_out = np.array(state["left_out"], dtype=np.int64)
+        self._moments.restore(under("moments", state))
+        self._origins = [
+            _Origin.build(
+                int(count),
+                float(time),
+                np.array(state[f"origin{k}.path"], dtype=np.float64),
+                Bonds.from_state(under(f"origin{k}.bonds", state)),
+            )
+            for k, (count, time) in enumerate(
+                zip(state["origin_counts"], state["origin_times"], strict=True)
+            )
+        ]
