@@ -15,7 +15,8 @@ from collections.abc import Callable
 
 import freud
 import numpy as np
-from monte_carlo import MonteCarlo, fcc
+from monte_carlo import MonteCarlo
+from packings import fcc
 
 from trajcage.analysis.contacts import ContactOptions, measure_contacts
 from trajcage.analysis.order import OrderOptions, measure_order

@@ -1,6 +1,7 @@
 import numpy as np
 import pytest
-from monte_carlo import MonteCarlo, fcc, hcp, triangular
+from monte_carlo import MonteCarlo
+from packings import fcc, hcp, triangular
 from scipy.optimize import linprog
 
 from trajcage.analysis.contacts import (

@@ -260,6 +260,33 @@ def test_pairs_just_beyond_the_duplicate_limit_survive_freud():
     assert done.stdout.strip() == "alive", done.stdout + done.stderr
 
 
+@pytest.mark.parametrize("n", range(1, 9))
+@pytest.mark.parametrize("name", ["cubic", "triclinic", "sheared", "plane", "oblique"])
+def test_cells_of_a_few_particles_close(n, name):
+    # Here freud's list holds a particle's own images and pairs more than once; the
+    # vectors must point to the right ones, or the facets do not fill the cells.
+    frame = random_frame(BOXES[name], n=n, seed=n)
+    volumes, neighbors = voronoi(frame)
+    assert volumes.sum() == pytest.approx(frame.box.volume, rel=1e-5)
+    pyramids = neighbors.weights * neighbors.distances / (2 * frame.dimensions)
+    filled = np.bincount(neighbors.particles, weights=pyramids)
+    np.testing.assert_allclose(filled, volumes, rtol=1e-5)
+    # The outward facets of a closed cell sum to zero.
+    normal = neighbors.vectors / neighbors.distances[:, None]
+    for axis in normal.T:
+        total = np.bincount(neighbors.particles, neighbors.weights * axis)
+        np.testing.assert_allclose(total, 0.0, atol=1e-4)
+
+
+def test_positions_that_are_not_finite_never_reach_freud():
+    # freud tessellates NaN silently, to cells that sum to four times the box.
+    frame = random_frame(TRICLINIC)
+    positions = frame.positions.copy()
+    positions[[3, 5], 1] = np.nan
+    with pytest.raises(FrameError, match="particles 3, 5"):
+        Frame(positions, frame.radii, frame.box)
+
+
 def test_a_single_particle_neighbors_its_own_images():
     box = Box.from_any([2.0, 2.0, 2.0])
     frame = Frame(np.array([[0.3, 0.4, 0.5]]), np.array([0.5]), box)

@@ -1,6 +1,10 @@
+import dataclasses
+
+import freud
 import numpy as np
 import pytest
-from monte_carlo import MonteCarlo, bcc, fcc, hcp, triangular
+from monte_carlo import MonteCarlo
+from packings import bcc, fcc, hcp, triangular
 from scipy.spatial.transform import Rotation
 
 from trajcage.analysis.order import (
@@ -162,6 +166,29 @@ def test_equilibrium_fluid_is_disordered(neighbors):
     chain.equilibrate(100)
     result = measured(as_frame(chain.positions, chain.lengths), neighbors=neighbors)
     assert share(result, Structure.DISORDERED) > 0.99
+
+
+@pytest.mark.parametrize("neighbors", ["voronoi", "cutoff"])
+def test_solid_bonds_equal_those_of_freud(neighbors):
+    # freud counts with its own lists in an orthogonal box, where it can be trusted.
+    chain = thermal(fcc(5, 0.50), 60)
+    frame = as_frame(chain.positions, chain.lengths)
+    r_max = 1.45
+    result = measured(frame, neighbors=neighbors, r_max=r_max)
+    points = frame.positions - 0.5 * frame.box.lengths
+    system = (freud.box.Box(*frame.box.lengths), points.astype(np.float32))
+    if neighbors == "voronoi":
+        found = freud.locality.Voronoi().compute(system).nlist
+        # freud's SolidLiquid weighs all facets alike
+        uniform = voronoi(frame)[1]
+        uniform = dataclasses.replace(uniform, weights=np.ones_like(uniform.weights))
+        result = measure_order(frame, (np.ones(500), uniform), OrderOptions())
+    else:
+        found = {"r_max": r_max}
+    order = freud.order.SolidLiquid(6, 0.7, 7).compute(system, neighbors=found)
+    differ = result["solid_bonds"] != order.num_connections
+    assert np.ptp(result["solid_bonds"]) > 8
+    assert differ.mean() < 0.01  # rounding at the threshold
 
 
 @pytest.mark.parametrize("lattice", [fcc, hcp, bcc])

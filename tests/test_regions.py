@@ -1,6 +1,7 @@
 import numpy as np
 import pytest
-from monte_carlo import MonteCarlo, fcc
+from monte_carlo import MonteCarlo
+from packings import fcc
 from scipy.sparse import coo_array
 from scipy.sparse.csgraph import connected_components
 
