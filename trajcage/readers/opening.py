@@ -4,31 +4,15 @@ from pathlib import Path
 
 from trajcage.errors import InputError
 from trajcage.readers.gsd_file import GsdSource
-from trajcage.readers.h5md import H5mdSource
 from trajcage.readers.lammps_data import LammpsDataSource
 from trajcage.readers.lammps_dump import LammpsDumpSource
 from trajcage.readers.options import InputOptions
 from trajcage.readers.source import Particles, Source, check_file
 from trajcage.readers.trajectory import Trajectory
-from trajcage.readers.universe import UniverseSource, read_topology
 from trajcage.readers.xyz import XyzSource
 
 __all__ = ["open_trajectory"]
 
-_FRAMES: dict[
-    str,
-    type[GsdSource] | type[H5mdSource] | type[LammpsDumpSource] | type[XyzSource],
-] = {
-    ".gsd": GsdSource,
-    ".h5md": H5mdSource,
-    ".h5": H5mdSource,
-    ".dump": LammpsDumpSource,
-    ".lammpsdump": LammpsDumpSource,
-    ".lammpstrj": LammpsDumpSource,
-    ".xyz": XyzSource,
-    ".extxyz": XyzSource,
-}
-_DATA_SUFFIXES = {".data", ".lammpsdata"}
 # First bytes that settle the format whatever the file is called (dump.melt).
 _FIRST_BYTES = {
     b"ITEM: ": ".dump",
@@ -73,16 +57,33 @@ def open_trajectory(options: InputOptions) -> Trajectory:
 
 def _open_source(topology: Path, trajectory: Path | None) -> Source:
     path = topology if trajectory is None else trajectory
-    kind = _kind(path)
-    if kind in _DATA_SUFFIXES:
-        if trajectory is not None:
-            raise InputError(f"a LAMMPS data file holds no trajectory: {path}")
-        return LammpsDataSource(path)
-    if kind in _FRAMES:
-        companion = None if trajectory is None else _companion(topology)
-        return _FRAMES[kind](path, companion)
-    own = _kind(topology) in {*_FRAMES, *_DATA_SUFFIXES}
-    return UniverseSource(_companion(topology) if own else topology, path)
+    companion = None if trajectory is None else _companion(topology)
+    source = _open_own(path, companion)
+    if source is not None:
+        return source
+    from trajcage.readers.universe import UniverseSource  # MDAnalysis loads slowly
+
+    return UniverseSource(path, companion)
+
+
+def _open_own(path: Path, companion: Particles | None = None) -> Source | None:
+    """Open a file of a format that is read here, None if it is another."""
+    match _kind(path):
+        case ".gsd":
+            return GsdSource(path, companion)
+        case ".dump" | ".lammpsdump" | ".lammpstrj":
+            return LammpsDumpSource(path, companion)
+        case ".xyz" | ".extxyz":
+            return XyzSource(path, companion)
+        case ".h5md" | ".h5":
+            from trajcage.readers.h5md import H5mdSource  # as MDAnalysis above
+
+            return H5mdSource(path, companion)
+        case ".data" | ".lammpsdata":
+            if companion is not None:
+                raise InputError(f"a LAMMPS data file holds no trajectory: {path}")
+            return LammpsDataSource(path)
+    return None
 
 
 def _kind(path: Path) -> str:
@@ -95,14 +96,11 @@ def _kind(path: Path) -> str:
 
 def _companion(topology: Path) -> Particles:
     """Read the particles from a topology beside a trajectory."""
-    kind = _kind(topology)
-    if kind not in {*_FRAMES, *_DATA_SUFFIXES}:
+    source = _open_own(topology)
+    if source is None:
+        from trajcage.readers.universe import read_topology  # as MDAnalysis above
+
         return read_topology(topology)
-    source = (
-        LammpsDataSource(topology)
-        if kind in _DATA_SUFFIXES
-        else _FRAMES[kind](topology)
-    )
     try:
         raw = source.read(0)
     finally:

@@ -40,26 +40,26 @@ class UniverseSource(Source):
 
     Parameters
     ----------
-    topology : Path or Particles
-        A topology file, or the particles if another reader has read them.
     path : Path
-        The file with the frames; it can be the topology itself.
+        The file with the frames.
+    companion : Particles, optional
+        Particles from a topology; without them the file must name its own.
 
     Raises
     ------
     InputError
-        If MDAnalysis cannot read the files or they do not match.
+        If MDAnalysis cannot read the file or it does not match the topology.
     """
 
     _reader: Any
 
-    def __init__(self, topology: Path | Particles, path: Path) -> None:
+    def __init__(self, path: Path, companion: Particles | None = None) -> None:
         self.notes = []
         self.files = (path,)
         self.format = path.suffix.lstrip(".").upper() or "file without suffix"
         try:
             with collect_warnings(self.notes):
-                particles = self._open(topology, path)
+                particles = self._open(path, companion)
             self.n_frames = int(self._reader.n_frames)
             self._unit = _stored_spacing(path, self.format)
         except InputError:
@@ -77,21 +77,20 @@ class UniverseSource(Source):
         self._particles = particles
         self._note_lost_bytes()
 
-    def _open(self, topology: Path | Particles, path: Path) -> Particles:
-        if isinstance(topology, Particles):
+    def _open(self, path: Path, companion: Particles | None) -> Particles:
+        if companion is not None:
             self._reader = open_reader(
-                str(path), n_atoms=len(topology.types), convert_units=False
+                str(path), n_atoms=len(companion.types), convert_units=False
             )
-            found: Particles = topology
+            found = companion
         else:
-            files = [str(topology)] if topology == path else [str(topology), str(path)]
-            universe = MDAnalysis.Universe(*files, convert_units=False, to_guess=())
+            universe = MDAnalysis.Universe(str(path), convert_units=False, to_guess=())
             if not hasattr(universe, "trajectory"):
                 raise InputError(
                     f"{path} has no coordinates; give the trajectory after it"
                 )
             self._reader = universe.trajectory
-            found = _particles(universe, topology)
+            found = _particles(universe, path)
         name = self._reader.format
         self.format = str(name if isinstance(name, str) else name[0])
         if self.format == "GRO":
