@@ -1,7 +1,8 @@
 import numpy as np
 import pytest
+from jammed_packings import jammed_packing
 from monte_carlo import MonteCarlo
-from packings import fcc, hcp, triangular
+from packings import binary, fcc, hcp, polydisperse, triangular
 from scipy.optimize import linprog
 
 from trajcage.analysis.contacts import (
@@ -161,6 +162,46 @@ def test_unequal_disks_touch_at_the_sum_of_their_radii():
     frame = as_frame(positions, [20.0, 20.0], [0.5, 1.0, 1.5, 1.0])
     result = measure_contacts(frame, ContactOptions(tolerance=1e-9))
     assert result["contacts"].tolist() == [1, 2, 2, 1]
+
+
+@pytest.fixture(scope="module", params=["disks", "spheres"])
+def jammed(request):
+    if request.param == "disks":
+        return jammed_packing(80, seed=4, radii=binary(80, 1.4), dimensions=2)
+    return jammed_packing(60, seed=1, radii=polydisperse(60, 0.1))
+
+
+def as_packed(jammed, digits=15):
+    packing = jammed.packing
+    return as_frame(np.round(packing.positions, digits), packing.lengths, packing.radii)
+
+
+def test_jammed_packing_is_isostatic(jammed):
+    # d (N' - 1) + 1 contacts hold N' particles in a periodic box: exactly isostatic,
+    # as the packings of Atkinson, Stillinger & Torquato, Phys. Rev. E 88, 062208 (2013).
+    frame = as_packed(jammed)
+    result = measure_contacts(frame, ContactOptions())
+    np.testing.assert_array_equal(result["rattler"] == 1, jammed.rattlers)
+    backbone = np.count_nonzero(~jammed.rattlers)
+    pairs = result["backbone_coordination"] * backbone / 2
+    assert pairs == pytest.approx(frame.dimensions * (backbone - 1) + 1)
+    assert pairs == pytest.approx(len(jammed.contacts))
+    assert result["backbone_coordination"] == pytest.approx(
+        result["isostatic_coordination"]
+    )
+    assert result["rattler_plateau"] == pytest.approx(jammed.rattlers.mean())
+    first, last = result["rattler_plateau_range"]
+    assert first <= 10 * max(jammed.largest_gap, 1e-12)
+    assert last >= 10 ** (np.floor(2 * np.log10(jammed.next_gap)) / 2)
+
+
+def test_rounded_coordinates_shorten_the_plateau(jammed):
+    frame = as_packed(jammed, digits=6)
+    result = measure_contacts(frame, ContactOptions(tolerance=1e-5))
+    np.testing.assert_array_equal(result["rattler"] == 1, jammed.rattlers)
+    first, _ = result["rattler_plateau_range"]
+    assert 1e-8 < first < 1e-5
+    assert result["rattler_fraction_curve"][0] == 1.0
 
 
 def test_thermal_configurations_have_no_plateau():
