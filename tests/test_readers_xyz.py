@@ -72,9 +72,21 @@ def test_truncated_file(tmp_path):
             trajectory.frame(2)
 
 
-def test_no_line_break_at_the_end(tmp_path):
-    with open_xyz(tmp_path / "a.xyz", xyz_frame().rstrip(), box="10,10,10") as opened:
-        assert opened.frame(0).positions[2, 2] == 9.125
+def test_no_cut_changes_a_number(tmp_path):
+    text = xyz_frame() * 2
+    with open_xyz(tmp_path / "a.xyz", text, box="10,10,10") as trajectory:
+        truth = trajectory.frame(0).positions
+    for cut in range(1, len(text)):
+        try:
+            with open_xyz(tmp_path / "b.xyz", text[:cut], box="10,10,10") as trajectory:
+                for index in range(trajectory.n_frames):
+                    np.testing.assert_array_equal(
+                        trajectory.frame(index).positions, truth
+                    )
+        except InputError:
+            continue
+    with pytest.raises(FrameError, match="with a line break"):
+        open_xyz(tmp_path / "c.xyz", xyz_frame().rstrip(), box="10,10,10")
 
 
 @pytest.mark.parametrize(

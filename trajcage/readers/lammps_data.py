@@ -12,7 +12,7 @@ import numpy as np
 
 from trajcage.errors import InputError
 from trajcage.readers.source import RawFrame, Source
-from trajcage.readers.text import Table, to_floats
+from trajcage.readers.text import Table, check_last_line, to_floats
 
 __all__ = ["LammpsDataSource"]
 
@@ -54,7 +54,9 @@ class LammpsDataSource(Source):
         self.files = (path,)
         self.notes = []
         try:
-            self._read(path.read_bytes().splitlines())
+            text = path.read_bytes()
+            check_last_line(text)
+            self._read(text.splitlines())
         except ValueError as error:
             raise InputError(f"cannot read {path}: {error}") from None
 

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from trajcage.readers.text import Table, to_floats
+from trajcage.readers.text import Table, check_last_line, to_floats
 
 __all__ = ["BLOCK_HEAD", "DumpBlock", "DumpError", "find_blocks", "parse_block"]
 
@@ -118,11 +118,7 @@ class _Lines:
         text = self._text[self._at :]
         if n == 0:
             raise ValueError("expected particles, found none")
-        if not text.endswith(b"\n"):
-            raise ValueError(
-                "the file ends inside a line (truncated?); end a complete file with "
-                "a line break"
-            )
+        check_last_line(text)
         *lines, rest = text.split(b"\n", n)
         if len(lines) < n:
             raise ValueError(

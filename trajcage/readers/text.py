@@ -5,7 +5,7 @@ from collections.abc import Iterable, Mapping, Sequence
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["Table", "decimal_spacing", "to_floats"]
+__all__ = ["Table", "check_last_line", "decimal_spacing", "to_floats"]
 
 
 class Table:
@@ -79,6 +79,15 @@ class Table:
         """Return the spacing of printed coordinates, see `decimal_spacing`."""
         return decimal_spacing(
             word for name in names for word in self.words(name)[:100_000]
+        )
+
+
+def check_last_line(text: bytes) -> None:
+    """Raise ValueError if the text ends inside a line, perhaps inside a number."""
+    if not text.endswith(b"\n"):
+        raise ValueError(
+            "the file ends inside a line (truncated?); end a complete file with a "
+            "line break"
         )
 
 

@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 
 from trajcage.errors import FrameError, InputError
 from trajcage.readers.source import Particles, RawFrame, Source
-from trajcage.readers.text import Table, to_floats
+from trajcage.readers.text import Table, check_last_line, to_floats
 
 __all__ = ["XyzSource"]
 
@@ -134,10 +134,12 @@ class XyzSource(Source):
         """Comment keys and particle lines of one frame."""
         start, stop = self._offsets[index], self._offsets[index + 1]
         self._file.seek(start)
-        lines = self._file.read(stop - start).splitlines()
+        text = self._file.read(stop - start)
+        lines = text.splitlines()
         try:
             n = _count(lines[0])
             _check_count(n, len(lines) - 2)
+            check_last_line(text)
             keys = _keys(lines[1].decode(errors="replace"))
             columns, width = _columns(keys.get("properties"))
             return keys, Table(lines[2 : 2 + n], columns, width)
