@@ -48,8 +48,13 @@ def run(paths: np.ndarray, box: Box, options: TimeOptions, values=None, **how):
 
 
 def collect(outputs, table: str) -> dict[str, np.ndarray]:
-    """All rows of a growing table."""
-    return {
-        name: np.concatenate([output.rows[table][name] for output in outputs])
-        for name in outputs[0].rows[table]
-    }
+    """All rows of a growing table, offsets of ragged columns included."""
+    parts = [output.rows[table] for output in outputs]
+    whole = {}
+    for name in parts[0]:
+        if name.endswith("_offsets"):
+            counts = np.concatenate([np.diff(part[name]) for part in parts])
+            whole[name] = np.concatenate(([0], np.cumsum(counts)))
+        else:
+            whole[name] = np.concatenate([part[name] for part in parts])
+    return whole

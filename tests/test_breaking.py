@@ -6,6 +6,7 @@ from moving import collect, fcc, frames, run, triangular, vibration
 
 from trajcage.analysis.breaking import BreakingRule
 from trajcage.analysis.fold import TimeFold, growing_tables
+from trajcage.analysis.regions import Region
 from trajcage.analysis.time_options import TimeOptions
 from trajcage.errors import UsageError
 from trajcage.model import Box
@@ -62,8 +63,8 @@ def test_exchange_of_two_neighbors_gives_exactly_their_events():
     np.testing.assert_allclose(events["displacement"], expected, atol=1e-12)
     around = {p: set(neighbors_on(sites, box, p, 1.2)) for p in (i, j)}
     assert events["n_neighbors_start"].tolist() == [6] * 4
-    assert events["n_neighbors_lost"].tolist() == [3] * 4
-    assert events["n_neighbors_gained"].tolist() == [3] * 4
+    assert np.diff(events["neighbors_lost_offsets"]).tolist() == [3] * 4
+    assert np.diff(events["neighbors_gained_offsets"]).tolist() == [3] * 4
     lost = np.split(events["neighbors_lost"], [3, 6, 9])
     gained = np.split(events["neighbors_gained"], [3, 6, 9])
     for row, p in enumerate(sorted([i, j]) * 2):
@@ -106,8 +107,8 @@ def test_exchange_in_a_face_centered_crystal():
     *_, events, _ = run(paths, box, options)
     assert events["particle"].tolist() == sorted([i, j])
     assert events["end_frame"].tolist() == [4, 4]
-    assert events["n_neighbors_lost"].tolist() == [5, 5]
-    assert events["n_neighbors_gained"].tolist() == [7, 7]
+    assert np.diff(events["neighbors_lost_offsets"]).tolist() == [5, 5]
+    assert np.diff(events["neighbors_gained_offsets"]).tolist() == [7, 7]
 
 
 def test_hysteresis_stops_flicker_and_a_single_threshold_does_not():
@@ -224,8 +225,9 @@ def test_what_is_not_measured_is_stored_as_unknown():
     assert events["particle"].tolist() == [0, 1]
     for name in ("free_volume_before", "free_volume_after", "weakest_window_before"):
         assert np.isnan(events[name]).all()
-    for name in ("region_before", "region_after", "through_weakest_window"):
-        assert (events[name] == -1).all()
+    assert (events["through_weakest_window"] == -1).all()
+    for name in ("region_before", "region_after"):
+        assert (events[name] == Region.UNKNOWN).all()
 
 
 def test_images_of_one_neighbor_in_a_small_box():
@@ -238,7 +240,7 @@ def test_images_of_one_neighbor_in_a_small_box():
     assert events["particle"].tolist() == [0, 1]
     assert events["n_neighbors_start"].tolist() == [2, 2]
     assert events["neighbors_lost"].tolist() == [1, 0]
-    assert events["n_neighbors_lost"].tolist() == [1, 1]
+    assert np.diff(events["neighbors_lost_offsets"]).tolist() == [1, 1]
 
 
 def test_a_cage_starts_when_the_first_neighbor_comes():
@@ -263,14 +265,14 @@ def test_events_have_the_declared_columns(dimensions):
     assert len(events["particle"]) > 0
     assert len(jumps["particle"]) > 0
     for table, rows in zip(growing_tables(dimensions), (events, jumps), strict=True):
-        assert [field.name for field in table.fields] == list(rows)
-        for field in table.fields:
+        offsets = [f"{field.name}_offsets" for field in table.ragged]
+        names = [field.name for field in (*table.columns, *table.ragged)]
+        assert sorted([*names, *offsets]) == sorted(rows)
+        for field in (*table.columns, *table.ragged):
             column = rows[field.name]
             assert np.can_cast(column.dtype, field.dtype, "same_kind"), field.name
             assert column.shape[1:] == field.shape
-            if field.name in table.ragged:
-                assert len(column) == rows[table.ragged[field.name]].sum()
-            else:
+            if field in table.columns:
                 assert len(column) == len(rows["particle"])
 
 

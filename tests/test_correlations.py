@@ -29,7 +29,7 @@ def test_independent_brownian_walkers(dimensions):
     rng = np.random.default_rng(dimensions)
     step, reach, wave = 0.1, 0.3, 4.0
     box = Box.from_any([1000.0] * dimensions)
-    paths = walkers(rng, 900, 400, box, step)
+    paths = walkers(rng, 600, 300, box, step)
     options = TimeOptions(
         origin_interval=1, max_lag=16, overlap_length=reach, wave_number=wave
     )

@@ -216,7 +216,7 @@ def test_memory_is_flat():
     peaks = []
     tracemalloc.start()
     try:
-        for repeat in range(12):
+        for repeat in range(8):
             tracemalloc.reset_peak()
             for k in range(40):
                 index = 40 * repeat + k
@@ -227,7 +227,7 @@ def test_memory_is_flat():
             peaks.append(tracemalloc.get_traced_memory()[1])
     finally:
         tracemalloc.stop()
-    assert max(peaks[6:]) < 1.1 * max(peaks[2:6])
+    assert max(peaks[5:]) < 1.1 * max(peaks[2:5])
 
 
 @pytest.mark.parametrize(
@@ -242,3 +242,36 @@ def test_memory_is_flat():
 def test_options_that_make_no_sense(options, message):
     with pytest.raises(UsageError, match=message):
         TimeOptions(**options)
+
+
+def test_interruption_in_a_changing_tilted_box_with_flags():
+    rng = np.random.default_rng(12)
+    n, n_frames = 60, 24
+    vectors = np.array([[5.0, 0, 0], [1.5, 4.5, 0], [-1.0, 0.7, 4.0]])
+    fractional = rng.random((n, 3)) + np.cumsum(
+        rng.normal(0.0, 0.06, (n_frames, n, 3)), axis=0
+    )
+    radii = rng.uniform(0.3, 0.6, n)
+
+    def shown():
+        for k in range(n_frames):
+            box = Box(vectors * (1.0 + 0.01 * np.sin(k)), np.ones(3), (True,) * 3)
+            images = np.floor(fractional[k]).astype(np.int32)
+            inside = (fractional[k] - images) @ box.vectors + box.origin
+            yield Frame(inside, radii, box, k, k, float(k), images=images)
+
+    options = TimeOptions(
+        origin_interval=1, max_lag=8, hop_half_window=2, minimum_duration=2.0
+    )
+    whole, broken_off = (TimeFold(options, n, 3, 0.9) for _ in range(2))
+    n_events = 0
+    for frame in shown():
+        state = broken_off.state()
+        broken_off = TimeFold(options, n, 3, 0.9)
+        broken_off.restore(state)
+        a, b = whole.update(frame, {}), broken_off.update(frame, {})
+        assert same(a.rows, b.rows)
+        n_events += len(a.rows["events"]["particle"])
+    assert n_events > 20
+    assert same(whole.state(), broken_off.state())
+    assert same(whole.conclude().curves, broken_off.conclude().curves)

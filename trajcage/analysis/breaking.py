@@ -270,8 +270,9 @@ class CageTracker:
         lost = np.setdiff1d(lost, was[~self._gone[old]])
         gained = np.setdiff1d(gained, was)
 
-        def per_event(pairs: NDArray[np.int64]) -> NDArray[np.int64]:
-            return np.bincount(pairs // self._n, minlength=self._n)[broken]
+        def offsets(pairs: NDArray[np.int64]) -> NDArray[np.int64]:
+            counts = np.bincount(pairs // self._n, minlength=self._n)[broken]
+            return np.concatenate(([0], np.cumsum(counts)))
 
         return {
             "particle": broken,
@@ -281,19 +282,19 @@ class CageTracker:
             "end_step": end["step"][broken],
             "start_time": start["time"][broken],
             "end_time": end["time"][broken],
-            "from_record_start": since_first.astype(np.int8),
+            "from_record_start": since_first.astype(np.uint8),
             "displacement": end["path"][broken] - start["path"][broken],
             "n_neighbors_start": self._size[broken],
-            "n_neighbors_lost": per_event(lost),
-            "n_neighbors_gained": per_event(gained),
-            "neighbors_lost": lost % self._n,
-            "neighbors_gained": gained % self._n,
             "region_before": before["region"][broken],
             "region_after": end["region"][broken],
             "free_volume_before": before["free_volume"][broken],
             "free_volume_after": end["free_volume"][broken],
             "weakest_window_before": before["weakest_window"][broken],
             "through_weakest_window": self._through[broken],
+            "neighbors_lost": lost % self._n,
+            "neighbors_lost_offsets": offsets(lost),
+            "neighbors_gained": gained % self._n,
+            "neighbors_gained_offsets": offsets(gained),
         }
 
     def open_ages(

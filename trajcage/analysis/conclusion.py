@@ -10,15 +10,24 @@ from trajcage.analysis.correlations import CORRELATION_FIELDS
 from trajcage.analysis.jumps import msd_crossover
 from trajcage.analysis.survival import SURVIVAL_FIELDS, SurvivalCurve
 from trajcage.model import Field
+from trajcage.store import ArraySpec
 
-__all__ = ["CURVES", "SUMMARY", "Conclusion", "ConclusionBuilder"]
+__all__ = ["CURVES", "CURVE_ARRAYS", "SUMMARY", "Conclusion", "ConclusionBuilder"]
 
-#: Tables made at the end, by name.
+#: Tables made at the end, by name, and their columns.
 CURVES: Mapping[str, tuple[Field, ...]] = {
     "survival": SURVIVAL_FIELDS,
     "persistence": SURVIVAL_FIELDS,
     "correlations": CORRELATION_FIELDS,
 }
+
+
+#: The same columns as arrays of a result file.
+CURVE_ARRAYS = tuple(
+    ArraySpec(f"/trajcage/{name}/{f.name}", f.description, f.unit, f.dtype)
+    for name, fields in CURVES.items()
+    for f in fields
+)
 
 
 def _survival_scalars(name: str, cages: str) -> tuple[Field, ...]:
@@ -83,6 +92,15 @@ class Conclusion:
     curves: dict[str, dict[str, NDArray[np.generic]]]
     summary: dict[str, float]
     reasons: dict[str, str]
+
+    @property
+    def arrays(self) -> dict[str, NDArray[np.generic]]:
+        """Contents of :data:`CURVE_ARRAYS` by their names."""
+        return {
+            f"{name}/{column}": array
+            for name, columns in self.curves.items()
+            for column, array in columns.items()
+        }
 
 
 class ConclusionBuilder:

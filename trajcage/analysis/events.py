@@ -7,21 +7,23 @@ from typing import Any, Self
 import numpy as np
 from numpy.typing import NDArray
 
+from trajcage.analysis.regions import Region
 from trajcage.analysis.state import State, prefixed, under
 from trajcage.analysis.unwrapping import Motion
 from trajcage.model import Box, Field, Frame
+from trajcage.store import TableSpec
 
-__all__ = ["EVENT_RAGGED", "Moment", "Present", "event_fields"]
-
-#: Ragged columns of the event table and the column that holds their lengths.
-EVENT_RAGGED = {
-    "neighbors_lost": "n_neighbors_lost",
-    "neighbors_gained": "n_neighbors_gained",
-}
+__all__ = ["Moment", "Present", "event_table"]
 
 
-def event_fields(dimensions: int) -> tuple[Field, ...]:
-    """Columns of the table of cage-breaking events."""
+def event_table(dimensions: int) -> TableSpec:
+    """Declare the table of cage-breaking events.
+
+    Parameters
+    ----------
+    dimensions : int
+        2 or 3.
+    """
 
     def column(
         name: str, description: str, unit: str = "1", dtype: str = "i8", d: int = 0
@@ -30,7 +32,9 @@ def event_fields(dimensions: int) -> tuple[Field, ...]:
 
     before = "on the last frame on which less than half of that loss had happened"
     after = "on the end frame"
-    return (
+    region = f"({Region.UNKNOWN.value} unknown; codes as in the field region)"
+    volume = f"length+{dimensions}"
+    columns = (
         column("particle", "Index of the particle whose cage broke"),
         column("start_frame", "Source frame on which the cage began"),
         column("end_frame", "First source frame on which it is broken"),
@@ -41,7 +45,7 @@ def event_fields(dimensions: int) -> tuple[Field, ...]:
         column(
             "from_record_start",
             "1 if the cage was there on the first frame, so that its age is unknown",
-            dtype="i1",
+            dtype="u1",
         ),
         column(
             "displacement",
@@ -51,18 +55,10 @@ def event_fields(dimensions: int) -> tuple[Field, ...]:
             dimensions,
         ),
         column("n_neighbors_start", "Neighbors at the start of the cage"),
-        column("n_neighbors_lost", "How many neighbors_lost belong to the event"),
-        column("n_neighbors_gained", "How many neighbors_gained belong to the event"),
-        column("neighbors_lost", "Neighbors of the start that are gone, by index"),
-        column("neighbors_gained", "Neighbors of the next cage that are new, by index"),
-        column("region_before", f"Region {before}; -1 unknown", dtype="i1"),
-        column("region_after", f"Region {after}; -1 unknown", dtype="i1"),
-        column(
-            "free_volume_before", f"Free volume {before}", f"length+{dimensions}", "f8"
-        ),
-        column(
-            "free_volume_after", f"Free volume {after}", f"length+{dimensions}", "f8"
-        ),
+        column("region_before", f"Region {before} {region}", dtype="u1"),
+        column("region_after", f"Region {after} {region}", dtype="u1"),
+        column("free_volume_before", f"Free volume {before}", volume, "f8"),
+        column("free_volume_after", f"Free volume {after}", volume, "f8"),
         column(
             "weakest_window_before",
             f"Opening ratio of the weakest window {before}",
@@ -75,6 +71,16 @@ def event_fields(dimensions: int) -> tuple[Field, ...]:
             "was then, relative to its corners: 1 yes, 0 no, -1 unknown",
             dtype="i1",
         ),
+    )
+    ragged = (
+        column("neighbors_lost", "Neighbors of the start that are gone, by index"),
+        column("neighbors_gained", "Neighbors of the next cage that are new, by index"),
+    )
+    return TableSpec(
+        "/trajcage/events",
+        columns,
+        ragged,
+        "Cages that broke: particles that lost a set share of the neighbors they had",
     )
 
 
@@ -90,7 +96,7 @@ class Present:
         Continuous positions.
     columns : dict of str to (n, ...) array
         What :class:`Moment` remembers: `frame`, `step`, `time`, `path`, and the
-        measured `region` (-1 unknown), `free_volume`, `weakest_window` (NaN unknown)
+        measured `region`, `free_volume`, `weakest_window` (NaN unknown)
         and `corners`, the particles (n, d) of that window (negative unknown).
     """
 
@@ -109,7 +115,7 @@ class Present:
             "step": np.full(n, frame.step, dtype=np.int64),
             "time": np.full(n, frame.time),
             "path": motion.path,
-            "region": np.full(n, -1, dtype=np.int8),
+            "region": np.full(n, Region.UNKNOWN, dtype=np.uint8),
             "free_volume": np.full(n, np.nan),
             "weakest_window": np.full(n, np.nan),
             "corners": np.full((n, d), -1, dtype=np.int64),
@@ -155,7 +161,7 @@ class Moment:
             "step": np.zeros(n, dtype=np.int64),
             "time": np.zeros(n),
             "path": np.zeros((n, d)),
-            "region": np.full(n, -1, dtype=np.int8),
+            "region": np.full(n, Region.UNKNOWN, dtype=np.uint8),
             "free_volume": np.full(n, np.nan),
             "weakest_window": np.full(n, np.nan),
             "corners": np.full((n, d), -1, dtype=np.int64),

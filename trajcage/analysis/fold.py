@@ -15,15 +15,16 @@ from numpy.typing import NDArray
 from trajcage.analysis.breaking import CageTracker
 from trajcage.analysis.conclusion import Conclusion, ConclusionBuilder
 from trajcage.analysis.correlations import Correlations
-from trajcage.analysis.events import EVENT_RAGGED, event_fields
-from trajcage.analysis.jumps import HopIndicator, jump_fields
+from trajcage.analysis.events import event_table
+from trajcage.analysis.jumps import HopIndicator, jump_table
 from trajcage.analysis.state import State, prefixed, under
 from trajcage.analysis.time_options import TimeOptions
 from trajcage.analysis.unwrapping import Unwrapper
 from trajcage.errors import ResultFileError
 from trajcage.model import Field, Frame
+from trajcage.store import TableSpec
 
-__all__ = ["FIELDS", "FoldOutput", "GrowingTable", "TimeFold", "growing_tables"]
+__all__ = ["FIELDS", "FoldOutput", "TimeFold", "growing_tables"]
 
 #: Values of each frame.
 FIELDS = (
@@ -58,27 +59,7 @@ FIELDS = (
 )
 
 
-@dataclass(frozen=True)
-class GrowingTable:
-    """Declaration of a table to which frames append rows.
-
-    Parameters
-    ----------
-    name : str
-        Name of the table.
-    fields : tuple of Field
-        Its columns.
-    ragged : mapping of str to str
-        Columns with any number of entries a row, concatenated, and for each the
-        column that says how many there are.
-    """
-
-    name: str
-    fields: tuple[Field, ...]
-    ragged: Mapping[str, str]
-
-
-def growing_tables(dimensions: int) -> tuple[GrowingTable, ...]:
+def growing_tables(dimensions: int) -> tuple[TableSpec, ...]:
     """Tables to which frames append rows: two kinds of events.
 
     Parameters
@@ -86,10 +67,7 @@ def growing_tables(dimensions: int) -> tuple[GrowingTable, ...]:
     dimensions : int
         2 or 3.
     """
-    return (
-        GrowingTable("events", event_fields(dimensions), EVENT_RAGGED),
-        GrowingTable("jumps", jump_fields(dimensions), {}),
-    )
+    return event_table(dimensions), jump_table(dimensions)
 
 
 @dataclass(frozen=True, eq=False)
@@ -101,7 +79,8 @@ class FoldOutput:
     values : dict of str to float
         One entry for each of :data:`FIELDS`.
     rows : dict of str to dict of str to array
-        New rows of each of :func:`growing_tables`, by column.
+        New rows of each of :func:`growing_tables`, by column; ragged columns with
+        their offsets.
     broken : (n,) bool
         Particles whose cage broke within the mobility window. False on the first
         frame; complete once the record is longer than the window.

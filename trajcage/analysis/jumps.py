@@ -15,12 +15,13 @@ from numpy.typing import ArrayLike, NDArray
 
 from trajcage.errors import InputError, UsageError
 from trajcage.model import Field, Frame
+from trajcage.store import TableSpec
 
 __all__ = [
     "HopIndicator",
     "PathSplits",
     "hop_indicator",
-    "jump_fields",
+    "jump_table",
     "msd_crossover",
     "split_paths",
 ]
@@ -29,9 +30,15 @@ __all__ = [
 _CAGED_SLOPE = 0.5
 
 
-def jump_fields(dimensions: int) -> tuple[Field, ...]:
-    """Columns of the table of jumps."""
-    return (
+def jump_table(dimensions: int) -> TableSpec:
+    """Declare the table of jumps.
+
+    Parameters
+    ----------
+    dimensions : int
+        2 or 3.
+    """
+    columns = (
         Field("particle", "Index of the particle that jumped", "1", "i8", False),
         Field("frame", "Source frame at which p_hop peaks", "1", "i8", False),
         Field("step", "Simulation step of that frame", "1", "i8", False),
@@ -45,6 +52,11 @@ def jump_fields(dimensions: int) -> tuple[Field, ...]:
             False,
             (dimensions,),
         ),
+    )
+    return TableSpec(
+        "/trajcage/jumps",
+        columns,
+        description="Particles that jumped: runs of frames with p_hop above a threshold",
     )
 
 
