@@ -209,6 +209,23 @@ def test_simple_cubic_is_another_solid():
     assert share(result, Structure.OTHER) > 0.98
 
 
+@pytest.mark.parametrize(
+    ("basis", "second"),
+    [
+        ([[0, 0, 0]], 2**0.5),
+        (np.array([[0, 0, 0], [0, 2, 2], [2, 0, 2], [2, 2, 0],
+                   [1, 1, 1], [1, 3, 3], [3, 1, 3], [3, 3, 1]]) / 4, (8 / 3) ** 0.5),
+    ],
+)  # fmt: skip
+def test_first_shell_when_the_second_is_as_high(basis, second):
+    # Simple cubic: 6 at 1, 12 at sqrt(2); diamond: 4 at 1, 12 at sqrt(8/3).
+    cells = np.array(list(np.ndindex(5, 5, 5)))
+    positions = (cells[:, None] + np.array(basis)).reshape(-1, 3)
+    nearest = 1.0 if len(basis) == 1 else 3**0.5 / 4
+    cutoff = first_shell_cutoff(as_frame(positions, [5.0] * 3))
+    assert 1.05 < cutoff / nearest < second - 0.05
+
+
 def test_first_shell_lies_between_the_shells():
     packing = fcc(5, 0.6)
     nearest = packing.lengths[0] / 5 / 2**0.5

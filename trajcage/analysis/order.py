@@ -179,9 +179,9 @@ def first_shell_cutoff(frame: Frame) -> float:
     """Distance of the first minimum of the radial distribution function, length.
 
     The histogram of pair distances in bins of 2 % of the mean spacing, divided
-    by those of an ideal gas and smoothed over three bins, is searched from its
-    first peak to twice that distance. Between sharp shells of a perfect lattice
-    this is the middle of the empty gap.
+    by that of an ideal gas and smoothed over three bins, is searched behind its
+    first peak, up to twice that distance. Between the sharp shells of a perfect
+    lattice this gives the middle of the empty gap.
 
     Raises
     ------
@@ -190,7 +190,7 @@ def first_shell_cutoff(frame: Frame) -> float:
     """
     d = frame.dimensions
     spacing = (frame.box.volume / frame.n_particles) ** (1.0 / d)
-    edges = np.arange(0.0, 2.5, 0.02) * spacing
+    edges = np.arange(0.0, 2.0, 0.02) * spacing
     distances = neighbor_list(frame, float(edges[-1])).distances
     if len(distances) < frame.n_particles:
         raise frame.error(
@@ -199,13 +199,13 @@ def first_shell_cutoff(frame: Frame) -> float:
         )
     density = np.histogram(distances, edges)[0] / np.diff(edges**d)
     smooth = np.convolve(density, np.ones(3) / 3, mode="same")
-    smooth /= density[len(density) // 2 :].mean()
-    peak = int(np.argmax(smooth))
+    rise = int(np.argmax(smooth >= 0.5 * smooth.max()))  # later shells can be higher
+    peak = rise + int(np.argmax(smooth[rise : rise + rise // 4 + 1]))
     stop = min(2 * peak, len(smooth))
     valley = smooth[peak:stop]
     lowest = peak + int(np.argmin(valley))
     last = lowest
-    while last + 1 < stop and smooth[last + 1] <= smooth[lowest] + 1e-9:
+    while last + 1 < stop and smooth[last + 1] <= smooth[lowest]:
         last += 1
     return float(0.5 * (edges[lowest] + edges[last + 1]))
 

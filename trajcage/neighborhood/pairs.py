@@ -95,7 +95,8 @@ def check_distinct(frame: Frame) -> None:
         Naming the particles by id.
     """
     spacing = (frame.box.volume / frame.n_particles) ** (1.0 / frame.dimensions)
-    limit = max(1e-4 * spacing, _SINGLE * float(frame.box.lengths.max()))
+    extent = np.append(frame.box.lengths, np.ptp(frame.box.wrap(frame.positions), 0))
+    limit = max(1e-4 * spacing, _SINGLE * float(extent.max()))
     pairs = neighbor_list(frame, limit)
     if len(pairs.neighbors) == 0:
         return
