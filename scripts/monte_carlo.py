@@ -2,9 +2,9 @@
 
 Local translations of single particles (Metropolis et al. 1953, J Chem Phys 21, 1087)
 in a periodic orthorhombic box, optional exchanges of the radii of two particles, and
-compression in small steps of box and positions. Particles are
-picked at random, so every move obeys detailed balance; the step length changes only in
-`equilibrate` and `compress_to`, never in `run`.
+compression in small steps of box and positions. Particles are picked at random, so every
+move obeys detailed balance; the step length changes only in `equilibrate` and
+`compress_to`, never in `run`.
 
 Radii are what the caller gives and never change by compression: the box does.
 Nothing here is used by the package itself.

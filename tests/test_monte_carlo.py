@@ -160,6 +160,16 @@ def test_same_seed_same_chain_however_it_is_cut():
     assert not np.array_equal(chains[0].unwrapped, other.unwrapped)
 
 
+def test_a_fluid_is_made_the_same_way_twice():
+    radii = polydisperse(60, 0.1)
+    first, second = (
+        random_fluid(60, 0.5, radii, seed=3, sweeps=20, swap_fraction=0.1)
+        for _ in range(2)
+    )
+    assert np.array_equal(first.unwrapped, second.unwrapped)
+    assert np.array_equal(first.radii, second.radii)
+
+
 def test_run_keeps_the_step_and_the_cells():
     radii = polydisperse(200, 0.1)
     simulation = random_fluid(200, 0.45, radii, seed=13, sweeps=100)
