@@ -12,7 +12,7 @@ from trajcage.analysis.contacts import (
     measure_contacts,
 )
 from trajcage.errors import FrameError, UsageError
-from trajcage.kernel.halfspace import held
+from trajcage.kernel.halfspace import loose
 from trajcage.model import Box, Frame
 
 
@@ -25,6 +25,15 @@ def as_frame(positions, lengths, radii=0.5, **kinds):
 def unit(vectors):
     vectors = np.asarray(vectors, dtype=np.float64)
     return vectors / np.linalg.norm(vectors, axis=1, keepdims=True)
+
+
+def held(directions):
+    """Whether a sphere with fixed neighbors in these directions is held."""
+    m = len(directions)
+    offsets = np.array([0] + [m] * (m + 1))
+    fixed = np.arange(m + 1) > 0
+    gaps = np.zeros(m)
+    return not loose(offsets, np.arange(1, m + 1), directions, gaps, 1.0, fixed)[0]
 
 
 def fits_a_half_space(directions):
