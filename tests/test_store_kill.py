@@ -2,8 +2,6 @@
 
 import os
 import random
-import signal
-import struct
 import subprocess
 import sys
 import time
@@ -14,9 +12,8 @@ import numpy as np
 import pytest
 import store_scenario as scenario
 
-from trajcage.errors import ResultFileError
 from trajcage.store import open_result, salvage
-from trajcage.store.superblock import lookup3, read_superblock, repair_superblock
+from trajcage.store.superblock import read_superblock
 
 HERE = Path(__file__).parent
 

@@ -7,16 +7,19 @@ reader open other files, load code or allocate without limit.
 
 import io
 import os
+import time
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
 import h5py
 
 from trajcage.errors import ResultFileError
-from trajcage.store.commit import FORMAT_VERSION, Commit, latest_commit
+from trajcage.store.commit import FORMAT_VERSION, Commit, latest_commit, read_text
+from trajcage.store.extents import valid_rows
 from trajcage.store.guard import guard
 from trajcage.store.lock import is_being_written
-from trajcage.store.superblock import Superblock, read_superblock
+from trajcage.store.superblock import Superblock, is_truncated, read_superblock
 
 __all__ = [
     "open_for_reading",
@@ -24,12 +27,12 @@ __all__ = [
     "open_mended",
     "read_checked",
     "read_commit",
-    "read_text",
 ]
 
 _FILTERS = {h5py.h5z.FILTER_DEFLATE, h5py.h5z.FILTER_SHUFFLE}
 _MAX_DEPTH = 16
 _MAX_OBJECTS = 10_000
+_PATIENCE = 1.0  # seconds
 
 
 class _Mended(io.FileIO):
@@ -79,25 +82,33 @@ def open_for_reading(path: Path, *, alone: bool = False) -> Any:
     ResultFileError
         If the file is missing, truncated, damaged or no HDF5 file.
     """
-    superblock = read_superblock(path)
-    size = path.stat().st_size
-    if size < superblock.end_of_file + superblock.base:
-        raise ResultFileError(
-            f"{path} is truncated: expected {superblock.end_of_file} bytes, found "
-            f"{size}; trajcage.store.salvage copies the frames that are left"
-        )
-    with guard(path, "opening"):
-        if not superblock.open_for_writing:
-            return h5py.File(path, "r")
-        if not alone and is_being_written(path):
-            return h5py.File(path, "r", swmr=True)
-    return open_mended(path, superblock.closed(size))
+    deadline = time.monotonic() + _PATIENCE
+    while True:
+        superblock = read_superblock(path)
+        live = superblock.open_for_writing and not alone and is_being_written(path)
+        if not live and not superblock.is_closed(path.stat().st_size):
+            return open_mended(path, superblock)
+        with guard(path, "opening"):
+            try:
+                return h5py.File(path, "r", swmr=live)
+            except OSError:
+                # A writer that comes or goes just now; else the file is at fault.
+                if time.monotonic() > deadline or (
+                    read_superblock(path) == superblock and not is_being_written(path)
+                ):
+                    raise
+        time.sleep(0.01)
 
 
 def open_mended(path: Path, superblock: Superblock) -> Any:
-    """Open a file for reading as if it had this superblock."""
+    """Open a file that no process is writing as if it were closed and whole.
+
+    What lies beyond the end of the file is an error where it is read.
+    """
+    size = path.stat().st_size
+    closed = replace(superblock.closed(0), end_of_file=size - superblock.base)
     with guard(path, "opening"):
-        return _MendedFile(_Mended(path, superblock))
+        return _MendedFile(_Mended(path, closed))
 
 
 def open_for_writing(path: Path) -> Any:
@@ -110,7 +121,16 @@ def open_for_writing(path: Path) -> Any:
     access.set_libver_bounds(h5py.h5f.LIBVER_V110, h5py.h5f.LIBVER_V110)
     access.set_sieve_buf_size(0)  # the commit record goes to disk as it is written
     flags = h5py.h5f.ACC_RDWR | h5py.h5f.ACC_SWMR_WRITE
-    return h5py.File(h5py.h5f.open(os.fsencode(path), flags, access))
+    deadline = time.monotonic() + _PATIENCE
+    while True:
+        try:
+            return h5py.File(h5py.h5f.open(os.fsencode(path), flags, access))
+        except BlockingIOError as error:  # some program is just looking at it
+            if time.monotonic() > deadline:
+                raise ResultFileError(
+                    f"{path} is open in another program; close it there first"
+                ) from error
+            time.sleep(0.02)
 
 
 def _check_contents(file: Any, path: Path) -> None:
@@ -172,12 +192,6 @@ def _check_dataset(dataset: Any, where: str) -> None:
         raise ResultFileError(f"{where} uses unknown filters {filters - _FILTERS}")
 
 
-def read_text(attributes: Any, name: str) -> str:
-    """Return a text attribute, empty if it is missing."""
-    value = attributes.get(name, b"")
-    return value.decode() if isinstance(value, bytes) else str(value)
-
-
 def read_commit(file: Any, path: Path) -> Commit:
     """Return the valid commit record of an open file.
 
@@ -201,8 +215,15 @@ def read_commit(file: Any, path: Path) -> Commit:
     return latest_commit(item[()], columns)
 
 
-def read_checked(file: Any, path: Path) -> Commit:
+def read_checked(file: Any, path: Path, *, whole: bool = True) -> Commit:
     """Check the whole structure of an open file; return its commit record.
+
+    Parameters
+    ----------
+    file, path
+        The open file and its name.
+    whole : bool
+        Whether a truncated file is refused.
 
     Raises
     ------
@@ -219,4 +240,18 @@ def read_checked(file: Any, path: Path) -> Commit:
             f"{path} has format version {version}, this trajcage reads version "
             f"{FORMAT_VERSION}"
         )
+    if whole and is_truncated(path):
+        _probe(file, path, commit)
     return commit
+
+
+def _probe(file: Any, path: Path, commit: Commit) -> None:
+    """Tell a truncated file from one whose last, uncommitted rows failed."""
+    for name, rows in valid_rows(file, commit).items():
+        try:
+            if rows:
+                file[name][rows - 1]
+        except (OSError, RuntimeError, ValueError) as error:
+            raise ResultFileError(
+                f"{path}: /{name} ends before its {rows} committed rows"
+            ) from error

@@ -8,13 +8,14 @@ generation counts; a row torn by a crash is seen and the earlier one is used.
 import zlib
 from collections.abc import Mapping
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from trajcage.errors import ResultFileError
 
-__all__ = ["COLUMNS", "FORMAT_VERSION", "Commit", "latest_commit"]
+__all__ = ["COLUMNS", "FORMAT_VERSION", "Commit", "latest_commit", "read_text"]
 
 FORMAT_VERSION = 1  # of the layout below /trajcage
 
@@ -108,3 +109,9 @@ def latest_commit(table: NDArray[np.int64], columns: tuple[str, ...]) -> Commit:
     return Commit(
         row[0], row[1], bool(row[2]), row[3], row[4], row[5], row[6], rows=rows
     )
+
+
+def read_text(attributes: Any, name: str) -> str:
+    """Return a text attribute, empty if it is missing."""
+    value = attributes.get(name, b"")
+    return value.decode() if isinstance(value, bytes) else str(value)

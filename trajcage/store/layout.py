@@ -25,7 +25,7 @@ from trajcage.store.specs import (
     resolve_unit,
 )
 
-__all__ = ["Layout", "build", "counted_names", "position_field"]
+__all__ = ["Layout", "counted_names", "image", "position_field"]
 
 _CHUNK_VALUES = 131_072  # 1 MiB of float64
 _ATTRIBUTE_LIMIT = 32_768  # bytes; longer parameters stand in the document only
@@ -144,8 +144,17 @@ def _describe_field(dataset: Any, field: Field, layout: Layout) -> None:
         _label(dataset, flag_meanings=" ".join(field.codes))
 
 
-def build(file: Any, layout: Layout, parameters: Mapping[str, object]) -> None:
-    """Fill a new, empty file with groups, datasets and attributes."""
+def image(layout: Layout, parameters: Mapping[str, object]) -> bytes:
+    """Return the bytes of a new file with all groups, datasets and attributes."""
+    with h5py.File(
+        "image", "w", driver="core", backing_store=False, libver=("v110", "v110")
+    ) as file:
+        _build(file, layout, parameters)
+        file.flush()
+        return bytes(file.id.get_file_image())
+
+
+def _build(file: Any, layout: Layout, parameters: Mapping[str, object]) -> None:
     _build_h5md(file, layout)
     _build_frames(file, layout)
     root = file["trajcage"]

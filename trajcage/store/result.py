@@ -9,15 +9,16 @@ from typing import Any, Self
 import numpy as np
 from numpy.typing import NDArray
 
-from trajcage.errors import UsageError
+from trajcage.errors import ResultFileError, UsageError
 from trajcage.model import Box, Field
 from trajcage.store.access import (
     open_for_reading,
     read_checked,
-    read_text,
 )
+from trajcage.store.commit import read_text
 from trajcage.store.guard import guard
 from trajcage.store.series import Series
+from trajcage.store.superblock import is_truncated
 
 __all__ = ["Result", "open_result"]
 
@@ -36,7 +37,15 @@ def open_result(path: str | Path) -> "Result":
         If the file is missing, damaged, hostile or not a result file.
     """
     target = Path(path)
-    return Result(open_for_reading(target), target)
+    try:
+        return Result(open_for_reading(target), target)
+    except ResultFileError as error:
+        if is_truncated(target):
+            raise ResultFileError(
+                f"{error} (the file is truncated; trajcage.store.salvage copies the "
+                "frames that are left, if any)"
+            ) from error
+        raise
 
 
 class Result:

@@ -10,8 +10,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from trajcage.errors import ResultFileError
-from trajcage.store.access import open_mended, read_checked, read_text
-from trajcage.store.commit import Commit
+from trajcage.store.access import open_mended, read_checked
+from trajcage.store.commit import Commit, read_text
+from trajcage.store.extents import datasets, is_per_frame, valid_rows
 from trajcage.store.guard import guard
 from trajcage.store.lock import WriterLock, is_being_written
 from trajcage.store.superblock import read_superblock
@@ -48,18 +49,15 @@ def salvage(path: str | Path, target: str | Path) -> int:
     superblock = read_superblock(source)
     if superblock.open_for_writing and is_being_written(source):
         raise ResultFileError(f"{source} is being written; salvage is for dead files")
-    # Without the true size HDF5 would refuse a truncated file as a whole.
-    size = source.stat().st_size
-    mended = replace(superblock.closed(size), end_of_file=size - superblock.base)
     lock = WriterLock(copy)
     part = copy.with_name(f".{copy.name}.part")
     try:
         if copy.exists():
             raise ResultFileError(f"{copy} exists; choose another name for the copy")
-        with guard(source, "salvaging"), open_mended(source, mended) as old:
-            commit = _reachable(old, read_checked(old, source))
+        with guard(source, "salvaging"), open_mended(source, superblock) as old:
+            commit = _reachable(old, read_checked(old, source, whole=False))
             with h5py.File(part, "w", libver=("v110", "v110")) as new:
-                _copy_group(old, new, _valid_rows(old, commit), {})
+                _copy_group(old, new, valid_rows(old, commit), {})
                 _write_commit(new, commit)
             part.replace(copy)
         return commit.frames_complete
@@ -72,8 +70,8 @@ def _reachable(file: Any, commit: Commit) -> Commit:
     """Return the commit record of what can be read."""
     root = file["trajcage"]
     frames = commit.frames_complete
-    for name, dataset in _datasets(file).items():
-        if _is_per_frame(name):
+    for name, dataset in datasets(file).items():
+        if is_per_frame(name):
             frames = min(frames, _readable_rows(dataset, frames))
     counts = _table_rows(root, frames)
     readable = {name: _readable_table(root, name, commit.rows[name]) for name in counts}
@@ -105,26 +103,6 @@ def _reachable(file: Any, commit: Commit) -> Commit:
         arrays_frames=-1,
         summary_bytes=0,
         rows=rows | dict.fromkeys(arrays, 0),
-    )
-
-
-def _datasets(file: Any) -> dict[str, Any]:
-    """Every dataset once, by its first path."""
-    found: dict[str, Any] = {}
-
-    def visit(name: str, item: Any) -> None:
-        if isinstance(item, h5py.Dataset):
-            found[name] = item
-
-    file.visititems(visit)
-    return found
-
-
-def _is_per_frame(name: str) -> bool:
-    parts = name.split("/")
-    return parts[:2] == ["trajcage", "frames"] or (
-        parts[0] in {"particles", "observables"}
-        and parts[-1] in {"value", "step", "time"}
     )
 
 
@@ -166,28 +144,6 @@ def _blocks(dataset: Any, rows: int) -> Iterator[tuple[int, int]]:
     step = dataset.chunks[0]
     for start in range(0, rows, step):
         yield start, min(start + step, rows)
-
-
-def _valid_rows(file: Any, commit: Commit) -> dict[str, int]:
-    """Rows to copy of every dataset that grows."""
-    valid: dict[str, int] = {
-        "trajcage/summary": commit.summary_bytes,
-        "trajcage/state/a": 0,
-        "trajcage/state/b": 0,
-    }
-    valid[f"trajcage/state/{'ab'[commit.state_slot]}"] = max(commit.state_bytes, 0)
-    for name, dataset in _datasets(file).items():
-        kind = read_text(dataset.attrs, "kind")
-        table, _, column = name.removeprefix("trajcage/").rpartition("/")
-        if _is_per_frame(name):
-            valid[name] = commit.frames_complete
-        elif kind == "column":
-            valid[name] = commit.rows[table]
-        elif kind == "offsets":
-            valid[name] = commit.rows[table] + 1
-        elif kind in {"ragged", "array"}:
-            valid[name] = commit.rows[f"{table}/{column}" if table else column]
-    return valid
 
 
 def _copy_group(

@@ -7,7 +7,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from trajcage.errors import ResultFileError
-from trajcage.store.access import read_text
+from trajcage.store.commit import read_text
 from trajcage.store.guard import guard
 
 __all__ = ["Series"]

@@ -15,7 +15,14 @@ from pathlib import Path
 
 from trajcage.errors import ResultFileError
 
-__all__ = ["SIZE", "Superblock", "lookup3", "read_superblock", "repair_superblock"]
+__all__ = [
+    "SIZE",
+    "Superblock",
+    "is_truncated",
+    "lookup3",
+    "read_superblock",
+    "repair_superblock",
+]
 
 SIZE = 48  # with addresses of 8 bytes, as HDF5 writes on all current platforms
 _SIGNATURE = b"\x89HDF\r\n\x1a\n"
@@ -39,6 +46,12 @@ class Superblock:
     def open_for_writing(self) -> bool:
         """Whether a writer has the file open, or died before closing it."""
         return bool(self.flags & _OPEN_FOR_WRITING)
+
+    def is_closed(self, file_size: int) -> bool:
+        """Whether HDF5 opens the file: no flags and nothing missing at its end."""
+        return not self.flags & _OPEN_FOR_WRITING and (
+            file_size >= self.base + self.end_of_file
+        )
 
     def pack(self) -> bytes:
         """Return the 48 bytes, checksum included."""
@@ -98,6 +111,15 @@ def read_superblock(path: Path) -> Superblock:
     return Superblock(version, flags, base, extension, end, root)
 
 
+def is_truncated(path: Path) -> bool:
+    """Whether this is an HDF5 file that is shorter than its superblock says."""
+    try:
+        superblock = read_superblock(path)
+    except ResultFileError:
+        return False
+    return path.stat().st_size < superblock.base + superblock.end_of_file
+
+
 def repair_superblock(path: Path) -> bool:
     """Mark a killed file as closed; True if there was something to mend.
 
@@ -109,12 +131,15 @@ def repair_superblock(path: Path) -> bool:
         If the superblock is damaged or cannot be written.
     """
     old = read_superblock(path)
-    if not old.open_for_writing:
-        return False
     try:
+        size = path.stat().st_size
+        if old.is_closed(size):
+            return False
+        new = old.closed(size)
         handle = os.open(path, os.O_RDWR)
         try:
-            new = old.closed(os.fstat(handle).st_size)
+            # Space that was given out but never written, as after a full disk.
+            os.truncate(handle, new.base + new.end_of_file)
             os.pwrite(handle, new.pack(), 0)
             os.fsync(handle)
         finally:

@@ -3,12 +3,12 @@
 import json
 import os
 from collections.abc import Mapping, Sequence
+from contextlib import suppress
 from dataclasses import replace
 from pathlib import Path
 from types import TracebackType
 from typing import Any, Self
 
-import h5py
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
@@ -17,7 +17,7 @@ from trajcage.model import Field, FrameRecord
 from trajcage.store.access import open_for_writing, read_commit
 from trajcage.store.framing import pack_arrays, unpack_arrays
 from trajcage.store.guard import guard
-from trajcage.store.layout import Layout, build, position_field
+from trajcage.store.layout import Layout, image, position_field
 from trajcage.store.lock import WriterLock
 from trajcage.store.resuming import check_resumable
 from trajcage.store.rows import ParticleWriter, RowWriter
@@ -191,8 +191,7 @@ class ResultWriter:
         try:
             _check_free(target, overwrite=overwrite)
             with guard(target, "creating"):
-                with h5py.File(part, "w", libver=("v110", "v110")) as file:
-                    build(file, layout, parameters)
+                part.write_bytes(image(layout, parameters))
                 part.replace(target)
             return cls(
                 target,
@@ -430,7 +429,10 @@ class ResultWriter:
 
     def _shut(self) -> None:
         try:
-            if self._file:
+            if self._failed:  # the error is on its way; a second would hide it
+                with suppress(OSError, RuntimeError):
+                    self._file.close()
+            elif self._file:
                 with guard(self.path, "closing"):
                     self._file.close()
                     handle = os.open(self.path, os.O_RDONLY)
