@@ -7,12 +7,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from trajcage.kernel.codes import CLOSED, INVALID, NEED_CAPACITY, NEED_HALO
-from trajcage.kernel.flood3d import flood as flood3d
+from trajcage.kernel.flood3d import flood
 from trajcage.kernel.grid import Grid, build_grid
 from trajcage.kernel.jit import compiled, helper
 from trajcage.kernel.scratch import X, Y, Z, make_scratch
-from trajcage.kernel.wall3d import integrate_wall as integrate3d
-from trajcage.kernel.wall3d import opening_ratio as ratio3d
+from trajcage.kernel.wall3d import AREA, integrate_wall, opening_ratio, window
 
 __all__ = ["Cages", "measure_cages"]
 
@@ -80,39 +79,31 @@ def _make_rows(size: int) -> _Rows:
 
 
 @helper
-def _keep_rows(grid, s, i, n_cells, n_corners, surface, rows):  # type: ignore[no-untyped-def]
+def _keep_rows(grid, s, i, bounding, n_corners, rows):  # type: ignore[no-untyped-def]
     """Copy patches and windows of one cage; False if the rows are full."""
     if (
-        rows.count[0] + 4 * n_cells > len(rows.patch_owner)
+        rows.count[0] + bounding > len(rows.patch_owner)
         or rows.count[1] + n_corners > len(rows.window_owner)
     ):
         return False
-    counted = -s.clock[0] - 0.25
-    for t in range(n_cells):
-        for f in range(4):
-            a = s.cell[t, f]
-            if s.patch[a, 0] == counted:
-                s.patch[a, 0] = -s.clock[0] - 0.5
-                row = rows.count[0]
-                rows.patch_owner[row] = i
-                rows.patch_neighbor[row] = grid.owner[s.found[a]]
-                rows.patch_numbers[row, 0] = s.patch[a, 11]
-                rows.patch_numbers[row, 1] = s.near[X, a]
-                rows.patch_numbers[row, 2] = s.near[Y, a]
-                rows.patch_numbers[row, 3] = s.near[Z, a]
-                rows.count[0] += 1
+    for m in range(bounding):
+        a = s.seen[m]
+        row = rows.count[0]
+        rows.patch_owner[row] = i
+        rows.patch_neighbor[row] = grid.owner[s.found[a]]
+        rows.patch_numbers[row, 0] = s.patch[a, AREA]
+        rows.patch_numbers[row, 1] = s.near[X, a]
+        rows.patch_numbers[row, 2] = s.near[Y, a]
+        rows.patch_numbers[row, 3] = s.near[Z, a]
+        rows.count[0] += 1
     for q in range(n_corners):
-        t = s.mark[q, 0]
-        f = s.mark[q, 1]
-        a = s.cell[t, 1 if f == 0 else 0]
-        b = s.cell[t, 2 if f <= 1 else 1]
-        c = s.cell[t, 3 if f <= 2 else 2]
+        a, b, c = window(s, q)
         row = rows.count[1]
         rows.window_owner[row] = i
         rows.window_neighbors[row, 0] = grid.owner[s.found[a]]
         rows.window_neighbors[row, 1] = grid.owner[s.found[b]]
         rows.window_neighbors[row, 2] = grid.owner[s.found[c]]
-        rows.window_numbers[row, 0] = ratio3d(s, a, b, c)
+        rows.window_numbers[row, 0] = opening_ratio(s, a, b, c)
         for axis in range(3):
             rows.window_numbers[row, 1 + axis] = s.corner[q, axis]
         rows.count[1] += 1
@@ -130,11 +121,11 @@ def _measure_range(grid, s, todo, begin, radii, settings, shifts, keep, rows, nu
         limits = (reach, largest, tolerance, grid.halo)
         code = INVALID
         for attempt in range(len(shifts)):
-            code, n, n_cells, n_corners = flood3d(
+            code, n, n_cells, n_corners = flood(
                 grid, s, i, xi, yi, zi, radii[i], first, limits, shifts[attempt]
             )
             if code == CLOSED:
-                code, volume, surface, wall_sum, bounding, weakest, where = integrate3d(
+                code, volume, surface, wall_sum, bounding, weakest, where = integrate_wall(
                     s, n, n_cells, n_corners
                 )
             if code != INVALID:
@@ -145,7 +136,7 @@ def _measure_range(grid, s, todo, begin, radii, settings, shifts, keep, rows, nu
             status[i] = 255
             continue
         if code == CLOSED:
-            if keep and not _keep_rows(grid, s, i, n_cells, n_corners, surface, rows):
+            if keep and not _keep_rows(grid, s, i, bounding, n_corners, rows):
                 return at
             numbers[i, 0] = volume
             numbers[i, 1] = surface
@@ -153,11 +144,10 @@ def _measure_range(grid, s, todo, begin, radii, settings, shifts, keep, rows, nu
             numbers[i, 3] = weakest if where >= 0 else np.nan
             members[i, 0] = bounding
             if where >= 0:
-                t = s.mark[where, 0]
-                f = s.mark[where, 1]
-                members[i, 1] = grid.owner[s.found[s.cell[t, 1 if f == 0 else 0]]]
-                members[i, 2] = grid.owner[s.found[s.cell[t, 2 if f <= 1 else 1]]]
-                members[i, 3] = grid.owner[s.found[s.cell[t, 3 if f <= 2 else 2]]]
+                a, b, c = window(s, where)
+                members[i, 1] = grid.owner[s.found[a]]
+                members[i, 2] = grid.owner[s.found[b]]
+                members[i, 3] = grid.owner[s.found[c]]
         status[i] = code
     return len(todo)
 

@@ -19,7 +19,13 @@ from trajcage.kernel.grid import CORNER, INVERSE_HEIGHT, gather
 from trajcage.kernel.jit import helper
 from trajcage.kernel.scratch import GAP, POWER, REACH, SHIFTED, TIE, X, Y, Z
 
-__all__ = ["collect", "flood"]
+__all__ = ["collect", "flood", "outside", "pad"]
+
+
+@helper
+def pad(n):  # type: ignore[no-untyped-def]
+    """Round up to whole vector registers: loops without a remainder."""
+    return (n + 15) & ~15
 
 
 @helper
@@ -53,6 +59,15 @@ def collect(grid, s, i, xi, yi, zi, ri, n, inner, outer, tolerance, shift):  # t
         s.near[REACH, k] = reach
         s.near[POWER, k] = power
         s.near[SHIFTED, k] = power * (1.0 + shift * s.near[TIE, k])
+    if pad(total) > len(s.found):
+        return NEED_CAPACITY, n
+    for k in range(total, pad(total)):
+        # never the next along any ray: see Scratch.near
+        for row in range(3):
+            s.near[row, k] = 0.0
+        s.near[REACH, k] = 0.0
+        s.near[POWER, k] = np.inf
+        s.near[SHIFTED, k] = np.inf
     return code, total
 
 
@@ -105,11 +120,10 @@ def _next_along(s, n, px, py, pz, nx, ny, nz, a, b, c):  # type: ignore[no-untyp
         dy = s.near[Y, k] - y0
         dz = s.near[Z, k] - z0
         h = 2.0 * (nx * dx + ny * dy + nz * dz)
-        if h > 0.0 and k != a and k != b and k != c:
-            t = (s.near[SHIFTED, k] - g0 - 2.0 * (px * dx + py * dy + pz * dz)) / h
-            if t < best:
-                best = t
-                who = k
+        rise = s.near[SHIFTED, k] - g0 - 2.0 * (px * dx + py * dy + pz * dz)
+        if h > 0.0 and rise < best * h and k != a and k != b and k != c:
+            best = rise / h
+            who = k
     return who, best
 
 
@@ -261,7 +275,7 @@ def _new_cell(s, t, slot, a, b, c, d, px, py, pz, power):  # type: ignore[no-unt
     s.cell[t, 2] = c
     s.cell[t, 3] = d
     for f in range(4):
-        s.cell[t, 4 + f] = -1
+        s.across[t, f] = -1
     s.vertex[t, 0] = px
     s.vertex[t, 1] = py
     s.vertex[t, 2] = pz
@@ -277,7 +291,7 @@ def _gaps(s, begin, n, t):  # type: ignore[no-untyped-def]
     px, py, pz = s.vertex[t, 0], s.vertex[t, 1], s.vertex[t, 2]
     near = s.near
     base = near[SHIFTED, a] - 2.0 * (px * near[X, a] + py * near[Y, a] + pz * near[Z, a])
-    for k in range(begin, n):
+    for k in range(begin, pad(n)):
         near[GAP, k] = (
             near[SHIFTED, k]
             - 2.0 * (px * near[X, k] + py * near[Y, k] + pz * near[Z, k])
@@ -360,7 +374,7 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):  # type: ignore[no-
         t = s.stack[height]
         open_faces = 0
         for f in range(4):
-            if s.cell[t, 4 + f] == -1:
+            if s.across[t, f] == -1:
                 open_faces += 1
         if open_faces == 0:
             continue
@@ -380,7 +394,7 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):  # type: ignore[no-
             vx, vy, vz = -vx, -vy, -vz
             wx, wy, wz = -wx, -wy, -wz
         for f in range(4):
-            if s.cell[t, 4 + f] != -1:
+            if s.across[t, f] != -1:
                 continue
             # outward normal of the face opposite to slot f, and a point on it
             bx, by, bz = x0, y0, z0
@@ -409,7 +423,7 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):  # type: ignore[no-
                 if crossing < np.inf:
                     twice = 2.0 * crossing
                     before = 0
-                    for k in range(n):
+                    for k in range(pad(n)):
                         h = nx * near[X, k] + ny * near[Y, k] + nz * near[Z, k] - level
                         before += near[GAP, k] < twice * h
                     blocked = before == 0
@@ -429,10 +443,11 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):  # type: ignore[no-
                         if h > 0.0 and near[GAP, k] < step * h:
                             step = near[GAP, k] / h
                             who = k
-                    edge = _ray_to_sphere(px, py, pz, nx, ny, nz, reach)
-                    if who < 0 or step > edge:
+                    qx, qy, qz = px + step * nx, py + step * ny, pz + step * nz
+                    if not qx * qx + qy * qy + qz * qz <= reach * reach:
                         # the cage leaves the reach along this edge
                         who = -1
+                        edge = _ray_to_sphere(px, py, pz, nx, ny, nz, reach)
                         qx, qy, qz = px + edge * nx, py + edge * ny, pz + edge * nz
                         far = reach
                         ball = largest
@@ -444,7 +459,7 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):  # type: ignore[no-
                             m1, m2 = v2, v3
                         elif f == 2:
                             m2 = v3
-                        a, b, c, d = _sorted4(m0, m1, m2, np.int32(who))
+                        a, b, c, d = _sorted4(m0, m1, m2, np.uint32(who))
                         other, slot = _find(s, a, b, c, d)
                         if other >= 0:
                             break
@@ -474,7 +489,7 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):  # type: ignore[no-
                 s.corner[n_corners, 2] = qz
                 s.mark[n_corners, 0] = t
                 s.mark[n_corners, 1] = f
-                s.cell[t, 4 + f] = -2 - n_corners
+                s.across[t, f] = -2 - n_corners
                 n_corners += 1
                 continue
             if who < 0:
@@ -495,8 +510,8 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):  # type: ignore[no-
             back = 0
             while back < 4 and s.cell[other, back] != who:
                 back += 1
-            if back == 4 or s.cell[other, 4 + back] != -1:
+            if back == 4 or s.across[other, back] != -1:
                 return INVALID, n, n_cells, n_corners
-            s.cell[t, 4 + f] = other
-            s.cell[other, 4 + back] = t
+            s.across[t, f] = other
+            s.across[other, back] = t
     return CLOSED, n, n_cells, n_corners

@@ -13,8 +13,6 @@ __all__ = ["compiled", "helper"]
 
 _log = logging.getLogger(__name__)
 
-_OPTIONS: dict[str, Any] = {"nogil": True, "error_model": "numpy", "fastmath": False}
-
 P = ParamSpec("P")
 R = TypeVar("R")
 
@@ -59,25 +57,31 @@ def compiled(function: Callable[P, R]) -> Callable[P, R]:
     No GIL; the error model of numpy lets loops with divisions become vector
     code; ``fastmath`` stays off, since exact volumes rely on NaN and rounding.
     """
-    cache = _CACHE_DIRECTORY is not None
-    config: Any = numba.config
-    before = config.CACHE_DIR
-    if cache:
-        config.CACHE_DIR = str(_CACHE_DIRECTORY)
-    try:
-        decorate = numba.njit(cache=cache, **_OPTIONS)
-        result: Callable[P, R] = decorate(function)
-    finally:
-        config.CACHE_DIR = before
-    return result
+    return _compile(function, cache=_CACHE_DIRECTORY is not None)
 
 
 def helper(function: Callable[P, R]) -> Callable[P, R]:
     """Compile a function that only kernels call.
 
-    It has no entry from Python, which halves the time it takes to compile,
-    and its code is cached as part of the kernels that use it.
+    It has no entry from Python, which halves the time it takes to compile, it
+    is cached as part of the kernels that use it, and it counts no references
+    to its arrays (so it cannot allocate any): the atomic counters would cost
+    more than the geometry.
     """
-    decorate = numba.njit(no_cpython_wrapper=True, no_cfunc_wrapper=True, **_OPTIONS)
-    result: Callable[P, R] = decorate(function)
+    return _compile(
+        function, no_cpython_wrapper=True, no_cfunc_wrapper=True, _nrt=False
+    )
+
+
+def _compile(function: Callable[P, R], **options: bool) -> Callable[P, R]:
+    config: Any = numba.config
+    before = config.CACHE_DIR
+    config.CACHE_DIR = str(_CACHE_DIRECTORY or before)
+    try:
+        decorate = numba.njit(
+            nogil=True, error_model="numpy", fastmath=False, **options
+        )
+        result: Callable[P, R] = decorate(function)
+    finally:
+        config.CACHE_DIR = before
     return result

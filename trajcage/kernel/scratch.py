@@ -31,16 +31,18 @@ class Scratch(NamedTuple):
 
     found: NDArray[np.int64]  #: (candidates,) grid slot
     near: NDArray[np.float64]  #: (8, candidates) rows as named above
-    cell: NDArray[np.int32]
-    """(cells, 8): candidates of the simplex, ascending; then what lies across
-    the face opposite to each: a cell, -1 unseen, -2 - c corner c."""
+    cell: NDArray[np.uint32]  #: (cells, 4) candidates of the simplex, ascending
+    across: NDArray[np.int32]
+    """(cells, 4): what lies across the face opposite to each candidate of the
+    simplex: a cell, -1 unseen, -2 - c corner c."""
     vertex: NDArray[np.float64]  #: (cells, 4) power vertex and its power
     stack: NDArray[np.int32]
     slots: NDArray[np.int64]  #: (slots, 2) hash table of cells: clock, cell
     corner: NDArray[np.float64]  #: (corners, 3)
     mark: NDArray[np.int32]  #: (corners, 6) cell, face, arcs walked
     patch: NDArray[np.float64]  #: (candidates, 12) sums over the wall on a sphere
-    clock: NDArray[np.int64]  #: (1,) number of the current flood
+    seen: NDArray[np.uint32]  #: candidates with a piece of the wall
+    clock: NDArray[np.int64]  #: (2,) number of the current flood; candidates seen
 
 
 def make_scratch(n_candidates: int, n_cells: int) -> Scratch:
@@ -50,12 +52,14 @@ def make_scratch(n_candidates: int, n_cells: int) -> Scratch:
     return Scratch(
         np.empty(n_candidates, np.int64),
         near,
-        np.empty((n_cells, 8), np.int32),
+        np.empty((n_cells, 4), np.uint32),
+        np.empty((n_cells, 4), np.int32),
         np.empty((n_cells, 4)),
         np.empty(4 * n_cells, np.int32),
         np.zeros((1 << int(np.ceil(np.log2(4 * n_cells))), 2), np.int64),
         np.empty((4 * n_cells, 3)),
         np.empty((4 * n_cells, 6), np.int32),
         np.zeros((n_candidates, 12)),
-        np.zeros(1, np.int64),
+        np.empty(n_candidates, np.uint32),
+        np.zeros(2, np.int64),
     )

@@ -17,12 +17,23 @@ from trajcage.kernel.codes import CLOSED, INVALID
 from trajcage.kernel.jit import helper
 from trajcage.kernel.scratch import POWER, REACH, X, Y, Z
 
-__all__ = ["integrate_wall", "opening_ratio", "polish_corners"]
+__all__ = ["AREA", "integrate_wall", "opening_ratio", "window"]
 
 _FULL = 4.0 * np.pi
 
 # columns of Scratch.patch
-_STAMP, _X0, _Y0, _Z0, _RE, _IM, _TURN, _AX, _AY, _AZ, _ARCS, _AREA = range(12)
+STAMP, _X0, _Y0, _Z0, _RE, _IM, _TURN, _AX, _AY, _AZ, _ARCS, AREA = range(12)
+
+
+@helper
+def window(s, q):  # type: ignore[no-untyped-def]
+    """Return the three candidates whose spheres meet in corner q."""
+    t = s.mark[q, 0]
+    f = s.mark[q, 1]
+    a = s.cell[t, 1 if f == 0 else 0]
+    b = s.cell[t, 2 if f <= 1 else 1]
+    c = s.cell[t, 3 if f <= 2 else 2]
+    return a, b, c
 
 
 @helper
@@ -34,11 +45,7 @@ def polish_corners(s, n_corners):  # type: ignore[no-untyped-def]
     throat it closes has no width there).
     """
     for q in range(n_corners):
-        t = s.mark[q, 0]
-        f = s.mark[q, 1]
-        a = s.cell[t, 1 if f == 0 else 0]
-        b = s.cell[t, 2 if f <= 1 else 1]
-        c = s.cell[t, 3 if f <= 2 else 2]
+        a, b, c = window(s, q)
         px, py, pz = s.corner[q, 0], s.corner[q, 1], s.corner[q, 2]
         pp = px * px + py * py + pz * pz
         ax, ay, az = px - s.near[X, a], py - s.near[Y, a], pz - s.near[Z, a]
@@ -92,8 +99,10 @@ def opening_ratio(s, a, b, c):  # type: ignore[no-untyped-def]
 @helper
 def _touch(s, a, px, py, pz):  # type: ignore[no-untyped-def]
     """Start the sums of sphere a, with p as reference point, at first use."""
-    if s.patch[a, _STAMP] != s.clock[0]:
-        s.patch[a, _STAMP] = s.clock[0]
+    if s.patch[a, STAMP] != s.clock[0]:
+        s.patch[a, STAMP] = s.clock[0]
+        s.seen[s.clock[1]] = a
+        s.clock[1] += 1
         s.patch[a, _X0] = px - s.near[X, a]
         s.patch[a, _Y0] = py - s.near[Y, a]
         s.patch[a, _Z0] = pz - s.near[Z, a]
@@ -107,10 +116,12 @@ def _touch(s, a, px, py, pz):  # type: ignore[no-untyped-def]
 
 
 @helper
-def _add_arc(s, a, ex, ey, ez, height, rho2, angle, px, py, pz, dx, dy, dz):  # type: ignore[no-untyped-def]
+def _add_arc(s, a, ex, ey, ez, height, rho2, angle, sine, cosine, px, py, pz, dx, dy, dz):  # type: ignore[no-untyped-def]
     """Add the arc p -> p + d, clockwise about the outward axis e of sphere a.
 
-    ``height`` is the distance of the arc's plane from the center along e.
+    ``height`` is the distance of the arc's plane from the center along e;
+    sine and cosine are those of the arc's angle, times the squared radius
+    ``rho2`` of its circle.
     """
     r = s.near[REACH, a]
     x0, y0, z0 = s.patch[a, _X0], s.patch[a, _Y0], s.patch[a, _Z0]
@@ -119,42 +130,44 @@ def _add_arc(s, a, ex, ey, ez, height, rho2, angle, px, py, pz, dx, dy, dz):  # 
     # spherical triangle (reference, p, p + d): E = 2 arg(re + i im)
     u1x, u1y, u1z = r1x - x0, r1y - y0, r1z - z0
     tx, ty, tz = u1y * dz - u1z * dy, u1z * dx - u1x * dz, u1x * dy - u1y * dx
-    unit = 0.25 / (r * r * r)
-    im = (x0 * tx + y0 * ty + z0 * tz) * unit
-    re = unit * r * (
+    im = x0 * tx + y0 * ty + z0 * tz
+    re = r * (
         r * r
-        + x0 * (r1x + r2x) + y0 * (r1y + r2y) + z0 * (r1z + r2z)
-        + r1x * r2x + r1y * r2y + r1z * r2z
+        + x0 * (r1x + r2x)
+        + y0 * (r1y + r2y)
+        + z0 * (r1z + r2z)
+        + r1x * r2x
+        + r1y * r2y
+        + r1z * r2z
     )
     # sliver between geodesic and arc
-    c = height / r
     if angle < 0.05:
+        c = height / r
         s2 = 1.0 - c * c
         a2 = angle * angle
         s.patch[a, _TURN] -= (
-            0.5 * c * s2 * angle * a2
+            (0.5 * c * s2 * angle * a2)
             * (
                 1.0 / 6.0
                 - a2 / 120.0 * (1.0 - 3.0 * s2)
                 + a2 * a2 / 5040.0 * (1.0 - 15.0 * s2 + 22.5 * s2 * s2)
             )
         )
-        segment = angle * a2 * (1.0 / 6.0 - a2 / 120.0 + a2 * a2 / 5040.0)
+        segment = rho2 * angle * a2 * (1.0 / 6.0 - a2 / 120.0 + a2 * a2 / 5040.0)
     else:
-        t2 = (r - height) / (r + height)
-        sine = np.sin(angle)
-        k_re = 1.0 + t2 * np.cos(angle)
-        k_im = t2 * sine
-        norm = 1.0 / (abs(k_re) + abs(k_im))
-        k_re *= norm
-        k_im *= norm
+        k_re = (r + height) * rho2 + (r - height) * cosine
+        k_im = (r - height) * sine
         re, im = re * k_re - im * k_im, re * k_im + im * k_re
-        s.patch[a, _TURN] -= angle * (1.0 - c)
-        segment = angle - sine
+        s.patch[a, _TURN] -= angle * (1.0 - height / r)
+        segment = rho2 * angle - sine
+    # only the direction of the product matters; keep its size in range
+    norm = 1.0 / (abs(re) + abs(im))
+    re *= norm
+    im *= norm
     o_re, o_im = s.patch[a, _RE], s.patch[a, _IM]
     s.patch[a, _RE] = o_re * re - o_im * im
     s.patch[a, _IM] = o_re * im + o_im * re
-    segment *= -0.5 * rho2
+    segment *= -0.5
     s.patch[a, _AX] += 0.5 * tx + segment * ex
     s.patch[a, _AY] += 0.5 * ty + segment * ey
     s.patch[a, _AZ] += 0.5 * tz + segment * ez
@@ -180,7 +193,7 @@ def _rotate(s, t, i, j, k, l, n_cells):  # type: ignore[no-untyped-def]
     """
     a, b = s.cell[t, i], s.cell[t, j]
     for _ in range(4 * n_cells):
-        other = s.cell[t, 4 + l]
+        other = s.across[t, l]
         if other < 0:
             return -2 - other, k
         i2 = _slot_of(s, other, a)
@@ -222,7 +235,7 @@ def _turned(s, t, i, j, k, l, n_cells):  # type: ignore[no-untyped-def]
     total = 0.0
     for _ in range(4 * n_cells):
         total += _angle_about(s, a, b, s.cell[t, l], s.cell[t, k])
-        other = s.cell[t, 4 + l]
+        other = s.across[t, l]
         if other < 0:
             break
         i2 = _slot_of(s, other, a)
@@ -269,10 +282,11 @@ def _arcs(s, n_cells, n_corners):  # type: ignore[no-untyped-def]
             if sense < 0.0:
                 p1, p2 = end, q
             length = np.sqrt(ex * ex + ey * ey + ez * ez)
-            ex, ey, ez = ex / length, ey / length, ez / length
+            inverse = 1.0 / length
+            ex, ey, ez = ex * inverse, ey * inverse, ez * inverse
             ra, rb = s.near[REACH, a], s.near[REACH, b]
-            height = 0.5 * (length + (ra - rb) * (ra + rb) / length)
-            rho2 = max((ra - height) * (ra + height), 0.0)
+            height = 0.5 * (length + (ra - rb) * (ra + rb) * inverse)
+            rho2 = max((ra - height) * (ra + height), 1e-300)
             mx, my, mz = ax + height * ex, ay + height * ey, az + height * ez
             x1, y1, z1 = s.corner[p1, 0], s.corner[p1, 1], s.corner[p1, 2]
             x2, y2, z2 = s.corner[p2, 0], s.corner[p2, 1], s.corner[p2, 2]
@@ -284,8 +298,9 @@ def _arcs(s, n_cells, n_corners):  # type: ignore[no-untyped-def]
                 + ey * (qz * dx - qx * dz)
                 + ez * (qx * dy - qy * dx)
             )
-            angle = np.arctan2(sine, rho2 - 0.5 * chord2)
-            if chord2 < 1e-6 * rho2 or rho2 == 0.0:
+            cosine = rho2 - 0.5 * chord2
+            angle = np.arctan2(sine, cosine)
+            if chord2 < 1e-6 * rho2:
                 # next to nothing or next to a full circle: ask the flood
                 expected = (
                     _turned(s, t, i, j, k, l, n_cells)
@@ -306,8 +321,8 @@ def _arcs(s, n_cells, n_corners):  # type: ignore[no-untyped-def]
             _touch(s, a, x1, y1, z1)
             _touch(s, b, x1, y1, z1)
             # counterclockwise about a -> b is clockwise about b -> a
-            _add_arc(s, b, -ex, -ey, -ez, length - height, rho2, angle, x1, y1, z1, dx, dy, dz)
-            _add_arc(s, a, ex, ey, ez, height, rho2, angle, x2, y2, z2, -dx, -dy, -dz)
+            _add_arc(s, b, -ex, -ey, -ez, length - height, rho2, angle, sine, cosine, x1, y1, z1, dx, dy, dz)
+            _add_arc(s, a, ex, ey, ez, height, rho2, angle, sine, cosine, x2, y2, z2, -dx, -dy, -dz)
     return CLOSED
 
 
@@ -321,7 +336,7 @@ def _ring_is_open(s, t, i, j, n_cells):  # type: ignore[no-untyped-def]
     l = 6 - i - j - k
     first = t
     for _ in range(4 * n_cells):
-        other = s.cell[t, 4 + l]
+        other = s.across[t, l]
         if other <= first:
             # round once; or a corner, or a ring already seen from an earlier cell
             return other == first
@@ -334,18 +349,31 @@ def _ring_is_open(s, t, i, j, n_cells):  # type: ignore[no-untyped-def]
 
 
 @helper
+def _covered(s, n, px, py, pz, depth, a, b):  # type: ignore[no-untyped-def]
+    """Tell whether any candidate but a and b has a power below -depth at p."""
+    for k in range(n):
+        dx, dy, dz = s.near[X, k] - px, s.near[Y, k] - py, s.near[Z, k] - pz
+        r = s.near[REACH, k]
+        if dx * dx + dy * dy + dz * dz - r * r < -depth and k != a and k != b:
+            return True
+    return False
+
+
+@helper
 def _circles_and_islands(s, n, n_cells):  # type: ignore[no-untyped-def]
     """Add full circles in which two spheres meet, and spheres without any arc."""
     for t in range(n_cells):
-        for i in range(3):
-            for j in range(i + 1, 4):
-                # the two faces of this cell at the edge must be open
-                k = 0
-                while k == i or k == j:
-                    k += 1
-                l = 6 - i - j - k
-                if s.cell[t, 4 + k] < t or s.cell[t, 4 + l] < t:
+        for k in range(3):
+            # an edge whose cells are all open: both its faces here lead on
+            if s.across[t, k] < t:
+                continue
+            for l in range(k + 1, 4):
+                if s.across[t, l] < t:
                     continue
+                i = 0
+                while i == k or i == l:
+                    i += 1
+                j = 6 - i - k - l
                 a, b = s.cell[t, i], s.cell[t, j]
                 ex, ey, ez = s.near[X, b] - s.near[X, a], s.near[Y, b] - s.near[Y, a], s.near[Z, b] - s.near[Z, a]
                 length = np.sqrt(ex * ex + ey * ey + ez * ez)
@@ -358,16 +386,7 @@ def _circles_and_islands(s, n, n_cells):  # type: ignore[no-untyped-def]
                 mx = s.near[X, a] + height * ex
                 my = s.near[Y, a] + height * ey
                 mz = s.near[Z, a] + height * ez
-                hidden = False
-                for k in range(n):
-                    dx, dy, dz = s.near[X, k] - mx, s.near[Y, k] - my, s.near[Z, k] - mz
-                    if (
-                        dx * dx + dy * dy + dz * dz - s.near[REACH, k] * s.near[REACH, k] < -rho2
-                        and k != a
-                        and k != b
-                    ):
-                        hidden = True
-                if hidden:
+                if _covered(s, n, mx, my, mz, rho2, a, b):
                     continue
                 _touch(s, a, mx, my, mz)
                 _touch(s, b, mx, my, mz)
@@ -383,17 +402,12 @@ def _circles_and_islands(s, n, n_cells):  # type: ignore[no-untyped-def]
     for t in range(n_cells):
         for i in range(4):
             a = s.cell[t, i]
-            if s.patch[a, _STAMP] == s.clock[0]:
+            if s.patch[a, STAMP] == s.clock[0]:
                 continue
-            own = s.near[REACH, a] * s.near[REACH, a]
-            hidden = False
-            for k in range(n):
-                dx, dy, dz = s.near[X, k] - s.near[X, a], s.near[Y, k] - s.near[Y, a], s.near[Z, k] - s.near[Z, a]
-                if dx * dx + dy * dy + dz * dz - s.near[REACH, k] * s.near[REACH, k] < -own and k != a:
-                    hidden = True
-            _touch(s, a, s.near[X, a], s.near[Y, a], s.near[Z, a])
-            if hidden:
-                # nothing of this sphere is seen: mark it as looked at
+            x, y, z, r = s.near[X, a], s.near[Y, a], s.near[Z, a], s.near[REACH, a]
+            _touch(s, a, x, y, z)
+            if _covered(s, n, x, y, z, r * r, a, a):
+                # nothing of this sphere is seen
                 s.patch[a, _ARCS] = -1.0
 
 
@@ -428,8 +442,10 @@ def integrate_wall(s, n, n_cells, n_corners):  # type: ignore[no-untyped-def]
     -------
     code, volume, surface, wall_sum, bounding, weakest, corner
         ``weakest`` is the largest opening ratio over the shut windows and
-        ``corner`` the corner behind it (-1 if the wall has none).
+        ``corner`` the corner behind it (-1 if the wall has none). The first
+        ``bounding`` entries of Scratch.seen are the spheres of the wall.
     """
+    s.clock[1] = 0
     polish_corners(s, n_corners)
     code = _arcs(s, n_cells, n_corners)
     if code != CLOSED:
@@ -439,53 +455,37 @@ def integrate_wall(s, n, n_cells, n_corners):  # type: ignore[no-untyped-def]
     surface = 0.0
     wall_sum = 0.0
     tx, ty, tz = 0.0, 0.0, 0.0
-    for t in range(n_cells):
-        for i in range(4):
-            a = s.cell[t, i]
-            if s.patch[a, _STAMP] != s.clock[0]:
-                continue
-            s.patch[a, _STAMP] = -s.clock[0]
-            r = s.near[REACH, a]
-            area = _patch_area(s, a) * r * r
-            s.patch[a, _AREA] = area
-            ax, ay, az = s.patch[a, _AX], s.patch[a, _AY], s.patch[a, _AZ]
-            tx += ax
-            ty += ay
-            tz += az
-            x, y, z = s.near[X, a], s.near[Y, a], s.near[Z, a]
-            # int |x|^2 dA from |x|^2 = 2 x . x_j - g on the sphere
-            moment = (
-                2.0 * (x * (x * area + r * ax) + y * (y * area + r * ay) + z * (z * area + r * az))
-                - s.near[POWER, a] * area
-            )
-            volume += (s.near[POWER, a] * area - moment) / (6.0 * r)
-            surface += area
-            wall_sum += r * area
+    for m in range(s.clock[1]):
+        a = s.seen[m]
+        x, y, z, r = s.near[X, a], s.near[Y, a], s.near[Z, a], s.near[REACH, a]
+        power = s.near[POWER, a]
+        area = _patch_area(s, a) * r * r
+        s.patch[a, AREA] = area
+        ax, ay, az = s.patch[a, _AX], s.patch[a, _AY], s.patch[a, _AZ]
+        tx += ax
+        ty += ay
+        tz += az
+        # int |x|^2 dA from |x|^2 = 2 x . x_j - g on the sphere
+        moment = 2.0 * (
+            x * (x * area + r * ax) + y * (y * area + r * ay) + z * (z * area + r * az)
+        )
+        volume += (2.0 * power * area - moment) / (6.0 * r)
+        surface += area
+        wall_sum += r * area
     closure = np.sqrt(tx * tx + ty * ty + tz * tz)
     if not closure <= 1e-7 * surface + 1e-280:
         return INVALID, 0.0, 0.0, 0.0, 0, 0.0, -1
     bounding = 0
-    for t in range(n_cells):
-        for i in range(4):
-            a = s.cell[t, i]
-            if s.patch[a, _STAMP] == -s.clock[0]:
-                # count each sphere once; patches born from broken ties have no area
-                if s.patch[a, _AREA] > 1e-10 * surface:
-                    bounding += 1
-                    s.patch[a, _STAMP] = -s.clock[0] - 0.25
-                else:
-                    s.patch[a, _STAMP] = -s.clock[0] - 0.5
+    for m in range(s.clock[1]):
+        # patches born from broken ties have no area
+        if s.patch[s.seen[m], AREA] > 1e-10 * surface:
+            s.seen[bounding] = s.seen[m]
+            bounding += 1
     weakest = -1.0
     where = -1
     for q in range(n_corners):
-        t = s.mark[q, 0]
-        f = s.mark[q, 1]
-        ratio = opening_ratio(
-            s,
-            s.cell[t, 1 if f == 0 else 0],
-            s.cell[t, 2 if f <= 1 else 1],
-            s.cell[t, 3 if f <= 2 else 2],
-        )
+        a, b, c = window(s, q)
+        ratio = opening_ratio(s, a, b, c)
         if ratio > weakest:
             weakest = ratio
             where = q
