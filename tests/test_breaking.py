@@ -138,7 +138,8 @@ def test_a_neighbor_that_comes_back_is_not_lost():
     assert 0 not in events["particle"]
 
 
-def test_minimum_duration_asks_for_a_lasting_loss():
+@pytest.mark.parametrize("dt", [1.0, 0.1])
+def test_minimum_duration_asks_for_a_lasting_loss(dt):
     sites, box = triangular(6, 1.1)
     i = 30
     j = int(neighbors_on(sites, box, i, 1.2)[0])
@@ -147,12 +148,14 @@ def test_minimum_duration_asks_for_a_lasting_loss():
     for away in (slice(3, 5), slice(9, 20)):  # for 2 frames, then for good
         paths[away, i] += shift
         paths[away, j] -= shift
-    options = TimeOptions(origin_interval=1, minimum_duration=3.0)
-    _, outputs, events, _ = run(paths, box, options)
+    options = TimeOptions(origin_interval=1, minimum_duration=3.0 * dt)
+    _, outputs, events, _ = run(paths, box, options, dt=dt)
     assert events["particle"].tolist() == sorted([i, j])
     assert events["end_frame"].tolist() == [9, 9]  # when the loss began
     assert [o.values["cage_breaks"] for o in outputs].index(2) == 12  # when it counts
-    *_, events, _ = run(paths, box, EVERY)
+    mobile = [output.broken[i] for output in outputs]
+    assert np.flatnonzero(mobile).tolist() == [*range(12, 20)]
+    *_, events, _ = run(paths, box, EVERY, dt=dt)
     assert events["end_frame"].tolist() == [3, 3, 5, 5, 9, 9]
 
 

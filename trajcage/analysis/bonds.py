@@ -7,7 +7,7 @@ from typing import Self
 import numpy as np
 from numpy.typing import NDArray
 
-from trajcage.analysis.unwrapping import Motion
+from trajcage.analysis.unwrapping import Motion, along_edges
 from trajcage.model import Box, Frame
 from trajcage.neighborhood import neighbor_list
 
@@ -100,7 +100,7 @@ def all_bonds(frame: Frame, motion: Motion, factor: float) -> Bonds:
     pairs = neighbor_list(frame, lambda a, b: factor * (a + b))
     first, second = pairs.particles, pairs.neighbors
     apart = motion.positions[second] - motion.positions[first]
-    turns = (pairs.vectors - apart) @ np.linalg.inv(frame.box.vectors)
+    turns = along_edges(pairs.vectors - apart, np.linalg.inv(frame.box.vectors))
     return Bonds(first, second, _columns(np.rint(turns)))
 
 
@@ -122,31 +122,37 @@ def bonds_of(
     # Within half the box the nearest image is the only one and found by rounding.
     one_image = np.all(box.heights[periodic] > 2.0 * reach)
     axis = int(np.argmax(box.heights))
-    limit = reach / box.heights[axis] * (1.0 + 1e-9)
-    n_pairs = len(particles) * frame.n_particles * 2.0 * limit
+    limits = reach / box.heights * (1.0 + 1e-9)
+    n_pairs = len(particles) * frame.n_particles * 2.0 * limits[axis]
     if n_pairs > _MANY_PAIRS or not one_image:
         everyone = all_bonds(frame, motion, factor)
         wanted = np.zeros(frame.n_particles, dtype=np.bool_)
         wanted[particles] = True
         return everyone.select(np.flatnonzero(wanted[everyone.first]))
     inverse = np.linalg.inv(box.vectors)
-    depth = motion.positions @ inverse[:, axis]
-    first, second = _close_along(depth, particles, limit, periodic=periodic[axis])
-    apart = motion.positions[second] - motion.positions[first]
-    turns = -np.rint(apart @ inverse)
+    depths = along_edges(motion.positions, inverse).T
+    first, second = _close_along(depths[axis], particles, limits[axis], periodic[axis])
+    for other in np.flatnonzero(np.arange(box.dimensions) != axis):
+        depth = np.ascontiguousarray(depths[other])
+        apart = depth.take(second) - depth.take(first)
+        if periodic[other]:
+            apart -= np.rint(apart)
+        near = np.flatnonzero(np.abs(apart) <= limits[other])
+        first, second = first.take(near), second.take(near)
+    vectors = motion.positions[second] - motion.positions[first]
+    turns = -np.rint(along_edges(vectors, inverse))
     turns[:, ~periodic] = 0.0
-    apart += turns @ box.vectors
-    limits = factor * (frame.radii[first] + frame.radii[second])
-    near = np.einsum("ij,ij->i", apart, apart) <= np.square(limits)
-    near &= first != second
-    return Bonds(first[near], second[near], _columns(turns[near]))
+    vectors += along_edges(turns, box.vectors)
+    contact = frame.radii[first] + frame.radii[second]
+    bonded = np.einsum("ij,ij->i", vectors, vectors) <= np.square(factor * contact)
+    bonded &= first != second
+    return Bonds(first[bonded], second[bonded], _columns(turns[bonded]))
 
 
 def _close_along(
     depth: NDArray[np.float64],
     particles: NDArray[np.int64],
     limit: float,
-    *,
     periodic: np.bool_,
 ) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
     """Pairs whose depths, modulo 1 if periodic, differ by at most a limit below 1/2."""

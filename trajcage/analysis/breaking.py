@@ -79,6 +79,9 @@ class BreakingRule:
             )
 
 
+# Share of the frame spacing by which times may be off through rounding.
+_TIME_GRAIN = 0.01
+
 # Arrays of the tracker that make up its state, beside its parts.
 _ARRAYS = (
     "gone",
@@ -160,12 +163,12 @@ class CageTracker:
         first = self._first_frame < 0
         if first:
             self._first_frame = frame.index
-        n_lost, begun, broken = self._losses(frame, motion)
+        grain = _TIME_GRAIN * tick  # unknown on the first frame, when nothing breaks
+        n_lost, begun, broken = self._losses(frame, motion, grain)
         self._last_break[broken] = frame.time
         age = frame.time - self._last_break
         window = self._rule.mobility_window
-        # Nothing has broken on the first frame, when the tick is not known yet.
-        mobile = age < (10.0 * tick if window is None else window)
+        mobile = age < (10.0 * tick if window is None else window) - grain
         known = dict(values)
         if classify is not None:
             known["region"] = classify(mobile)
@@ -182,20 +185,24 @@ class CageTracker:
         return mobile, events
 
     def _losses(
-        self, frame: Frame, motion: Motion
+        self, frame: Frame, motion: Motion, grain: float
     ) -> tuple[NDArray[np.int64], NDArray[np.bool_], NDArray[np.bool_]]:
         """Neighbors lost by each particle; whose loss begins; whose cage broke."""
         bonds, rule = self._bonds, self._rule
         squared = bonds.squared_lengths(motion, frame.box)
-        contact = frame.radii[bonds.first] + frame.radii[bonds.second]
-        contact *= contact
-        self._gone &= squared > rule.bonded**2 * contact
-        self._gone |= squared > rule.broken**2 * contact
+        closest = 2.0 * rule.bonded * frame.radii.min()
+        apart = np.flatnonzero(squared > closest**2)  # the others are surely bonded
+        squared = squared[apart]
+        contact = frame.radii[bonds.first[apart]] + frame.radii[bonds.second[apart]]
+        gone = self._gone[apart] & (squared > (rule.bonded * contact) ** 2)
+        gone |= squared > (rule.broken * contact) ** 2
+        self._gone = np.zeros(len(bonds), dtype=np.bool_)
+        self._gone[apart] = gone
         n_lost = np.bincount(bonds.first[self._gone], minlength=self._n)
         lost = (self._size > 0) & (n_lost >= self._critical)
         begun = lost & ~self._lost
         since = np.where(begun, frame.time, self._end["time"])
-        broken = lost & (frame.time - since >= rule.minimum_duration)
+        broken = lost & (frame.time - since >= rule.minimum_duration - grain)
         self._lost = lost
         return n_lost, begun, broken
 
@@ -261,8 +268,10 @@ class CageTracker:
         ticks = self._ticks(end["time"][broken] - start["time"][broken], tick)
         self.persistence.add(ticks[since_first])
         self.survival.add(ticks[~since_first])
-        old = np.flatnonzero(np.isin(self._bonds.first, broken))
-        new = np.flatnonzero(np.isin(fresh.first, broken))
+        listed = np.zeros(self._n, dtype=np.bool_)
+        listed[broken] = True
+        old = np.flatnonzero(listed[self._bonds.first])
+        new = np.flatnonzero(listed[fresh.first])
         was = self._bonds.first[old] * self._n + self._bonds.second[old]
         lost = was[self._gone[old]]
         gained = fresh.first[new] * self._n + fresh.second[new]

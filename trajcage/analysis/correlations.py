@@ -250,11 +250,14 @@ class Correlations:
         caged = origin.n_neighbors > 0
         relative = (moved - origin.average @ moved)[caged]
         bonds = origin.bonds
-        contact = frame.radii[bonds.first] + frame.radii[bonds.second]
-        limit = plan.broken**2 * contact**2
-        lost = bonds.squared_lengths(motion, frame.box) > limit
-        n_lost = np.bincount(bonds.first[lost], minlength=self._n)
-        n_lost += np.bincount(bonds.second[lost], minlength=self._n)
+        squared = bonds.squared_lengths(motion, frame.box)
+        closest = 2.0 * plan.broken * frame.radii.min()
+        apart = np.flatnonzero(squared > closest**2)  # the others are surely kept
+        first, second = bonds.first[apart], bonds.second[apart]
+        contact = frame.radii[first] + frame.radii[second]
+        lost = squared[apart] > (plan.broken * contact) ** 2
+        n_lost = np.bincount(first[lost], minlength=self._n)
+        n_lost += np.bincount(second[lost], minlength=self._n)
         whole = n_lost < plan.fraction_lost * origin.n_neighbors - 1e-9
         n_caged = np.count_nonzero(caged)
         value = np.full(8, np.nan)

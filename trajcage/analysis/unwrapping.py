@@ -8,7 +8,7 @@ from numpy.typing import NDArray
 
 from trajcage.model import Frame
 
-__all__ = ["Motion", "Unwrapper"]
+__all__ = ["Motion", "Unwrapper", "along_edges"]
 
 # A crossing is told from a move by its length: below half a box height one of
 # the two is excluded. Steps are refused somewhat earlier, because of particles
@@ -61,8 +61,8 @@ class Unwrapper:
         self._started = False
         self._has_images = False
         self._fractional = np.zeros(shape)
-        self._images = np.zeros(shape, dtype=np.int64)
-        self._turns = np.zeros(shape, dtype=np.int64)
+        self._images = np.zeros(shape)  # whole numbers, as floats for speed
+        self._turns = np.zeros(shape)
         self._path = np.zeros(shape)
         self._drift = np.zeros(dimensions)
 
@@ -99,26 +99,24 @@ class Unwrapper:
         else:
             self._step(frame, fractional)
         if flags is not None:
-            self._images = flags.astype(np.int64)
+            self._images = flags.astype(np.float64)
         self._fractional = fractional
         return Motion(
-            frame.positions + self._turns @ frame.box.vectors,
+            frame.positions + along_edges(self._turns, frame.box.vectors),
             self._path - self._drift if self._remove_drift else self._path.copy(),
         )
 
     def _step(self, frame: Frame, fractional: NDArray[np.float64]) -> None:
         periodic = np.array(frame.box.periodic)
         step = fractional - self._fractional
-        if frame.images is None:
-            turns = -np.rint(step).astype(np.int64)
-        else:
-            turns = frame.images.astype(np.int64) - self._images
-        turns[:, ~periodic] = 0
+        flags = frame.images
+        turns = -np.rint(step) if flags is None else flags - self._images
+        turns[:, ~periodic] = 0.0
         step += turns
-        if frame.images is None:
+        if flags is None:
             _check_length(frame, np.abs(step) * periodic)
         self._turns += turns
-        moved = step @ frame.box.vectors
+        moved = along_edges(step, frame.box.vectors)
         self._path += moved
         self._drift += moved.mean(axis=0)
 
@@ -137,20 +135,33 @@ class Unwrapper:
         """Continue from what :meth:`state` returned."""
         self._started, self._has_images = (bool(flag) for flag in state["flags"])
         self._fractional = np.array(state["fractional"], dtype=np.float64)
-        self._images = np.array(state["images"], dtype=np.int64)
-        self._turns = np.array(state["turns"], dtype=np.int64)
+        self._images = np.array(state["images"], dtype=np.float64)
+        self._turns = np.array(state["turns"], dtype=np.float64)
         self._path = np.array(state["path"], dtype=np.float64)
         self._drift = np.array(state["drift"], dtype=np.float64)
 
 
+def along_edges(
+    numbers: NDArray[np.float64], vectors: NDArray[np.floating]
+) -> NDArray[np.float64]:
+    """Product of rows (..., d) and a (d, d) matrix.
+
+    Without the linear algebra library, whose threads cost more than they save here
+    and can change the last bit with their number.
+    """
+    total = np.zeros(numbers.shape)
+    for k, axis in np.argwhere(vectors):
+        total[..., axis] += numbers[..., k] * vectors[k, axis]
+    return total
+
+
 def _check_length(frame: Frame, step: NDArray[np.float64]) -> None:
     """Refuse steps close to half a box height, given in fractions of a height."""
-    longest = step.max(axis=1)
-    too_long = longest > _LONGEST_STEP
-    if too_long.any():
+    if step.max() > _LONGEST_STEP:
+        too_long = step.max(axis=1) > _LONGEST_STEP
         raise frame.error(
             f"expected particles to move less than {_LONGEST_STEP:g} of the box height "
-            f"from one frame to the next, found {longest.max():.3g} for "
+            f"from one frame to the next, found {step.max():.3g} for "
             f"{frame.name_particles(too_long)}; near one half, a move cannot be told "
             "from a crossing of the periodic boundary: save frames more often, store "
             "image flags, or leave the time analysis out"

@@ -3,6 +3,7 @@
 import numpy as np
 from numpy.typing import NDArray
 
+from trajcage.analysis.unwrapping import along_edges
 from trajcage.model import Box
 
 __all__ = ["crosses_window", "window_corners"]
@@ -35,9 +36,9 @@ def window_corners(
         it is.
     """
     apart = positions[neighbors] - positions[particles, None]
-    turns = -np.rint(apart @ np.linalg.inv(box.vectors))
+    turns = -np.rint(along_edges(apart, np.linalg.inv(box.vectors)))
     turns[..., np.logical_not(box.periodic)] = 0.0
-    corners = apart + turns @ box.vectors
+    corners = apart + along_edges(turns, box.vectors)
     known = neighbors >= 0
     heights = box.heights[list(box.periodic)]
     if len(heights):
