@@ -100,7 +100,7 @@ def test_killed_at_a_random_moment(trial, tmp_path):
     path = tmp_path / "cages.h5"
     process = start(path, 100_000, flush_every=(1, 1, 3, 7)[trial % 4])
     wait_for(path, process)
-    time.sleep(random.Random(trial).uniform(0.0, 0.08))
+    time.sleep(random.Random(trial).uniform(0.0, 0.06))
     stop(process)
     assert read_superblock(path).open_for_writing
     with pytest.raises(OSError, match="already open for write"):
@@ -112,13 +112,13 @@ def test_killed_at_a_random_moment(trial, tmp_path):
         assert counter in {committed, committed - (1, 1, 3, 7)[trial % 4]}
         assert not result.complete
         check_frames(result)
-    assert salvage(path, tmp_path / "copy.h5") == committed
-    with open_result(tmp_path / "copy.h5") as copy:
-        check_frames(copy)
-        assert copy.frames_complete == committed
+    files = [path]
+    if trial % 3 == 0:
+        files.append(tmp_path / "copy.h5")
+        assert salvage(path, files[-1]) == committed
     whole = tmp_path / "whole.h5"
     scenario.run(whole, committed + 8)
-    for killed in (path, tmp_path / "copy.h5"):
+    for killed in files:
         scenario.run(killed, committed + 8, flush_every=2)
         assert not read_superblock(killed).open_for_writing
         with open_result(killed) as result:
@@ -141,3 +141,32 @@ def test_killed_again_and_again_equals_uninterrupted(tmp_path, reference):
     scenario.run(path, 30)
     assert kills >= 1
     assert_same_contents(path, reference)
+
+
+@pytest.mark.parametrize("moment", ["close", "_write_arrays", "_publish"])
+def test_killed_while_finishing(moment, tmp_path):
+    path = tmp_path / "cages.h5"
+    code = f"""
+import os, sys, pathlib, store_scenario
+from trajcage.store import ResultWriter
+writer = store_scenario.create(pathlib.Path(sys.argv[1]), flush_every=0)
+writer.append(store_scenario.record(0), store_scenario.rows(0))
+writer.flush(state={{}}, arrays={{"histograms/free_volume": [1]}}, summary={{"a": 1}})
+writer.append(store_scenario.record(1), store_scenario.rows(1))
+ResultWriter.{moment} = lambda *_, **__: os.kill(os.getpid(), 9)
+writer.finish(arrays={{"histograms/free_volume": [2, 3]}}, summary={{"b": 2}})
+"""
+    done = subprocess.run([sys.executable, "-c", code, path], cwd=HERE, check=False)
+    assert done.returncode == -9
+    with open_result(path) as result:
+        check_frames(result)
+        histogram = result.array("histograms/free_volume").tolist()
+        whole = moment == "close"
+        assert (result.frames_complete, result.complete) == (
+            (2, True) if whole else (1, False)
+        )
+        if moment == "_write_arrays":  # half-replaced arrays are not shown
+            assert (histogram, result.summary, result.arrays_frames) == ([], {}, -1)
+        else:
+            assert histogram == ([2, 3] if whole else [1])
+            assert result.summary == ({"b": 2} if whole else {"a": 1})

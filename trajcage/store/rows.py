@@ -1,14 +1,18 @@
-"""Fast writing of rows through the low-level interface of h5py."""
+"""Fast writing of rows and frames through the low-level interface of h5py."""
 
 import zlib
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from typing import Any
 
 import h5py
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["ParticleWriter", "RowWriter"]
+from trajcage.errors import UsageError
+from trajcage.model import Field, FrameRecord
+from trajcage.store.specs import to_dtype
+
+__all__ = ["FrameRows", "ParticleWriter", "RowWriter"]
 
 
 class RowWriter:
@@ -76,3 +80,83 @@ class ParticleWriter(RowWriter):
             data = zlib.compress(plain.T.tobytes(), 1)
         offset = (row, first, *(0,) * (values.ndim - 1))
         self.id.write_direct_chunk(offset, data)
+
+
+class FrameRows:
+    """Checks frame records and writes them to all per-frame datasets."""
+
+    def __init__(
+        self, file: Any, fields: Sequence[Field], *, with_tables: bool
+    ) -> None:
+        self._fields = tuple(fields)
+        particles, observables = file["particles/all"], file["observables"]
+        edges, frames = particles["box/edges"], file["trajcage/frames"]
+        self._n_particles: int = len(particles["id"])
+        self._datasets = {
+            "/edges": edges["value"],
+            "/step": edges["step"],
+            "/time": edges["time"],
+            "/source": frames["source_frame"],
+            "/origin": frames["box_origin"],
+        }
+        if with_tables:
+            self._datasets["/tables"] = frames["table_rows"]
+        self._writers = {name: RowWriter(d) for name, d in self._datasets.items()}
+        for field in self._fields:
+            self._writers[field.name] = (
+                ParticleWriter(particles[field.name]["value"])
+                if field.per_particle
+                else RowWriter(observables[field.name]["value"])
+            )
+
+    def last(self, n_frames: int) -> tuple[int | None, int | None, list[int]]:
+        """Return step, source frame and table rows of the last frame, if any."""
+        if n_frames == 0:
+            return None, None, []
+        row = n_frames - 1
+        tables = self._datasets.get("/tables")
+        return (
+            int(self._datasets["/step"][row]),
+            int(self._datasets["/source"][row]),
+            [] if tables is None else [int(n) for n in tables[row]],
+        )
+
+    def check(self, record: FrameRecord) -> dict[str, NDArray[np.generic]]:
+        """Copy a record to arrays of the declared types.
+
+        Raises
+        ------
+        UsageError
+            If a value is missing, undeclared or does not fit its declaration.
+        """
+        unknown = set(record.values) - {f.name for f in self._fields}
+        if unknown:
+            raise UsageError(f"values of undeclared fields: {sorted(unknown)}")
+        frame: dict[str, NDArray[np.generic]] = {
+            "/edges": record.box.vectors,
+            "/origin": record.box.origin,
+            "/step": np.array(record.step, np.int64),
+            "/time": np.array(record.time, np.float64),
+            "/source": np.array(record.index, np.int64),
+        }
+        for field in self._fields:
+            if field.name not in record.values:
+                raise UsageError(f"frame {record.index} lacks field {field.name!r}")
+            shape = field.shape
+            if field.per_particle:
+                shape = (self._n_particles, *shape)
+            values = to_dtype(record.values[field.name], field)
+            if values.shape != shape:
+                raise UsageError(
+                    f"field {field.name!r}: expected shape {shape}, got {values.shape}"
+                )
+            frame[field.name] = values
+        return frame
+
+    def write(
+        self, start: int, frames: Sequence[Mapping[str, NDArray[np.generic]]]
+    ) -> None:
+        """Write checked frames from row ``start`` on."""
+        if frames:
+            for name, writer in self._writers.items():
+                writer.write_all(start, [frame[name] for frame in frames])

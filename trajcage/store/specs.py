@@ -1,16 +1,24 @@
 """What a result file declares before its first frame: tables, arrays, units."""
 
 import re
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import NDArray
+from numpy.typing import ArrayLike, NDArray
 
 from trajcage.errors import UsageError
 from trajcage.model import Field
 
-__all__ = ["ArraySpec", "TableSpec", "check_fields", "fill_value", "resolve_unit"]
+__all__ = [
+    "ArraySpec",
+    "TableSpec",
+    "check_arrays",
+    "check_fields",
+    "fill_value",
+    "resolve_unit",
+    "to_dtype",
+]
 
 ROOT = "/trajcage/"
 _RESERVED = {"commit", "complete", "frames", "frames_complete", "state", "summary"}
@@ -170,3 +178,58 @@ def fill_value(dtype: np.dtype[np.generic]) -> object:
     if dtype.kind == "u":
         return 2 ** (8 * dtype.itemsize) - 1
     return np.zeros((), dtype)[()]
+
+
+def to_dtype(values: ArrayLike, field: Field) -> NDArray[np.generic]:
+    """Copy values to the declared type if that loses nothing but rounding.
+
+    Raises
+    ------
+    UsageError
+        If they are no numbers of that kind or out of its range.
+    """
+    given = np.asarray(values)
+    kind = np.dtype(field.dtype)
+    if kind.kind == "f":
+        fits = given.dtype.kind in "fiub"
+    elif kind.kind in "iu":
+        bounds = np.iinfo(kind)
+        fits = given.dtype.kind in "iub" and (
+            given.size == 0
+            or (int(given.min()) >= bounds.min and int(given.max()) <= bounds.max)
+        )
+    else:
+        fits = given.dtype.kind == kind.kind
+    if not fits:
+        raise UsageError(
+            f"{field.name!r}: values of type {given.dtype} do not fit the declared "
+            f"type {kind}"
+        )
+    return np.array(given, dtype=kind, order="C")
+
+
+def check_arrays(
+    arrays: Mapping[str, ArrayLike], specs: Mapping[str, ArraySpec]
+) -> dict[str, NDArray[np.generic]]:
+    """Return arrays in their declared types.
+
+    Raises
+    ------
+    UsageError
+        If one was not declared or has another shape.
+    """
+    checked = {}
+    for name, values in arrays.items():
+        if name not in specs:
+            raise UsageError(f"array {name!r} was not declared; known: {sorted(specs)}")
+        spec, array = specs[name], np.asarray(values)
+        fits = array.ndim == len(spec.shape) and all(
+            want is None or want == got
+            for want, got in zip(spec.shape, array.shape, strict=True)
+        )
+        if not fits:
+            raise UsageError(
+                f"array {name!r}: expected shape {spec.shape}, got {array.shape}"
+            )
+        checked[name] = array.astype(spec.dtype)
+    return checked

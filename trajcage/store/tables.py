@@ -7,41 +7,12 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from trajcage.errors import UsageError
-from trajcage.model import Field
 from trajcage.store.rows import RowWriter
-from trajcage.store.specs import TableSpec
+from trajcage.store.specs import TableSpec, to_dtype
 
-__all__ = ["TableBuffer", "to_dtype"]
+__all__ = ["TableBuffer"]
 
 _Columns = dict[str, NDArray[np.generic]]
-
-
-def to_dtype(values: ArrayLike, field: Field) -> NDArray[np.generic]:
-    """Copy values to the declared type if that loses nothing but rounding.
-
-    Raises
-    ------
-    UsageError
-        If they are no numbers of that kind or out of its range.
-    """
-    given = np.asarray(values)
-    kind = np.dtype(field.dtype)
-    if kind.kind == "f":
-        fits = given.dtype.kind in "fiub"
-    elif kind.kind in "iu":
-        bounds = np.iinfo(kind)
-        fits = given.dtype.kind in "iub" and (
-            given.size == 0
-            or (int(given.min()) >= bounds.min and int(given.max()) <= bounds.max)
-        )
-    else:
-        fits = given.dtype.kind == kind.kind
-    if not fits:
-        raise UsageError(
-            f"{field.name!r}: values of type {given.dtype} do not fit the declared "
-            f"type {kind}"
-        )
-    return np.array(given, dtype=kind, order="C")
 
 
 class TableBuffer:

@@ -20,10 +20,10 @@ from trajcage.store.guard import guard
 from trajcage.store.layout import Layout, image, position_field
 from trajcage.store.lock import WriterLock
 from trajcage.store.resuming import check_resumable
-from trajcage.store.rows import ParticleWriter, RowWriter
-from trajcage.store.specs import ArraySpec, TableSpec, fill_value
+from trajcage.store.rows import FrameRows, RowWriter
+from trajcage.store.specs import ArraySpec, TableSpec, check_arrays, fill_value
 from trajcage.store.superblock import repair_superblock
-from trajcage.store.tables import TableBuffer, to_dtype
+from trajcage.store.tables import TableBuffer
 
 __all__ = ["ResultWriter"]
 
@@ -58,7 +58,6 @@ class ResultWriter:
         self.path = path
         self.flush_every = flush_every
         self._lock = lock
-        self._fields = tuple(fields)
         self._arrays = {a.name: a for a in arrays if a.values is None}
         self._pending: list[dict[str, NDArray[np.generic]]] = []
         self._state: _State | None = None
@@ -67,37 +66,18 @@ class ResultWriter:
             self._file = open_for_writing(path)
             self._commit = read_commit(self._file, path)
             root = self._file["trajcage"]
-            particles = self._file["particles/all"]
-            edges = particles["box/edges"]
-            frames = root["frames"]
-            self._n_particles: int = len(particles["id"])
-            self._frame_rows = {
-                "edges": RowWriter(edges["value"]),
-                "step": RowWriter(edges["step"]),
-                "time": RowWriter(edges["time"]),
-                "source": RowWriter(frames["source_frame"]),
-                "origin": RowWriter(frames["box_origin"]),
-            }
-            self._field_rows = {f.name: self._field_writer(f) for f in self._fields}
+            self._frames = FrameRows(self._file, fields, with_tables=bool(tables))
             self._tables = {t.name: TableBuffer(root[t.name], t) for t in tables}
-            if self._tables:
-                self._frame_rows["tables"] = RowWriter(frames["table_rows"])
             self._slots = [RowWriter(root["state"][slot]) for slot in "ab"]
             self._summary = RowWriter(root["summary"])
             self._record = root["commit"]
             self._mirrors = (root["frames_complete"], root["complete"])
-            last = self._commit.frames_complete - 1
-            self._last_step = int(edges["step"][last]) if last >= 0 else None
-            self.last_source_frame: int | None = (
-                int(frames["source_frame"][last]) if last >= 0 else None
-            )
-            counts = frames["table_rows"][last] if last >= 0 and tables else None
-            self._rows = dict.fromkeys(self._commit.rows, 0)
+            last = self._frames.last(self._commit.frames_complete)
+            self._last_step, self.last_source_frame, counts = last
             names = [n for table in self._tables.values() for n in table.names]
-            if counts is not None:
-                self._rows.update(zip(names, map(int, counts), strict=True))
-            for name in self._arrays:
-                self._rows[name] = self._commit.rows[name]
+            self._rows = dict(self._commit.rows) | dict.fromkeys(names, 0)
+            # Not the committed rows: those of a finished run hold its last rows.
+            self._rows |= dict(zip(names, counts, strict=False))
             self.state = self._stored_state(root)
 
     @classmethod
@@ -312,45 +292,19 @@ class ResultWriter:
                 frame=record.index,
                 step=record.step,
             )
-        frame = self._checked(record)
+        frame = self._frames.check(record)
         added = {
             name: self._tables[name].check(new) for name, new in (rows or {}).items()
         }
         for name, new in added.items():
             self._tables[name].add(new)
-        frame["/tables"] = np.array(
-            [n for t in self._tables.values() for n in t.totals(self._rows)], np.int64
-        )
+        counts = [n for t in self._tables.values() for n in t.totals(self._rows)]
+        frame["/tables"] = np.array(counts, np.int64)
         self._pending.append(frame)
         self._last_step, self._state = record.step, state
         self.last_source_frame = record.index
         if self.flush_every and len(self._pending) >= self.flush_every:
             self.flush()
-
-    def _checked(self, record: FrameRecord) -> dict[str, NDArray[np.generic]]:
-        unknown = set(record.values) - set(self._field_rows)
-        if unknown:
-            raise UsageError(f"values of undeclared fields: {sorted(unknown)}")
-        frame: dict[str, NDArray[np.generic]] = {
-            "/edges": record.box.vectors,
-            "/origin": record.box.origin,
-            "/step": np.array(record.step, np.int64),
-            "/time": np.array(record.time, np.float64),
-            "/source": np.array(record.index, np.int64),
-        }
-        for field in self._fields:
-            if field.name not in record.values:
-                raise UsageError(f"frame {record.index} lacks field {field.name!r}")
-            shape = (
-                (self._n_particles, *field.shape) if field.per_particle else field.shape
-            )
-            values = to_dtype(record.values[field.name], field)
-            if values.shape != shape:
-                raise UsageError(
-                    f"field {field.name!r}: expected shape {shape}, got {values.shape}"
-                )
-            frame[field.name] = values
-        return frame
 
     def flush(
         self,
@@ -464,7 +418,7 @@ class ResultWriter:
         self._check_usable()
         state = self._state if state is None else state
         packed = None if state is None else pack_arrays(state)
-        new_arrays = {n: self._checked_array(n, a) for n, a in (arrays or {}).items()}
+        new_arrays = check_arrays(arrays or {}, self._arrays)
         text = None if summary is None else json.dumps(summary, indent=1).encode()
         self._failed = True  # until proven otherwise
         with guard(self.path, "writing"):
@@ -509,31 +463,12 @@ class ResultWriter:
 
     def _write_pending(self) -> int:
         first = self._commit.frames_complete
-        if self._pending:
-            for name, writer in self._frame_rows.items():
-                writer.write(first, np.stack([p[f"/{name}"] for p in self._pending]))
-            for name, writer in self._field_rows.items():
-                writer.write_all(first, [p[name] for p in self._pending])
+        self._frames.write(first, self._pending)
         for table in self._tables.values():
             self._rows.update(table.write(self._rows))
         total = first + len(self._pending)
         self._pending.clear()
         return total
-
-    def _checked_array(self, name: str, values: ArrayLike) -> NDArray[np.generic]:
-        if name not in self._arrays:
-            raise UsageError(f"array {name!r} was not declared")
-        spec = self._arrays[name]
-        array = np.asarray(values)
-        fits = array.ndim == len(spec.shape) and all(
-            want is None or want == got
-            for want, got in zip(spec.shape, array.shape, strict=True)
-        )
-        if not fits:
-            raise UsageError(
-                f"array {name!r}: expected shape {spec.shape}, got {array.shape}"
-            )
-        return array.astype(spec.dtype)
 
     def _write_arrays(self, arrays: Mapping[str, NDArray[np.generic]]) -> None:
         for name, array in arrays.items():
@@ -545,11 +480,6 @@ class ResultWriter:
                 blank = fill_value(array.dtype)
                 RowWriter(dataset).replace(array, blank)
                 self._rows[name] = len(array)
-
-    def _field_writer(self, field: Field) -> RowWriter:
-        if field.per_particle:
-            return ParticleWriter(self._file["particles/all"][field.name]["value"])
-        return RowWriter(self._file["observables"][field.name]["value"])
 
     def _stored_state(self, root: Any) -> dict[str, NDArray[np.generic]] | None:
         size = self._commit.state_bytes
