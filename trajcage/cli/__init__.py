@@ -1,1 +1,104 @@
-"""Placeholder, filled by its own module."""
+"""The command line: the only place that prints and sets exit codes.
+
+Commands are modules of the same name with a command ``command``, imported when they
+are called, and they import the rest of the package when they run.
+"""
+
+import difflib
+from importlib import import_module
+
+import click
+
+import trajcage
+from trajcage.errors import InterruptedRunError, TrajcageError, UsageError
+
+__all__ = ["main"]
+
+# Name and one-line help of every command, in the order of a session; `--help` shows
+# these without importing the commands.
+_COMMANDS = {
+    "inspect": "Tell what is understood of an input.",
+    "measure": "Measure cages, order and cage breaking; write a result file.",
+    "summary": "Show the numbers of a result file beside published references.",
+    "breaks": "List the cages that broke.",
+    "export": "Write a result file as CSV, extended XYZ or NPZ.",
+    "lattice": "Show the cages of ideal lattices.",
+}
+
+
+class _Failure(click.ClickException):
+    """Data that cannot be used."""
+
+    exit_code = 1
+
+
+class _Mistake(click.ClickException):
+    """A command that cannot mean anything."""
+
+    exit_code = 2
+
+
+class _Stopped(click.ClickException):
+    """A run that was interrupted."""
+
+    exit_code = 130
+
+
+class _Program(click.Group):
+    """Commands imported on demand, our errors turned into messages."""
+
+    # click calls these with a context that they do not need
+    def list_commands(self, ctx: click.Context) -> list[str]:  # noqa: ARG002
+        return list(_COMMANDS)
+
+    def get_command(
+        self,
+        ctx: click.Context,  # noqa: ARG002
+        cmd_name: str,
+    ) -> click.Command | None:
+        if cmd_name not in _COMMANDS:
+            return None
+        command: click.Command = import_module(f"trajcage.cli.{cmd_name}").command
+        return command
+
+    def format_commands(
+        self,
+        ctx: click.Context,  # noqa: ARG002
+        formatter: click.HelpFormatter,
+    ) -> None:
+        with formatter.section("Commands"):
+            formatter.write_dl(list(_COMMANDS.items()))
+
+    def resolve_command(
+        self, ctx: click.Context, args: list[str]
+    ) -> tuple[str | None, click.Command | None, list[str]]:
+        name = args[0]
+        if name not in _COMMANDS and not name.startswith("-"):
+            near = difflib.get_close_matches(name, _COMMANDS, n=1)
+            hint = f" Did you mean {near[0]}?" if near else ""
+            ctx.fail(f"No such command {name!r}.{hint}")
+        return super().resolve_command(ctx, args)
+
+    def invoke(self, ctx: click.Context) -> object:
+        try:
+            return super().invoke(ctx)
+        except UsageError as error:
+            raise _Mistake(str(error)) from error
+        except InterruptedRunError as error:
+            raise _Stopped(str(error)) from error
+        except TrajcageError as error:
+            raise _Failure(str(error)) from error
+
+
+@click.group(
+    cls=_Program,
+    context_settings={"help_option_names": ["-h", "--help"]},
+    epilog="Each command explains itself: trajcage measure --help.",
+)
+@click.version_option(trajcage.__version__, prog_name="trajcage")
+def main() -> None:
+    """Exact cages, free volumes and cage breaking of hard spheres and colloids.
+
+    Reads any trajectory that MDAnalysis reads and writes one HDF5 file. Results go to
+    files and standard output, talk goes to standard error.
+    """

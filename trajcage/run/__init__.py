@@ -1,1 +1,7 @@
-"""Placeholder, filled by its own module."""
+"""Runs: from trajectories to result files, frame by frame; prints nothing."""
+
+from trajcage.run.inspection import Inspection, inspect
+from trajcage.run.measuring import measure
+from trajcage.run.settings import FAMILIES, RunSettings
+
+__all__ = ["FAMILIES", "Inspection", "RunSettings", "inspect", "measure"]

@@ -1,0 +1,247 @@
+"""What the cages of one frame say as a whole: pressure, means, lattices beside them."""
+
+import functools
+import math
+from enum import IntEnum
+
+import numpy as np
+from numpy.typing import NDArray
+
+from trajcage.analysis.cages import Overlaps
+from trajcage.lattices import LATTICES, LatticeReference, lattice
+from trajcage.model import CageStatus, CageTable, Field, Frame
+
+__all__ = [
+    "CompressibilityStatus",
+    "compressibility_factor",
+    "equal_diameter",
+    "fields",
+    "lattice_names",
+    "lattice_reference",
+    "measure_thermodynamics",
+]
+
+#: Largest share of particles without a measured cage that Z tolerates.
+UNRESOLVED_SHARE = 1e-3
+
+# Spread of the free volumes, relative to their mean, up to which a frame can be an
+# ideal lattice. In thermal crystals it is of order one at any density.
+_LARGEST_LATTICE_SPREAD = 0.1
+
+
+class CompressibilityStatus(IntEnum):
+    """Why the compressibility factor of a frame exists or does not."""
+
+    MEASURED = 0  #: all but 1 in 1000 cages are resolved
+    UNRESOLVED = 1  #: more cages than that are open, border, overlap or invalid
+    IDEAL_LATTICE = 2  #: all cages are equal: a fixed lattice, no thermal sample
+
+
+def fields(dimensions: int) -> tuple[Field, ...]:
+    """Declare what :func:`measure_thermodynamics` returns."""
+    d = dimensions
+    over = "over the particles with a closed cage"
+
+    def scalar(
+        name: str, description: str, unit: str = "1", dtype: str = "f8"
+    ) -> Field:
+        return Field(name, description, unit, dtype, per_particle=False)
+
+    return (
+        scalar(
+            "packing_fraction",
+            "Volume (area in 2D) of the particles over that of the box",
+        ),
+        scalar("closed_fraction", "Particles with a closed cage among all"),
+        *(
+            scalar(
+                f"cages_{code.name.lower()}",
+                f"Particles of cage_status {code.name.lower()}, left out of means over "
+                "closed cages",
+                dtype="i8",
+            )
+            for code in CageStatus
+            if code is not CageStatus.CLOSED
+        ),
+        scalar("free_volume_mean", f"Mean free volume {over}", f"length+{d}"),
+        scalar(
+            "free_volume_geometric_mean",
+            f"Geometric mean of the free volume {over}",
+            f"length+{d}",
+        ),
+        scalar("free_surface_mean", f"Mean free surface {over}", f"length+{d - 1}"),
+        scalar("bounding_neighbors_mean", f"Mean number of bounding neighbors {over}"),
+        scalar("weakest_window_mean", f"Mean weakest opening ratio {over}"),
+        scalar(
+            "compressibility_factor",
+            "Z = P V / (N k T) = 1 + <wall_sum / free_volume> / (2 d), mean of the "
+            f"ratio {over}; NaN unless compressibility_status is measured",
+        ),
+        Field(
+            "compressibility_status",
+            "measured; unresolved: more than 1 in 1000 cages are not closed; "
+            "ideal_lattice: all cages are equal, so this is no thermal sample",
+            dtype="u1",
+            per_particle=False,
+            codes=tuple(code.name.lower() for code in CompressibilityStatus),
+        ),
+        scalar(
+            "overlaps", "Pairs that overlap by more than overlap_tolerance", "1", "i8"
+        ),
+        scalar(
+            "overlap_tolerance", "Overlap depth up to which particles touch", "length"
+        ),
+        scalar("deepest_overlap", "Depth of the deepest overlap, 0 if none", "length"),
+        Field(
+            "deepest_overlap_ids",
+            "Ids of the two particles of the deepest overlap, -1 if none",
+            dtype="i8",
+            per_particle=False,
+            shape=(2,),
+        ),
+        *(
+            scalar(
+                f"lattice_{name}_free_volume",
+                f"Free volume on the ideal {name} lattice of equal particles at this "
+                "packing fraction and number density; NaN where it does not exist or "
+                "its cages are open",
+                f"length+{d}",
+            )
+            for name in lattice_names(d)
+        ),
+    )
+
+
+def measure_thermodynamics(
+    frame: Frame, table: CageTable, overlaps: Overlaps, tolerance: float
+) -> dict[str, NDArray[np.generic] | float | int]:
+    """Sum up the cages of one frame.
+
+    Parameters
+    ----------
+    frame : Frame
+        The configuration.
+    table : CageTable
+        Its cages.
+    overlaps : Overlaps
+        Its overlaps.
+    tolerance : float, length
+        The overlap tolerance that was used.
+
+    Returns
+    -------
+    dict
+        One entry for each of :func:`fields`.
+    """
+    d, phi, counts = frame.dimensions, frame.packing_fraction, table.counts
+    closed = table.closed
+    factor, status = compressibility_factor(frame, table)
+    unit = equal_diameter(frame) ** d
+    references = {name: lattice_reference(name, phi) for name in lattice_names(d)}
+    with np.errstate(divide="ignore"):  # jammed particles have no free volume
+        logarithm = _mean(np.log(table.free_volume[closed]))
+    return {
+        "packing_fraction": phi,
+        "closed_fraction": counts["closed"] / len(table),
+        **{f"cages_{name}": n for name, n in counts.items() if name != "closed"},
+        "free_volume_mean": table.mean_free_volume,
+        "free_volume_geometric_mean": math.exp(logarithm),
+        "free_surface_mean": _mean(table.free_surface[closed]),
+        "bounding_neighbors_mean": _mean(table.bounding_neighbors[closed]),
+        "weakest_window_mean": _mean(table.weakest_window[closed]),
+        "compressibility_factor": factor,
+        "compressibility_status": int(status),
+        "overlaps": overlaps.count,
+        "overlap_tolerance": tolerance,
+        "deepest_overlap": overlaps.deepest,
+        "deepest_overlap_ids": np.array(overlaps.pair, dtype=np.int64),
+        **{
+            f"lattice_{name}_free_volume": (
+                math.nan if found is None else found.free_volume * unit
+            )
+            for name, found in references.items()
+        },
+    }
+
+
+def compressibility_factor(
+    frame: Frame, table: CageTable
+) -> tuple[float, CompressibilityStatus]:
+    """Compressibility factor from the cages of one frame of an equilibrium sample.
+
+    Z = 1 + <w_f / v_f> / (2 d), the mean over particles of the ratio of wall sum and
+    free volume. With all others held fixed, a particle is anywhere in its cage with
+    equal probability, so that s_f / v_f is the rate of its contacts.
+
+    Returns
+    -------
+    float
+        Z; NaN unless the status is ``MEASURED``.
+    CompressibilityStatus
+
+    Notes
+    -----
+    Hoover, Ashurst & Grover, J. Chem. Phys. 57, 1259 (1972); Speedy, J. Chem. Soc.
+    Faraday Trans. 2 76, 693 (1980); unequal sizes: Corti & Bowles, Mol. Phys. 96,
+    1623 (1999). Citations from memory. On a perfect lattice with its neighbors fixed
+    this average is not the pressure: Z - 1 comes out half that of the cell theory.
+    """
+    if table.left_out > UNRESOLVED_SHARE * len(table):
+        return math.nan, CompressibilityStatus.UNRESOLVED
+    if _is_ideal_lattice(frame, table):
+        return math.nan, CompressibilityStatus.IDEAL_LATTICE
+    closed = table.closed
+    with np.errstate(divide="ignore"):
+        ratio = table.wall_sum[closed] / table.free_volume[closed]
+    z = 1.0 + float(ratio.mean()) / (2.0 * frame.dimensions)
+    return z, CompressibilityStatus.MEASURED
+
+
+def _is_ideal_lattice(frame: Frame, table: CageTable) -> bool:
+    """Whether all particles of a size have the same cage, up to stored rounding.
+
+    Shifts of the neighbors by the resolution of the coordinates change a free
+    volume by up to the free surface times that shift. Two particles alone always
+    have equal cages, by symmetry, and are no lattice.
+    """
+    closed = table.closed
+    volumes, sizes = table.free_volume[closed], frame.radii[closed]
+    _, group = np.unique(np.round(sizes / sizes.mean(), 6), return_inverse=True)
+    members = np.bincount(group)
+    if frame.n_particles <= 2 or len(volumes) < 4 * len(members):
+        return False
+    mean = np.bincount(group, volumes) / members
+    with np.errstate(invalid="ignore", divide="ignore"):
+        spread = np.abs(volumes / mean[group] - 1.0)
+        steepness = float(np.mean(table.free_surface[closed] / volumes))
+    shift = 2.0 * math.sqrt(frame.dimensions) * frame.resolution
+    limit = min(1e-6 + shift * steepness, _LARGEST_LATTICE_SPREAD)
+    return bool(np.all(spread <= limit))
+
+
+def equal_diameter(frame: Frame) -> float:
+    """Diameter of equal particles that fill as much at the same number density."""
+    d = frame.dimensions
+    return float(2.0 * np.mean(frame.radii**d) ** (1.0 / d))
+
+
+def lattice_names(dimensions: int) -> tuple[str, ...]:
+    """Names of the ideal lattices of one dimension."""
+    return tuple(n for n, entry in LATTICES.items() if entry.dimensions == dimensions)
+
+
+@functools.lru_cache(maxsize=1024)
+def lattice_reference(name: str, packing_fraction: float) -> LatticeReference | None:
+    """Cage of an ideal lattice, None where the lattice cannot be that dense."""
+    if packing_fraction > LATTICES[name].close_packing.value:
+        return None
+    return lattice(name, packing_fraction)
+
+
+def _mean(values: NDArray[np.generic]) -> float:
+    """Mean over closed cages, NaN without any."""
+    return (
+        float(np.mean(np.asarray(values, dtype=np.float64)))
+        if len(values)
+        else math.nan
+    )

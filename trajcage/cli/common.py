@@ -1,0 +1,75 @@
+"""Options and forms of output that several commands share."""
+
+import json
+from collections.abc import Callable
+from pathlib import Path
+from typing import Any, TypeVar
+
+import click
+
+__all__ = ["input_options", "json_option", "print_json", "result_argument", "table"]
+
+F = TypeVar("F", bound=Callable[..., Any])
+
+_FILE = click.Path(path_type=Path)
+
+_INPUT = (
+    click.argument("topology", type=_FILE),
+    click.argument("trajectory", type=_FILE, required=False),
+    click.option(
+        "--diameter",
+        metavar="D",
+        help="Hard-sphere diameter: a number, one for each type (A=1.0,B=1.4), a file "
+        "(@diameters.txt), or wca:EPSILON_OVER_KT for a soft repulsion. From the input "
+        "unless given.",
+    ),
+    click.option(
+        "--box",
+        metavar="NUMBERS",
+        help="Box instead of that of the input: edge lengths (10,10,10), lengths and "
+        "angles in degrees (10,10,10,90,90,60), or all edge vectors.",
+    ),
+    click.option(
+        "--dimensions",
+        type=click.IntRange(2, 3),
+        help="Number of dimensions. From the input unless given.",
+    ),
+    click.option(
+        "--periodic",
+        metavar="AXES",
+        help="Periodic edges: xyz, xy, ..., or none. From the input unless given.",
+    ),
+    click.option("--dt", type=float, help="Time of one simulation step."),
+    click.option("--time-unit", metavar="NAME", help="Name of the time unit."),
+)
+
+result_argument = click.argument("result", type=_FILE, metavar="FILE")
+
+json_option = click.option(
+    "--json", "as_json", is_flag=True, help="Print JSON instead of text."
+)
+
+
+def input_options(function: F) -> F:
+    """Add the arguments and options that describe an input."""
+    for decorate in reversed(_INPUT):
+        function = decorate(function)
+    return function
+
+
+def print_json(value: object) -> None:
+    """Print a value as JSON; what is undefined must be null already."""
+    click.echo(json.dumps(value, indent=2, allow_nan=False))
+
+
+def table(rows: list[tuple[str, ...]], header: tuple[str, ...] = ()) -> str:
+    """Lay out rows in columns: the first to the left, the others to the right."""
+    lines = [header, *rows] if header else rows
+    widths = [max(len(line[k]) for line in lines) for k in range(len(lines[0]))]
+    return "\n".join(
+        "  ".join(
+            cell.ljust(width) if k == 0 else cell.rjust(width)
+            for k, (cell, width) in enumerate(zip(line, widths, strict=True))
+        ).rstrip()
+        for line in lines
+    )

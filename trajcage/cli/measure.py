@@ -1,0 +1,177 @@
+"""The command that does the main job."""
+
+import shlex
+import sys
+import time
+from collections.abc import Callable
+from contextlib import ExitStack
+from pathlib import Path
+from typing import Any
+
+import click
+
+from trajcage.cli.common import input_options
+
+__all__ = ["command"]
+
+_SKIPPABLE = ("cells", "order", "rattlers", "regions", "time")
+
+
+@click.command(name="measure", short_help="Measure a trajectory.")
+@input_options
+@click.option(
+    "-o",
+    "--output",
+    type=click.Path(path_type=Path, dir_okay=False),
+    required=True,
+    help="Result file to write (HDF5).",
+)
+@click.option("--start", type=int, help="First frame, counted from 0.")
+@click.option("--stop", type=int, help="Frame to stop before.")
+@click.option("--step", type=int, help="Take every so many frames.")
+@click.option(
+    "--reach",
+    type=float,
+    help="A cage that extends further than this is open. Ten of the largest diameters "
+    "unless given.",
+)
+@click.option(
+    "--overlap-tolerance",
+    type=float,
+    metavar="LENGTH",
+    help="Overlaps up to this depth count as contacts. From the resolution of the "
+    "coordinates unless given.",
+)
+@click.option("--strict", is_flag=True, help="Stop at the first deeper overlap.")
+@click.option(
+    "--skip",
+    multiple=True,
+    type=click.Choice(_SKIPPABLE),
+    help="Leave out a family of quantities and what builds on it; may be repeated.",
+)
+@click.option(
+    "--bonded",
+    type=float,
+    default=1.35,
+    show_default=True,
+    metavar="A1",
+    help="Neighbors are bonded up to this distance in units of the contact distance.",
+)
+@click.option(
+    "--broken",
+    type=float,
+    default=1.6,
+    show_default=True,
+    metavar="A2",
+    help="Bonds are broken beyond this distance.",
+)
+@click.option(
+    "--fraction-lost",
+    type=float,
+    default=0.5,
+    show_default=True,
+    help="Share of its neighbors whose loss breaks a cage.",
+)
+@click.option(
+    "--mobility-window",
+    type=float,
+    metavar="TIME",
+    help="Time for which a particle counts as mobile after its cage broke. Ten frames "
+    "unless given.",
+)
+@click.option(
+    "--remove-drift", is_flag=True, help="Take displacements relative to their mean."
+)
+@click.option(
+    "--contact-tolerance",
+    type=float,
+    metavar="GAP",
+    help="Largest gap of a contact, in units of the contact distance. From the "
+    "resolution of the coordinates unless given.",
+)
+@click.option(
+    "--workers",
+    type=click.IntRange(min=0),
+    default=1,
+    show_default=True,
+    help="Processes; 0 for one on every core. Results do not depend on it.",
+)
+@click.option("--store-positions", is_flag=True, help="Store the positions too.")
+@click.option("--resume", is_flag=True, help="Continue the result file if it exists.")
+@click.option("--overwrite", is_flag=True, help="Replace the result file if it exists.")
+@click.option("-q", "--quiet", is_flag=True, help="Print errors only.")
+def command(
+    *,
+    bonded: float,
+    broken: float,
+    fraction_lost: float,
+    mobility_window: float | None,
+    remove_drift: bool,
+    contact_tolerance: float | None,
+    quiet: bool,
+    output: Path,
+    **given: Any,
+) -> None:
+    r"""Measure every frame of a trajectory and write one result file.
+
+    TOPOLOGY and TRAJECTORY are any files that MDAnalysis reads; a single file can be
+    both. The run can be stopped at any time with Ctrl-C and continued with --resume.
+
+    \b
+      trajcage measure melt.gsd -o cages.h5
+      trajcage measure start.data run.xtc --diameter A=1.0,B=1.4 -o cages.h5
+    """
+    from trajcage.analysis.contacts import ContactOptions
+    from trajcage.analysis.time_options import TimeOptions
+    from trajcage.run import measure
+
+    started = time.monotonic()
+    time_analysis = TimeOptions(
+        bonded=bonded,
+        broken=broken,
+        fraction_lost=fraction_lost,
+        mobility_window=mobility_window,
+        remove_drift=remove_drift,
+    )
+    with ExitStack() as stack:
+        result = measure(
+            output=output,
+            time_analysis=time_analysis,
+            contacts=ContactOptions(tolerance=contact_tolerance),
+            progress=None if quiet else _progress(stack),
+            notify=None if quiet else _note,
+            command_line=shlex.join(["trajcage", *sys.argv[1:]]),
+            **given,
+        )
+    with result:
+        done, n = result.frames_complete, result.n_particles
+    if not quiet:
+        click.echo(
+            f"{done} frames of {n} particles in {output} "
+            f"({time.monotonic() - started:.1f} s); next: trajcage summary {output}",
+            err=True,
+        )
+
+
+def _note(text: str) -> None:
+    click.echo(f"Note: {text}", err=True)
+
+
+def _progress(stack: ExitStack) -> Callable[[int, int], None] | None:
+    """Return a progress bar on standard error, None unless that is a terminal."""
+    if not sys.stderr.isatty():
+        return None
+    bars: list[Any] = []
+
+    def advance(done: int, total: int) -> None:
+        if not bars:
+            bars.append(
+                stack.enter_context(
+                    click.progressbar(
+                        length=total, label="frames", show_pos=True, file=sys.stderr
+                    )
+                )
+            )
+        bars[0].update(done - bars[0].pos)
+
+    return advance

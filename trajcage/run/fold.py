@@ -1,0 +1,271 @@
+"""Everything that needs more than one frame, in order, resumable bit for bit."""
+
+import dataclasses
+import math
+from collections.abc import Mapping
+
+import numpy as np
+from numpy.typing import NDArray
+
+from trajcage.analysis.comparison import (
+    compare_equations,
+    compare_lattices,
+    phase_table,
+)
+from trajcage.analysis.conclusion import Conclusion
+from trajcage.analysis.distributions import FreeVolumeDistribution
+from trajcage.analysis.fold import TimeFold
+from trajcage.analysis.regions import find_regions, measure_regions
+from trajcage.analysis.state import State, prefixed, under
+from trajcage.analysis.statistics import BlockMoments, MeanEstimate
+from trajcage.analysis.thermodynamics import CompressibilityStatus, equal_diameter
+from trajcage.analysis.tracking import RegionTracker
+from trajcage.model import CageStatus, Frame, FrameRecord
+from trajcage.run.frames import MeasuredFrame
+from trajcage.run.settings import RunSettings
+
+__all__ = ["RunFold"]
+
+_Rows = dict[str, dict[str, NDArray[np.generic]]]
+
+
+class RunFold:
+    """Consume measured frames in order; yield records, curves and the summary.
+
+    Parameters
+    ----------
+    settings : RunSettings
+        What the run measures.
+    first : Frame
+        The first frame of the run, which sets the number of particles and the
+        scales of length.
+    """
+
+    def __init__(self, settings: RunSettings, first: Frame) -> None:
+        n, d = first.positions.shape
+        self._settings = settings
+        self._first = first
+        self._names = tuple(
+            f.name
+            for f in settings.fields(d)
+            if not (f.per_particle or f.shape or f.codes)
+        )
+        self._series = BlockMoments(len(self._names), 1)
+        self._missing = np.zeros(len(self._names), dtype=np.int64)
+        self._statuses = np.zeros(len(CageStatus), dtype=np.int64)
+        self._factors = np.zeros(len(CompressibilityStatus), dtype=np.int64)
+        self._distribution = FreeVolumeDistribution(d, first.mean_diameter)
+        self._tracker = RegionTracker()
+        self._time = TimeFold(settings.time, n, d, first.mean_diameter)
+        self._n_frames = 0
+
+    def update(self, measured: MeasuredFrame) -> tuple[FrameRecord, _Rows]:
+        """Take the next frame; return what to store.
+
+        Raises
+        ------
+        FrameError
+            If the frame does not follow the one before; nothing has changed then.
+        """
+        frame, values = measured.frame, dict(measured.values)
+        self._check_radii(frame)
+        rows: _Rows = {}
+        regions: dict[str, NDArray[np.generic] | float | int] = {}
+
+        def classify(broken: NDArray[np.bool_] | None) -> NDArray[np.integer]:
+            assert measured.bonds is not None
+            regions.update(
+                measure_regions(
+                    np.asarray(values["structure"], np.uint8),
+                    measured.cages.status,
+                    broken,
+                    measured.bonds,
+                )
+            )
+            return np.asarray(regions["region"], np.uint8)
+
+        has_regions = self._settings.has("regions")
+        if self._settings.has("time"):
+            arrays = {name: np.asarray(value) for name, value in values.items()}
+            output = self._time.update(frame, arrays, classify if has_regions else None)
+            values |= output.values
+            rows |= output.rows
+        elif has_regions:
+            classify(None)
+        if has_regions:
+            values |= regions
+            values["region_id"], rows["regions"] = self._follow(measured, values)
+        self._distribution.update(measured.cages)
+        self._statuses += np.bincount(
+            measured.cages.status, minlength=len(self._statuses)
+        )
+        self._factors[int(values["compressibility_status"])] += 1
+        for row, name in enumerate(self._names):
+            value = np.array([values[name]], dtype=np.float64)
+            if np.isfinite(value[0]):
+                self._series.add(row, value)
+            else:
+                self._missing[row] += 1
+        self._n_frames += 1
+        record = FrameRecord(frame.index, frame.step, frame.time, frame.box, values)
+        return record, rows
+
+    def _check_radii(self, frame: Frame) -> None:
+        same = frame.radii == self._first.radii
+        if not (self._settings.varying_radii or same.all()):
+            raise frame.error(
+                "expected the radii of the first frame, as the last frame has them; "
+                f"found others for {frame.name_particles(~same)}; give the diameters "
+                "with --diameter (or diameter=)"
+            )
+
+    def _follow(
+        self,
+        measured: MeasuredFrame,
+        values: Mapping[str, NDArray[np.generic] | float | int],
+    ) -> tuple[NDArray[np.int64], dict[str, NDArray[np.generic]]]:
+        """Lasting region of each particle, and the rows of the region table."""
+        assert measured.bonds is not None
+        frame, cages = measured.frame, measured.cages
+        table = find_regions(
+            frame,
+            np.asarray(values["region"], np.uint8),
+            measured.bonds,
+            cages.free_volume,
+            np.asarray(values["local_packing_fraction"], np.float64),
+            cages.weakest_window,
+            self._settings.regions,
+        )
+        ids = self._tracker.update(frame.ids, table)
+        k = len(ids)
+        member = table.label >= 0
+        region_id = np.full(len(member), -1, dtype=np.int64)
+        region_id[member] = ids[table.label[member]]
+        return region_id, {
+            "frame": np.full(k, frame.index),
+            "step": np.full(k, frame.step),
+            "time": np.full(k, frame.time),
+            "region_id": ids,
+            "kind": table.kind,
+            "size": table.size,
+            "center": table.center,
+            "free_volume_mean": table.free_volume,
+            "free_volume_count": table.n_free_volume,
+            "local_packing_fraction_mean": table.packing_fraction,
+            "local_packing_fraction_count": table.n_packing_fraction,
+            "weakest_window_mean": table.weakest_window,
+            "weakest_window_count": table.n_weakest_window,
+        }
+
+    def conclude(self) -> tuple[dict[str, NDArray[np.generic]], dict[str, object]]:
+        """Arrays and summary of the frames so far; changes nothing."""
+        arrays = self._distribution.arrays()
+        time: Conclusion | None = None
+        if self._settings.has("time"):
+            time = self._time.conclude()
+            arrays |= time.arrays
+        summary = self._summary(time)
+        return arrays, {name: _jsonable(value) for name, value in summary.items()}
+
+    def _summary(self, time: Conclusion | None) -> dict[str, object]:
+        first = self._first
+        d = first.dimensions
+        estimates = {name: self._estimate(row) for row, name in enumerate(self._names)}
+        phi = estimates["packing_fraction"].mean
+        factor = estimates["compressibility_factor"]
+        if factor.n_missing and not factor.n_values:
+            counted = zip(CompressibilityStatus, self._factors.tolist(), strict=True)
+            why = ", ".join(
+                f"{code.name.lower()} on {n} frames" for code, n in counted if n
+            )
+            factor = dataclasses.replace(factor, reason=why)
+            estimates["compressibility_factor"] = factor
+        summary: dict[str, object] = {
+            "n_frames": self._n_frames,
+            "n_particles": first.n_particles,
+            "dimensions": d,
+            "mean_diameter": first.mean_diameter,
+            "equal_radii": first.equal_radii,
+            "cages": dict(
+                zip(
+                    (code.name.lower() for code in CageStatus),
+                    self._statuses.tolist(),
+                    strict=True,
+                )
+            ),
+            "compressibility_status": dict(
+                zip(
+                    (code.name.lower() for code in CompressibilityStatus),
+                    self._factors.tolist(),
+                    strict=True,
+                )
+            ),
+            "observables": {
+                name: dataclasses.asdict(estimate)
+                for name, estimate in estimates.items()
+            },
+            "free_volume": self._distribution.summary(),
+        }
+        if self._n_frames:
+            summary |= {
+                "equations_of_state": compare_equations(d, first.radii, phi, factor),
+                "lattices": compare_lattices(
+                    d, phi, equal_diameter(first), estimates["free_volume_mean"].mean
+                ),
+                "phase_marks": phase_table(d),
+            }
+        if time is not None:
+            summary["time"] = time.summary
+            summary["time_reasons"] = time.reasons
+        return summary
+
+    def _estimate(self, row: int) -> MeanEstimate:
+        mean = float(self._series.mean(row)[0])
+        estimate = self._series.estimate(row, mean, np.ones(1))
+        return dataclasses.replace(estimate, n_missing=int(self._missing[row]))
+
+    def state(self) -> State:
+        """All that is needed to continue, as arrays."""
+        own = {
+            "missing": self._missing.copy(),
+            "statuses": self._statuses.copy(),
+            "factors": self._factors.copy(),
+            "n_frames": np.array(self._n_frames),
+        }
+        state: State = prefixed("own", own)
+        for name, part in self._parts().items():
+            state |= prefixed(name, part.state())
+        return state
+
+    def restore(self, state: Mapping[str, NDArray[np.generic]]) -> None:
+        """Continue from what :meth:`state` returned."""
+        own = under("own", state)
+        self._missing = np.array(own["missing"], dtype=np.int64)
+        self._statuses = np.array(own["statuses"], dtype=np.int64)
+        self._factors = np.array(own["factors"], dtype=np.int64)
+        self._n_frames = int(own["n_frames"])
+        for name, part in self._parts().items():
+            part.restore(under(name, state))
+
+    def _parts(
+        self,
+    ) -> dict[str, BlockMoments | FreeVolumeDistribution | RegionTracker | TimeFold]:
+        return {
+            "series": self._series,
+            "distribution": self._distribution,
+            "tracker": self._tracker,
+            "time": self._time,
+        }
+
+
+def _jsonable(value: object) -> object:
+    """Replace what JSON cannot hold: NaN and infinity become null."""
+    if isinstance(value, dict):
+        return {name: _jsonable(item) for name, item in value.items()}
+    if isinstance(value, (list, tuple)):
+        return [_jsonable(item) for item in value]
+    if isinstance(value, np.generic):
+        return _jsonable(value.item())
+    if isinstance(value, float) and not math.isfinite(value):
+        return None
+    return value

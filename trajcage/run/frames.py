@@ -1,0 +1,90 @@
+"""All that can be measured on one frame alone: a pure function for any process."""
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from trajcage.analysis.cages import (
+    default_overlap_tolerance,
+    frame_cages,
+    stored_values,
+)
+from trajcage.analysis.cells import measure_cells
+from trajcage.analysis.contacts import measure_contacts
+from trajcage.analysis.order import measure_order, order_neighbors
+from trajcage.analysis.thermodynamics import measure_thermodynamics
+from trajcage.model import CageTable, Frame, NeighborList
+from trajcage.neighborhood import voronoi
+from trajcage.run.settings import RunSettings
+
+__all__ = ["MeasuredFrame", "measure_frame"]
+
+
+@dataclass(frozen=True, eq=False)
+class MeasuredFrame:
+    """A frame and what was measured on it.
+
+    Parameters
+    ----------
+    frame : Frame
+        The configuration.
+    cages : CageTable
+        Its cages.
+    values : dict
+        Values of all fields that need this frame only.
+    bonds : NeighborList or None
+        Neighbors of the bond order, without vectors and weights, if regions
+        are wanted.
+    """
+
+    frame: Frame
+    cages: CageTable
+    values: dict[str, NDArray[np.generic] | float | int]
+    bonds: NeighborList | None
+
+
+def measure_frame(frame: Frame, settings: RunSettings) -> MeasuredFrame:
+    """Measure a frame.
+
+    Parameters
+    ----------
+    frame : Frame
+        The configuration.
+    settings : RunSettings
+        What to measure and how.
+
+    Raises
+    ------
+    FrameError
+        If the frame cannot be measured; the message says why.
+    """
+    tolerance = settings.cages.overlap_tolerance
+    if tolerance is None:
+        tolerance = default_overlap_tolerance(frame)
+    table, overlaps = frame_cages(frame, settings.cages)
+    values: dict[str, NDArray[np.generic] | float | int] = {**stored_values(table)}
+    values |= measure_thermodynamics(frame, table, overlaps, tolerance)
+    if settings.varying_radii:
+        values["radius"] = frame.radii
+    if settings.store_positions:
+        values["position"] = frame.positions
+    bonds = None
+    if settings.has("cells"):
+        cells = voronoi(frame)
+        values |= measure_cells(frame, cells[0])
+        if settings.has("order"):
+            values |= measure_order(frame, cells, settings.order)
+        if settings.has("regions"):
+            bonds = _bare(order_neighbors(frame, cells, settings.order)[0])
+    if settings.has("rattlers"):
+        values |= measure_contacts(frame, settings.contacts)
+    return MeasuredFrame(frame, table, values, bonds)
+
+
+def _bare(neighbors: NeighborList) -> NeighborList:
+    """Drop the geometry, which would make up most of what a worker sends home."""
+    d = neighbors.vectors.shape[1]
+    return NeighborList(
+        neighbors.offsets, neighbors.neighbors, np.zeros((0, d)), np.zeros(0)
+    )

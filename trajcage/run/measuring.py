@@ -1,0 +1,254 @@
+"""The main job: from a trajectory to one result file."""
+
+import contextlib
+import os
+from collections.abc import Callable, Collection, Mapping, Sequence
+from dataclasses import asdict, replace
+from pathlib import Path
+
+import numpy as np
+
+from trajcage.analysis.cages import CageOptions, check_packing
+from trajcage.analysis.contacts import ContactOptions
+from trajcage.analysis.order import OrderOptions
+from trajcage.analysis.regions import RegionOptions
+from trajcage.analysis.time_options import TimeOptions
+from trajcage.errors import FrameError, ResultFileError, UsageError
+from trajcage.model import Frame
+from trajcage.readers import Trajectory, open_trajectory
+from trajcage.run.fold import RunFold
+from trajcage.run.inputs import Diameter, FrameSelection, input_options
+from trajcage.run.loop import Progress, fold_frames
+from trajcage.run.provenance import describe_inputs, parameters
+from trajcage.run.settings import RunSettings
+from trajcage.run.workers import measured_frames
+from trajcage.store import Result, ResultWriter, open_result
+
+__all__ = ["measure"]
+
+
+def measure(
+    topology: str | Path,
+    trajectory: str | Path | None = None,
+    *,
+    output: str | Path,
+    diameter: Diameter | None = None,
+    box: str | Sequence[float] | Sequence[Sequence[float]] | None = None,
+    dimensions: int | None = None,
+    periodic: str | None = None,
+    dt: float | None = None,
+    time_unit: str | None = None,
+    start: int | None = None,
+    stop: int | None = None,
+    step: int | None = None,
+    reach: float | None = None,
+    overlap_tolerance: float | None = None,
+    strict: bool = False,
+    skip: Collection[str] = (),
+    order: OrderOptions | None = None,
+    contacts: ContactOptions | None = None,
+    regions: RegionOptions | None = None,
+    time_analysis: TimeOptions | None = None,
+    workers: int = 1,
+    resume: bool = False,
+    overwrite: bool = False,
+    store_positions: bool = False,
+    progress: Progress | None = None,
+    notify: Callable[[str], None] | None = None,
+    command_line: str | None = None,
+) -> Result:
+    """Measure every frame of a trajectory and write one result file.
+
+    Parameters
+    ----------
+    topology, trajectory : path
+        Any files that MDAnalysis reads; a single file can be both.
+    output : path
+        The result file.
+    diameter : float, mapping of type name to float, or str, optional
+        Hard-sphere diameters, instead of those in the input. Strings take the forms
+        of the command line: ``"1.0"``, ``"A=1.0,B=1.4"``, ``"@file"``, or
+        ``"wca:EPSILON_OVER_KT"`` for the effective diameter of a soft repulsion.
+    box, dimensions, periodic
+        Box, number of dimensions and periodic edges (``"xyz"``, ``"none"``), instead
+        of those in the input.
+    dt : float, optional
+        Time of one simulation step.
+    time_unit : str, optional
+        Name of the time unit.
+    start, stop, step : int, optional
+        Frames to measure, as in a Python slice.
+    reach : float, length, optional
+        A cage that extends further than this is open; ten of the largest diameters
+        unless given.
+    overlap_tolerance : float, length, optional
+        Overlaps up to this depth count as contacts. Unless given it follows from the
+        resolution of the stored coordinates.
+    strict : bool
+        Whether a deeper overlap ends the run.
+    skip : collection of str
+        Families of quantities to leave out: cells, order, rattlers, regions, time.
+    order, contacts, regions, time_analysis
+        Settings of these parts.
+    workers : int
+        Processes; 0 for one on every core. Results do not depend on it. With more
+        than one, call this under ``if __name__ == "__main__":``.
+    resume : bool
+        Whether to continue the file, if there is one.
+    overwrite : bool
+        Whether to replace the file, if there is one.
+    store_positions : bool
+        Whether to store the positions too.
+    progress : callable, optional
+        Called with the number of frames done and of all frames.
+    notify : callable, optional
+        Called with one line of text about anything the user should know.
+    command_line : str, optional
+        Recorded in the file.
+
+    Returns
+    -------
+    Result
+        The open result file.
+
+    Raises
+    ------
+    InputError
+        If the input cannot be used; frames before a bad one are in the file.
+    UsageError
+        If an option makes no sense.
+    ResultFileError
+        If the output is in the way, damaged, or does not fit when resumed.
+    InterruptedRunError
+        If SIGINT or SIGTERM stopped the run; finished frames are in the file.
+    """
+    if resume and overwrite:
+        raise UsageError("resume continues a file and overwrite replaces it: give one")
+    if workers < 0:
+        raise UsageError(f"workers must be 0 (all cores) or more, got {workers}")
+    selection = FrameSelection(start, stop, step)
+    source = input_options(
+        topology,
+        trajectory,
+        diameter=diameter,
+        box=box,
+        dimensions=dimensions,
+        periodic=periodic,
+        dt=dt,
+        time_unit=time_unit,
+    )
+    settings = RunSettings(
+        skip=skip,
+        store_positions=store_positions,
+        cages=CageOptions(reach, overlap_tolerance, strict),
+        order=order or OrderOptions(),
+        contacts=contacts or ContactOptions(),
+        regions=regions or RegionOptions(),
+        time=time_analysis or TimeOptions(),
+    )
+    target = Path(output)
+    resume = resume and target.exists()
+    if target.exists() and not (resume or overwrite):
+        raise ResultFileError(
+            f"{target} exists; continue it with --resume, replace it with --overwrite, "
+            "or choose another name"
+        )
+    notes: list[str] = []
+
+    def note(text: str) -> None:
+        notes.append(text)
+        if notify is not None:
+            notify(text)
+
+    given = {
+        "diameter": diameter,
+        "effective_diameter": source.diameter,
+        "box": box,
+        "dimensions": dimensions,
+        "periodic": periodic,
+        "dt": dt,
+        "time_unit": time_unit,
+        "frames": asdict(selection),
+    }
+    with open_trajectory(source) as opened:
+        frames = selection.of(opened.n_frames)
+        first = opened.frame(frames[0])
+        if _radii_vary(opened, first, frames[-1]):
+            settings = replace(settings, varying_radii=True)
+        description = opened.describe()
+        for text in (*description.notes, check_packing(first)):
+            if text:
+                note(text)
+        inputs = describe_inputs(source)
+        options = {
+            "inputs": [{k: entry[k] for k in ("size", "sha256")} for entry in inputs],
+            **given,
+            "settings": asdict(settings),
+        }
+        record = parameters(options, inputs, description, notes, command_line)
+        with _open_writer(
+            target, resume, overwrite, settings, first, opened, options, record
+        ) as writer:
+            fold = RunFold(settings, first)
+            if writer.state is not None:
+                fold.restore(writer.state)
+            measured = measured_frames(
+                opened,
+                frames[writer.frames_complete :],
+                settings,
+                workers or len(os.sched_getaffinity(0)),
+            )
+            fold_frames(measured, fold, writer, len(frames), note, progress)
+    return open_result(target)
+
+
+def _open_writer(
+    target: Path,
+    resume: bool,
+    overwrite: bool,
+    settings: RunSettings,
+    first: Frame,
+    trajectory: Trajectory,
+    options: Mapping[str, object],
+    record: Mapping[str, object],
+) -> ResultWriter:
+    """Start the result file, or open it behind its last frame."""
+    d = first.dimensions
+    fields, tables = settings.fields(d), settings.tables(d)
+    arrays = settings.arrays(d, first.mean_diameter)
+    if resume:
+        return ResultWriter.resume(
+            target,
+            options=options,
+            fields=fields,
+            tables=tables,
+            arrays=arrays,
+            store_positions=settings.store_positions,
+            flush_every=0,
+        )
+    return ResultWriter.create(
+        target,
+        fields=fields,
+        tables=tables,
+        arrays=arrays,
+        n_particles=first.n_particles,
+        dimensions=d,
+        periodic=first.box.periodic,
+        ids=first.ids,
+        species=first.species,
+        type_names=trajectory.type_names,
+        radii=first.radii,
+        parameters=record,
+        length_unit="length",
+        time_unit=trajectory.time_unit,
+        overwrite=overwrite,
+        store_positions=settings.store_positions,
+        flush_every=0,
+    )
+
+
+def _radii_vary(trajectory: Trajectory, first: Frame, last: int) -> bool:
+    """Whether the radii of the last frame differ from those of the first."""
+    with contextlib.suppress(FrameError):  # it has its say when its turn comes
+        return not np.array_equal(trajectory.frame(last).radii, first.radii)
+    return False

@@ -1,0 +1,60 @@
+"""What made a result: versions, inputs, command line."""
+
+import platform
+from collections.abc import Mapping
+from dataclasses import asdict
+from importlib import metadata
+from pathlib import Path
+
+import trajcage
+from trajcage.readers import InputDescription, InputOptions
+from trajcage.store import describe_file
+
+__all__ = ["describe_inputs", "parameters"]
+
+_LIBRARIES = ("MDAnalysis", "freud-analysis", "gsd", "h5py", "numba", "numpy", "scipy")
+
+
+def describe_inputs(options: InputOptions) -> list[dict[str, str | int]]:
+    """Name, size and sha256 of every file that the run reads."""
+    paths: list[Path] = [options.topology]
+    if options.trajectory is not None:
+        paths.append(options.trajectory)
+    if isinstance(options.diameter, str) and options.diameter.startswith("@"):
+        paths.append(Path(options.diameter[1:]).expanduser())
+    return [describe_file(path) for path in paths]
+
+
+def parameters(
+    options: Mapping[str, object],
+    inputs: list[dict[str, str | int]],
+    description: InputDescription,
+    notes: list[str],
+    command_line: str | None,
+) -> dict[str, object]:
+    """Everything that a result file records about its run.
+
+    Parameters
+    ----------
+    options : dict
+        What must agree when the run is resumed.
+    inputs : list of dict
+        From :func:`describe_inputs`.
+    description : InputDescription
+        What was understood of the input.
+    notes : list of str
+        What else the user was told.
+    command_line : str or None
+        The command, if there was one.
+    """
+    versions = {"trajcage": trajcage.__version__, "python": platform.python_version()}
+    versions |= {name: metadata.version(name) for name in _LIBRARIES}
+    return {
+        "options": options,
+        "inputs": inputs,
+        "input": asdict(description),
+        "notes": notes,
+        "versions": versions,
+        "platform": platform.platform(),
+        "command_line": command_line or "library call",
+    }

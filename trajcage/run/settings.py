@@ -1,0 +1,163 @@
+"""What a run measures: families of quantities and what they store."""
+
+from collections.abc import Collection
+from dataclasses import dataclass, field
+
+from trajcage.analysis import (
+    cages,
+    cells,
+    contacts,
+    fold,
+    order,
+    regions,
+    thermodynamics,
+)
+from trajcage.analysis.cages import CageOptions
+from trajcage.analysis.conclusion import CURVE_ARRAYS
+from trajcage.analysis.contacts import ContactOptions
+from trajcage.analysis.distributions import distribution_arrays
+from trajcage.analysis.order import OrderOptions
+from trajcage.analysis.regions import Region, RegionOptions
+from trajcage.analysis.time_options import TimeOptions
+from trajcage.errors import UsageError
+from trajcage.model import Field
+from trajcage.store import ArraySpec, TableSpec
+
+__all__ = ["FAMILIES", "RunSettings"]
+
+#: Families of quantities that can be left out, with the families they build on.
+FAMILIES: dict[str, tuple[str, ...]] = {
+    "cells": (),
+    "order": ("cells",),
+    "rattlers": (),
+    "regions": ("order",),
+    "time": (),
+}
+
+_RADIUS = Field("radius", "Hard-sphere radius of the particle.", "length")
+_REGION_ID = Field(
+    "region_id",
+    "Lasting id of the connected region that the particle is part of, as in the table "
+    "regions; -1 if that is too small to be listed",
+    dtype="i8",
+)
+
+
+@dataclass(frozen=True)
+class RunSettings:
+    """How every frame is measured; instances pickle.
+
+    Parameters
+    ----------
+    skip : collection of str
+        Families of :data:`FAMILIES` to leave out; those that build on them are left
+        out too.
+    varying_radii : bool
+        Whether radii are stored for each frame.
+    store_positions : bool
+        Whether positions are stored.
+    cages, order, contacts, regions, time
+        Options of the parts.
+
+    Raises
+    ------
+    UsageError
+        If a family is unknown.
+    """
+
+    skip: Collection[str] = ()
+    varying_radii: bool = False
+    store_positions: bool = False
+    cages: CageOptions = field(default_factory=CageOptions)
+    order: OrderOptions = field(default_factory=OrderOptions)
+    contacts: ContactOptions = field(default_factory=ContactOptions)
+    regions: RegionOptions = field(default_factory=RegionOptions)
+    time: TimeOptions = field(default_factory=TimeOptions)
+
+    def __post_init__(self) -> None:
+        left_out = set(self.skip)
+        for name in self.skip:
+            if name not in FAMILIES:
+                raise UsageError(
+                    f"there is no family {name!r} to skip; choose among "
+                    + ", ".join(FAMILIES)
+                )
+        for name, needed in FAMILIES.items():  # in an order that carries on
+            if left_out.intersection(needed):
+                left_out.add(name)
+        object.__setattr__(self, "skip", tuple(sorted(left_out)))
+
+    def has(self, family: str) -> bool:
+        """Whether a family is measured."""
+        return family not in self.skip
+
+    def fields(self, dimensions: int) -> tuple[Field, ...]:
+        """Quantities of every frame."""
+        d = dimensions
+        declared = [*cages.fields(d), *thermodynamics.fields(d)]
+        if self.has("cells"):
+            declared += cells.fields(d)
+        if self.has("order"):
+            declared += order.fields(d)
+        if self.has("rattlers"):
+            declared += contacts.fields(self.contacts)
+        if self.has("regions"):
+            declared += [*regions.FIELDS, _REGION_ID]
+        if self.has("time"):
+            declared += fold.FIELDS
+        if self.varying_radii:
+            declared.append(_RADIUS)
+        return tuple(declared)
+
+    def tables(self, dimensions: int) -> tuple[TableSpec, ...]:
+        """Tables that grow with the frames."""
+        declared: list[TableSpec] = []
+        if self.has("time"):
+            declared += fold.growing_tables(dimensions)
+        if self.has("regions"):
+            declared.append(_region_table(dimensions))
+        return tuple(declared)
+
+    def arrays(self, dimensions: int, mean_diameter: float) -> tuple[ArraySpec, ...]:
+        """Arrays beside the frames."""
+        declared = [*distribution_arrays(dimensions, mean_diameter)]
+        if self.has("time"):
+            declared += CURVE_ARRAYS
+        return tuple(declared)
+
+
+def _region_table(dimensions: int) -> TableSpec:
+    d = dimensions
+    kinds = ", ".join(f"{code.value} {code.name.lower()}" for code in Region)
+
+    def column(
+        name: str, description: str, unit: str = "1", dtype: str = "f8", size: int = 0
+    ) -> Field:
+        shape = (size,) if size else ()
+        return Field(name, description, unit, dtype, False, shape)
+
+    columns = (
+        column("frame", "Source frame", dtype="i8"),
+        column("step", "Simulation step of the frame", dtype="i8"),
+        column("time", "Time of the frame", "time"),
+        column("region_id", "Lasting id of the region", dtype="i8"),
+        column("kind", f"Region: {kinds}", dtype="u1"),
+        column("size", "Number of particles", dtype="i8"),
+        column(
+            "center",
+            "Center of the particles; NaN along edges that the region winds around",
+            "length",
+            size=d,
+        ),
+        column("free_volume_mean", "Mean free volume", f"length+{d}"),
+        column("free_volume_count", "Closed cages in that mean", dtype="i8"),
+        column("local_packing_fraction_mean", "Mean local packing fraction"),
+        column("local_packing_fraction_count", "Particles in that mean", dtype="i8"),
+        column("weakest_window_mean", "Mean weakest opening ratio"),
+        column("weakest_window_count", "Closed cages in that mean", dtype="i8"),
+    )
+    return TableSpec(
+        "/trajcage/regions",
+        columns,
+        description="Connected regions of crystal, glass and fluid, largest first",
+    )
