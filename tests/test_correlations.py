@@ -189,3 +189,20 @@ def test_lags_and_origins_of_a_plan():
         TimeOptions(max_lag=0)
     with pytest.raises(UsageError, match="positive wave_number, got -1"):
         TimeOptions(wave_number=-1.0)
+
+
+def test_a_variance_needs_four_origins():
+    sites, box = triangular(3, 1.1)
+    paths = sites + vibration(np.random.default_rng(7), (12, *sites.shape), 0.3)
+    fold, *_ = run(paths, box, EVERY)
+    result = fold.conclude()
+    table = result.curves["correlations"]
+    enough = table["n_origins"] >= 4
+    assert 0 < enough.sum() < len(enough)
+    for name in ("chi_4", "chi_4_error"):
+        assert np.isfinite(table[name][enough]).all()
+        assert np.isnan(table[name][~enough]).all()
+    peak = np.nanargmax(table["chi_4"])
+    assert result.summary["chi_4_peak_lag"] == table["lag"][peak]
+    fold, *_ = run(paths[:4], box, EVERY)
+    assert "four or more" in fold.conclude().reasons["chi_4_peak"]

@@ -7,7 +7,7 @@ import numpy as np
 import pytest
 from moving import collect, frames, run, triangular, vibration
 
-from trajcage.analysis.conclusion import CURVES, SUMMARY
+from trajcage.analysis.conclusion import CURVE_ARRAYS, CURVES, SUMMARY
 from trajcage.analysis.fold import FIELDS, TimeFold
 from trajcage.analysis.time_options import TimeOptions
 from trajcage.errors import FrameError, ResultFileError, UsageError
@@ -120,6 +120,7 @@ def test_one_frame_gives_reasons_instead_of_results():
         assert list(result.curves[name]) == [field.name for field in fields]
         assert all(len(column) == 0 for column in result.curves[name].values())
         assert "1 frames: the time analysis needs at least two" in result.reasons[name]
+    assert [spec.name for spec in CURVE_ARRAYS] == list(result.arrays)
     for field in SUMMARY:
         missing = np.isnan(result.summary[field.name])
         assert missing == (field.name in result.reasons), field.name

@@ -32,7 +32,7 @@ def test_a_clean_step_of_size_d_gives_d_squared_on_its_frame():
     assert p_hop[17] == pytest.approx(1.69, rel=1e-12)
     assert np.isnan(p_hop[[0, 5, 35, 39]]).all()
     assert np.isfinite(p_hop[[6, 34]]).all()
-    options = TimeOptions(hop_half_window=6)
+    options = TimeOptions(hop_half_window=6, caging_length=1.29)
     fold, _, _, jumps = run(paths, BOX, options)
     assert jumps["particle"].tolist() == [0]
     assert jumps["frame"].tolist() == [17]
@@ -40,7 +40,11 @@ def test_a_clean_step_of_size_d_gives_d_squared_on_its_frame():
     assert jumps["time"].tolist() == [17.0]
     assert jumps["p_hop"][0] == pytest.approx(1.69, rel=1e-12)
     np.testing.assert_allclose(jumps["displacement"], [size], atol=1e-12)
-    assert fold.conclude().summary["jumps"] == 1
+    summary = fold.conclude().summary
+    assert summary["jumps"] == 1
+    assert summary["hop_threshold"] == pytest.approx(1.29**2)
+    *_, jumps = run(paths, BOX, TimeOptions(hop_half_window=6, caging_length=1.31))
+    assert len(jumps["particle"]) == 0
 
 
 def test_online_and_whole_paths_agree():

@@ -135,7 +135,11 @@ class CageTracker:
         values: Mapping[str, NDArray[np.generic]],
         tick: float,
         classify: Classify | None,
-    ) -> tuple[NDArray[np.bool_], dict[str, NDArray[np.generic]]]:
+    ) -> tuple[
+        NDArray[np.bool_],
+        NDArray[np.integer] | None,
+        dict[str, NDArray[np.generic]],
+    ]:
         """Take the next frame.
 
         Parameters
@@ -157,6 +161,8 @@ class CageTracker:
         -------
         mobile : (n,) bool
             Particles that broke a cage within the mobility window.
+        region : (n,) int or None
+            What `classify` returned.
         events : dict of str to array
             Rows of the event table.
         """
@@ -169,9 +175,9 @@ class CageTracker:
         age = frame.time - self._last_break
         window = self._rule.mobility_window
         mobile = age < (10.0 * tick if window is None else window) - grain
-        known = dict(values)
+        known, region = dict(values), None
         if classify is not None:
-            known["region"] = classify(mobile)
+            known["region"] = region = classify(mobile)
         present = Present.of(frame, motion, known)
         self._leave(self._whole & (2 * n_lost >= self._critical))
         self._whole = (2 * n_lost < self._critical) & (self._size > 0)
@@ -182,7 +188,7 @@ class CageTracker:
         if len(restart):
             self._begin(restart, fresh, present)
         self._previous = present
-        return mobile, events
+        return mobile, region, events
 
     def _losses(
         self, frame: Frame, motion: Motion, grain: float

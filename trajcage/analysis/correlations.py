@@ -62,7 +62,8 @@ CORRELATION_FIELDS = (
     ),
     *_pair(
         "chi_4",
-        "Variance of that share over the origins, times the number of particles",
+        "Variance of that share over the origins, times the number of particles; NaN "
+        "with fewer than four origins",
     ),
     *_pair(
         "self_scattering",
@@ -86,6 +87,9 @@ CORRELATION_FIELDS = (
         False,
     ),
 )
+
+# A variance over fewer origins, and even more so its error, is noise.
+_FEWEST_FOR_VARIANCE = 4
 
 # Components of the value averaged over origins.
 _R2, _R4, _RELATIVE, _Q, _Q2, _SCATTERING, _BONDS, _CAGES = range(8)
@@ -310,7 +314,7 @@ class Correlations:
         # The mean of few or correlated origins follows their fluctuations; its own
         # variance makes up for what they lose by that.
         error = self._moments.estimate(row, float(mean[_Q]), unit[_Q]).error
-        if np.isfinite(error):
+        if self._moments.count(row) >= _FEWEST_FOR_VARIANCE:
             variance = max(mean[_Q2] - mean[_Q] ** 2, 0.0) + error**2
             gradient = self._n * (unit[_Q2] - 2.0 * mean[_Q] * unit[_Q])
             functions["chi_4"] = (float(self._n * variance), gradient)

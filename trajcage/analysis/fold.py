@@ -168,17 +168,10 @@ class TimeFold:
             long to unwrap.
         """
         self._check(frame)
-        region: list[NDArray[np.integer]] = []
-
-        def classified(broken: NDArray[np.bool_]) -> NDArray[np.integer]:
-            if classify is not None:
-                region.append(classify(broken))
-            return region[0]
-
         motion = self._unwrapper.advance(frame)
         self._advance_clock(frame)
-        broken, events = self._cages.advance(
-            frame, motion, values, self._tick, None if classify is None else classified
+        broken, region, events = self._cages.advance(
+            frame, motion, values, self._tick, classify
         )
         jumps = self._hops.advance(frame, motion.path)
         self._n_jumps += len(jumps["particle"])
@@ -196,7 +189,7 @@ class TimeFold:
             scalars,
             {"events": events, "jumps": jumps},
             broken,
-            region[0] if region else None,
+            region,
         )
 
     def _check(self, frame: Frame) -> None:
