@@ -1,17 +1,20 @@
 """Measure the cages of many particles: grid, flood, wall, and growth of the reach."""
 
 from concurrent.futures import ThreadPoolExecutor
+from functools import partial
 from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
 
+from trajcage.kernel import wall2d, wall3d
 from trajcage.kernel.codes import CLOSED, INVALID, NEED_CAPACITY, NEED_HALO
-from trajcage.kernel.flood3d import flood
+from trajcage.kernel.flood2d import flood as flood2d
+from trajcage.kernel.flood3d import flood as flood3d
 from trajcage.kernel.grid import Grid, build_grid
 from trajcage.kernel.jit import compiled, helper
 from trajcage.kernel.scratch import X, Y, Z, make_scratch
-from trajcage.kernel.wall3d import AREA, integrate_wall, opening_ratio, window
+from trajcage.kernel.wall3d import AREA
 
 __all__ = ["Cages", "measure_cages"]
 
@@ -19,7 +22,8 @@ __all__ = ["Cages", "measure_cages"]
 #: inconsistent, which takes input that is degenerate at exactly this level.
 _SHIFTS = np.array([1e-10, 3e-9, 1e-7])
 
-_PENDING = 255
+#: Status of a particle that waits for a wider halo.
+PENDING = 255
 
 
 class Cages(NamedTuple):
@@ -78,13 +82,50 @@ def _make_rows(size: int) -> _Rows:
     )
 
 
+# `plane` is None in 3D and a number in 2D: numba compiles only the branch that
+# the type of the argument selects.
+
+
 @helper
-def _keep_rows(grid, s, i, bounding, n_corners, rows):  # type: ignore[no-untyped-def]
+def _cage(grid, s, i, radius, first, limits, shift, plane):  # type: ignore[no-untyped-def]
+    """Flood and integrate one cage."""
+    xi, yi, zi = grid.home[i, 0], grid.home[i, 1], grid.home[i, 2]
+    if plane is None:
+        code, n, n_cells, n_corners = flood3d(
+            grid, s, i, xi, yi, zi, radius, first, limits, shift
+        )
+        if code != CLOSED:
+            return n_corners, (code, 0.0, 0.0, 0.0, 0, 0.0, -1)
+        return n_corners, wall3d.integrate_wall(s, n, n_cells, n_corners)
+    code, n, n_cells, n_corners = flood2d(
+        grid, s, i, xi, yi, zi, radius, first, limits, shift
+    )
+    if code != CLOSED:
+        return n_corners, (code, 0.0, 0.0, 0.0, 0, 0.0, -1)
+    return n_corners, wall2d.integrate_wall(s, n, n_cells, n_corners)
+
+
+@helper
+def _window(grid, s, q, row, members, plane):  # type: ignore[no-untyped-def]
+    """Write the particles of the window at corner q; return its opening ratio."""
+    if plane is None:
+        a, b, c = wall3d.window(s, q)
+        members[row, 2] = grid.owner[s.found[c]]
+        ratio = wall3d.opening_ratio(s, a, b, c)
+    else:
+        a, b = wall2d.window(s, q)
+        ratio = wall2d.opening_ratio(s, a, b)
+    members[row, 0] = grid.owner[s.found[a]]
+    members[row, 1] = grid.owner[s.found[b]]
+    return ratio
+
+
+@helper
+def _keep_rows(grid, s, i, bounding, n_corners, rows, plane):  # type: ignore[no-untyped-def]
     """Copy patches and windows of one cage; False if the rows are full."""
-    if (
-        rows.count[0] + bounding > len(rows.patch_owner)
-        or rows.count[1] + n_corners > len(rows.window_owner)
-    ):
+    if rows.count[0] + bounding > len(rows.patch_owner) or rows.count[
+        1
+    ] + n_corners > len(rows.window_owner):
         return False
     for m in range(bounding):
         a = s.seen[m]
@@ -97,13 +138,11 @@ def _keep_rows(grid, s, i, bounding, n_corners, rows):  # type: ignore[no-untype
         rows.patch_numbers[row, 3] = s.near[Z, a]
         rows.count[0] += 1
     for q in range(n_corners):
-        a, b, c = window(s, q)
         row = rows.count[1]
         rows.window_owner[row] = i
-        rows.window_neighbors[row, 0] = grid.owner[s.found[a]]
-        rows.window_neighbors[row, 1] = grid.owner[s.found[b]]
-        rows.window_neighbors[row, 2] = grid.owner[s.found[c]]
-        rows.window_numbers[row, 0] = opening_ratio(s, a, b, c)
+        rows.window_numbers[row, 0] = _window(
+            grid, s, q, row, rows.window_neighbors, plane
+        )
         for axis in range(3):
             rows.window_numbers[row, 1 + axis] = s.corner[q, axis]
         rows.count[1] += 1
@@ -111,43 +150,50 @@ def _keep_rows(grid, s, i, bounding, n_corners, rows):  # type: ignore[no-untype
 
 
 @compiled
-def _measure_range(grid, s, todo, begin, radii, settings, shifts, keep, rows, numbers, status, members):  # type: ignore[no-untyped-def]
+def _measure_range(
+    grid,
+    s,
+    todo,
+    begin,
+    radii,
+    settings,
+    shifts,
+    keep,
+    rows,
+    numbers,
+    status,
+    bounds,
+    members,
+    plane,
+):  # type: ignore[no-untyped-def]
     """Measure particles ``todo[begin:]``; return where it stopped for more room."""
     reach, first, r_max, tolerance = settings
     for at in range(begin, len(todo)):
         i = todo[at]
-        xi, yi, zi = grid.home[i, 0], grid.home[i, 1], grid.home[i, 2]
-        largest = radii[i] + r_max
-        limits = (reach, largest, tolerance, grid.halo)
-        code = INVALID
+        limits = (reach, radii[i] + r_max, tolerance, grid.halo)
+        n_corners, cage = 0, (INVALID, 0.0, 0.0, 0.0, 0, 0.0, -1)
         for attempt in range(len(shifts)):
-            code, n, n_cells, n_corners = flood(
-                grid, s, i, xi, yi, zi, radii[i], first, limits, shifts[attempt]
+            n_corners, cage = _cage(
+                grid, s, i, radii[i], first, limits, shifts[attempt], plane
             )
-            if code == CLOSED:
-                code, volume, surface, wall_sum, bounding, weakest, where = integrate_wall(
-                    s, n, n_cells, n_corners
-                )
-            if code != INVALID:
+            if cage[0] != INVALID:
                 break
+        code, volume, surface, wall_sum, bounding, weakest, where = cage
         if code == NEED_CAPACITY:
             return at
         if code == NEED_HALO:
-            status[i] = 255
+            status[i] = PENDING
             continue
         if code == CLOSED:
-            if keep and not _keep_rows(grid, s, i, bounding, n_corners, rows):
+            if keep and not _keep_rows(grid, s, i, bounding, n_corners, rows, plane):
                 return at
             numbers[i, 0] = volume
             numbers[i, 1] = surface
             numbers[i, 2] = wall_sum
-            numbers[i, 3] = weakest if where >= 0 else np.nan
-            members[i, 0] = bounding
+            bounds[i] = bounding
             if where >= 0:
-                a, b, c = window(s, where)
-                members[i, 1] = grid.owner[s.found[a]]
-                members[i, 2] = grid.owner[s.found[b]]
-                members[i, 3] = grid.owner[s.found[c]]
+                numbers[i, 3] = weakest
+                _window(grid, s, where, i, members, plane)
         status[i] = code
     return len(todo)
 
@@ -218,31 +264,30 @@ def measure_cages(
         edges[2, 2] = side
     far = (20.0 * r_max) if reach is None else reach * scale
     numbers = np.full((n, 4), np.nan)
-    status = np.full(n, _PENDING, np.uint8)
-    members = np.full((n, 4), -1, np.int64)
+    status = np.full(n, PENDING, np.uint8)
+    bounds = np.full(n, -1, np.int32)
+    members = np.full((n, d), -1, np.int64)
+    output = (numbers, status, bounds, members)
     wanted = np.zeros(n, bool)
     wanted[slice(None) if subset is None else subset] = True
     halo = 1.7 * first
     all_rows: list[_Rows] = []
-    capacity = (512, 256)
     while wanted.any():
         grid = build_grid(xyz, edges, corner, flags, radius, halo, side)
+        if d == 2:
+            grid.shape[1, 2] = 1  # nothing lies beyond the plane
         todo = grid.order[wanted[grid.order]]
         settings = (far, first, r_max, overlap_tolerance * scale)
         parts = np.array_split(todo, max(1, min(threads, len(todo))))
 
-        def work(part: NDArray[np.int64], grid: Grid = grid) -> list[_Rows]:
-            return _measure_part(
-                grid, part, radius, settings, windows, capacity, numbers, status, members
-            )
-
+        work = partial(_measure_part, grid, radius, settings, windows, output)
         if len(parts) == 1:
             all_rows += work(parts[0])
         else:
             with ThreadPoolExecutor(len(parts)) as pool:
                 for rows in pool.map(work, parts):
                     all_rows += rows
-        wanted &= status == _PENDING
+        wanted &= status == PENDING
         halo *= 1.6
         first = min(1.3 * first, halo)
     if subset is not None:
@@ -258,9 +303,9 @@ def measure_cages(
         numbers[:, 1].copy(),
         numbers[:, 2].copy(),
         status,
-        members[:, 0].astype(np.int32),
+        bounds,
         numbers[:, 3].copy(),
-        members[:, 1 : 1 + d].copy(),
+        members,
         wall,
         shut,
     )
@@ -268,25 +313,32 @@ def measure_cages(
 
 def _measure_part(
     grid: Grid,
-    todo: NDArray[np.int64],
     radius: NDArray[np.float64],
     settings: tuple[float, float, float, float],
     keep: bool,
-    capacity: tuple[int, int],
-    numbers: NDArray[np.float64],
-    status: NDArray[np.uint8],
-    members: NDArray[np.int64],
+    output: tuple[NDArray[np.generic], ...],
+    todo: NDArray[np.int64],
 ) -> list[_Rows]:
     """Measure one share of the particles, with more room whenever asked for."""
-    n_candidates, n_cells = capacity
+    n_candidates, n_cells = 512, 256
+    plane = 2 if output[-1].shape[1] == 2 else None
     finished: list[_Rows] = []
     begin = 0
     while begin < len(todo):
         scratch = make_scratch(n_candidates, n_cells)
         rows = _make_rows(max(4 * n_cells, 64 * (len(todo) - begin)) if keep else 0)
         begin = _measure_range(
-            grid, scratch, todo, begin, radius, settings, _SHIFTS, keep, rows,
-            numbers, status, members,
+            grid,
+            scratch,
+            todo,
+            begin,
+            radius,
+            settings,
+            _SHIFTS,
+            keep,
+            rows,
+            *output,
+            plane,
         )
         finished.append(rows)
         n_candidates, n_cells = 2 * n_candidates, 2 * n_cells

@@ -13,13 +13,28 @@ the gap it also holds for contacts of 1e-12. Metric results do not use it.
 
 import numpy as np
 
-from trajcage.kernel.codes import BORDER, CLOSED, INVALID, NEED_CAPACITY, NEED_HALO
-from trajcage.kernel.codes import OPEN, OVERLAP
+from trajcage.kernel.codes import (
+    BORDER,
+    CLOSED,
+    INVALID,
+    NEED_CAPACITY,
+    NEED_HALO,
+    OPEN,
+    OVERLAP,
+)
 from trajcage.kernel.grid import CORNER, INVERSE_HEIGHT, gather
 from trajcage.kernel.jit import helper
 from trajcage.kernel.scratch import GAP, POWER, REACH, SHIFTED, TIE, X, Y, Z
 
-__all__ = ["collect", "flood", "outside", "pad"]
+__all__ = [
+    "collect",
+    "find_cell",
+    "flood",
+    "nearest",
+    "outside",
+    "pad",
+    "ray_to_sphere",
+]
 
 
 @helper
@@ -128,7 +143,19 @@ def _next_along(s, n, px, py, pz, nx, ny, nz, a, b, c):  # type: ignore[no-untyp
 
 
 @helper
-def _ray_to_sphere(px, py, pz, nx, ny, nz, radius):  # type: ignore[no-untyped-def]
+def nearest(s, n):  # type: ignore[no-untyped-def]
+    """Candidate of least power at the particle, -1 if there is none."""
+    who = -1
+    least = np.inf
+    for k in range(n):
+        if s.near[SHIFTED, k] < least:
+            least = s.near[SHIFTED, k]
+            who = k
+    return who
+
+
+@helper
+def ray_to_sphere(px, py, pz, nx, ny, nz, radius):  # type: ignore[no-untyped-def]
     """Parameter at which p + t n leaves the sphere of that radius about 0."""
     aa = nx * nx + ny * ny + nz * nz
     bb = px * nx + py * ny + pz * nz
@@ -147,15 +174,10 @@ def _climb(grid, s, i, xi, yi, zi, ri, n, known, limits, shift):  # type: ignore
     cut it is within ``known``.
     """
     reach, largest, tolerance, halo = limits
-    a = -1
+    a = nearest(s, n)
     b = -1
     c = -1
     d = -1
-    least = np.inf
-    for k in range(n):
-        if s.near[SHIFTED, k] < least:
-            least = s.near[SHIFTED, k]
-            a = k
     px, py, pz = 0.0, 0.0, 0.0
     stage = 0
     while stage < 3:
@@ -188,7 +210,7 @@ def _climb(grid, s, i, xi, yi, zi, ri, n, known, limits, shift):  # type: ignore
                 if (px - ax) * nx + (py - ay) * ny + (pz - az) * nz < 0.0:
                     nx, ny, nz = -nx, -ny, -nz
             who, step = _next_along(s, n, px, py, pz, nx, ny, nz, a, b, c)
-            edge = _ray_to_sphere(px, py, pz, nx, ny, nz, reach)
+            edge = ray_to_sphere(px, py, pz, nx, ny, nz, reach)
             if who >= 0 and step <= edge:
                 qx, qy, qz = px + step * nx, py + step * ny, pz + step * nz
                 need = np.sqrt(qx * qx + qy * qy + qz * qz) + largest
@@ -206,17 +228,14 @@ def _climb(grid, s, i, xi, yi, zi, ri, n, known, limits, shift):  # type: ignore
                 return INVALID, n, known, a, b, c, d
             if need > halo:
                 return NEED_HALO, n, known, a, b, c, d
-            code, total = collect(
+            code, n = collect(
                 grid, s, i, xi, yi, zi, ri, n, known, need, tolerance, shift
             )
             if code != CLOSED:
                 return code, n, known, a, b, c, d
             known = need
-            for k in range(n, total):
-                if stage == 0 and s.near[SHIFTED, k] < least:
-                    least = s.near[SHIFTED, k]
-                    a = k
-            n = total
+            if stage == 0:
+                a = nearest(s, n)
             continue
         if who < 0:
             if outside(grid, xi, yi, zi, qx, qy, qz, largest):
@@ -249,7 +268,7 @@ def _sorted4(a, b, c, d):  # type: ignore[no-untyped-def]
 
 
 @helper
-def _find(s, a, b, c, d):  # type: ignore[no-untyped-def]
+def find_cell(s, a, b, c, d):  # type: ignore[no-untyped-def]
     """Look up a sorted cell; return (cell or -1, free slot of the hash table)."""
     mask = len(s.slots) - 1
     clock = s.clock[0]
@@ -290,7 +309,9 @@ def _gaps(s, begin, n, t):  # type: ignore[no-untyped-def]
     a = s.cell[t, 0]
     px, py, pz = s.vertex[t, 0], s.vertex[t, 1], s.vertex[t, 2]
     near = s.near
-    base = near[SHIFTED, a] - 2.0 * (px * near[X, a] + py * near[Y, a] + pz * near[Z, a])
+    base = near[SHIFTED, a] - 2.0 * (
+        px * near[X, a] + py * near[Y, a] + pz * near[Z, a]
+    )
     for k in range(begin, pad(n)):
         near[GAP, k] = (
             near[SHIFTED, k]
@@ -328,40 +349,30 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):  # type: ignore[no-
     code, n = collect(grid, s, i, xi, yi, zi, ri, 0, -1.0, known, tolerance, shift)
     if code != CLOSED:
         return code, n, 0, 0
-    code, n, known, a, b, c, d = _climb(
-        grid, s, i, xi, yi, zi, ri, n, known, limits, shift
-    )
-    if code != CLOSED:
-        return code, n, 0, 0
-    a, b, c, d = _sorted4(a, b, c, d)
-    px, py, pz, power = _solve(s, a, b, c, d)
-    far = np.sqrt(px * px + py * py + pz * pz)
-    ball = np.sqrt(max(power, 0.0) + largest * largest)
-    while not far + ball <= known:
-        # the vertex is not final: look further and climb again
-        need = far + ball
-        if not need < np.inf:
-            return INVALID, n, 0, 0
-        if need > halo:
-            return NEED_HALO, n, 0, 0
-        code, n = collect(
-            grid, s, i, xi, yi, zi, ri, n, known, need, tolerance, shift
-        )
-        if code != CLOSED:
-            return code, n, 0, 0
-        known = need
-        code, n, known, a, b, c, d = _climb(
+    while True:
+        code, n, known, start_a, start_b, start_c, start_d = _climb(
             grid, s, i, xi, yi, zi, ri, n, known, limits, shift
         )
         if code != CLOSED:
             return code, n, 0, 0
-        a, b, c, d = _sorted4(a, b, c, d)
+        a, b, c, d = _sorted4(start_a, start_b, start_c, start_d)
         px, py, pz, power = _solve(s, a, b, c, d)
-        far = np.sqrt(px * px + py * py + pz * pz)
         ball = np.sqrt(max(power, 0.0) + largest * largest)
+        need = np.sqrt(px * px + py * py + pz * pz) + ball
+        if need <= known:
+            break
+        # the vertex is not final: look further and climb again
+        if not need < np.inf:
+            return INVALID, n, 0, 0
+        if need > halo:
+            return NEED_HALO, n, 0, 0
+        code, n = collect(grid, s, i, xi, yi, zi, ri, n, known, need, tolerance, shift)
+        if code != CLOSED:
+            return code, n, 0, 0
+        known = need
     if outside(grid, xi, yi, zi, px, py, pz, ball):
         return BORDER, n, 0, 0
-    t, slot = _find(s, a, b, c, d)
+    _, slot = find_cell(s, a, b, c, d)
     _new_cell(s, 0, slot, a, b, c, d, px, py, pz, power)
     n_cells = 1
     n_corners = 0
@@ -447,7 +458,7 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):  # type: ignore[no-
                     if not qx * qx + qy * qy + qz * qz <= reach * reach:
                         # the cage leaves the reach along this edge
                         who = -1
-                        edge = _ray_to_sphere(px, py, pz, nx, ny, nz, reach)
+                        edge = ray_to_sphere(px, py, pz, nx, ny, nz, reach)
                         qx, qy, qz = px + edge * nx, py + edge * ny, pz + edge * nz
                         far = reach
                         ball = largest
@@ -460,7 +471,7 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):  # type: ignore[no-
                         elif f == 2:
                             m2 = v3
                         a, b, c, d = _sorted4(m0, m1, m2, np.uint32(who))
-                        other, slot = _find(s, a, b, c, d)
+                        other, slot = find_cell(s, a, b, c, d)
                         if other >= 0:
                             break
                         qx, qy, qz, q_power = _solve(s, a, b, c, d)

@@ -9,7 +9,18 @@ from typing import NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["GAP", "POWER", "REACH", "SHIFTED", "TIE", "Scratch", "X", "Y", "Z", "make_scratch"]
+__all__ = [
+    "GAP",
+    "POWER",
+    "REACH",
+    "SHIFTED",
+    "TIE",
+    "Scratch",
+    "X",
+    "Y",
+    "Z",
+    "make_scratch",
+]
 
 # rows of Scratch.near
 X, Y, Z = 0, 1, 2  # coordinates relative to the particle

@@ -17,12 +17,24 @@ from trajcage.kernel.codes import CLOSED, INVALID
 from trajcage.kernel.jit import helper
 from trajcage.kernel.scratch import POWER, REACH, X, Y, Z
 
-__all__ = ["AREA", "integrate_wall", "opening_ratio", "window"]
+__all__ = [
+    "AREA",
+    "AX",
+    "AY",
+    "STAMP",
+    "TURN",
+    "covered",
+    "integrate_wall",
+    "opening_ratio",
+    "slot_of",
+    "touch",
+    "window",
+]
 
 _FULL = 4.0 * np.pi
 
 # columns of Scratch.patch
-STAMP, _X0, _Y0, _Z0, _RE, _IM, _TURN, _AX, _AY, _AZ, _ARCS, AREA = range(12)
+STAMP, _X0, _Y0, _Z0, _RE, _IM, TURN, AX, AY, AZ, _ARCS, AREA = range(12)
 
 
 @helper
@@ -51,9 +63,21 @@ def polish_corners(s, n_corners):  # type: ignore[no-untyped-def]
         ax, ay, az = px - s.near[X, a], py - s.near[Y, a], pz - s.near[Z, a]
         bx, by, bz = px - s.near[X, b], py - s.near[Y, b], pz - s.near[Z, b]
         cx, cy, cz = px - s.near[X, c], py - s.near[Y, c], pz - s.near[Z, c]
-        fa = pp - 2.0 * (px * s.near[X, a] + py * s.near[Y, a] + pz * s.near[Z, a]) + s.near[POWER, a]
-        fb = pp - 2.0 * (px * s.near[X, b] + py * s.near[Y, b] + pz * s.near[Z, b]) + s.near[POWER, b]
-        fc = pp - 2.0 * (px * s.near[X, c] + py * s.near[Y, c] + pz * s.near[Z, c]) + s.near[POWER, c]
+        fa = (
+            pp
+            - 2.0 * (px * s.near[X, a] + py * s.near[Y, a] + pz * s.near[Z, a])
+            + s.near[POWER, a]
+        )
+        fb = (
+            pp
+            - 2.0 * (px * s.near[X, b] + py * s.near[Y, b] + pz * s.near[Z, b])
+            + s.near[POWER, b]
+        )
+        fc = (
+            pp
+            - 2.0 * (px * s.near[X, c] + py * s.near[Y, c] + pz * s.near[Z, c])
+            + s.near[POWER, c]
+        )
         ux, uy, uz = by * cz - bz * cy, bz * cx - bx * cz, bx * cy - by * cx
         vx, vy, vz = cy * az - cz * ay, cz * ax - cx * az, cx * ay - cy * ax
         wx, wy, wz = ay * bz - az * by, az * bx - ax * bz, ax * by - ay * bx
@@ -73,8 +97,16 @@ def opening_ratio(s, a, b, c):  # type: ignore[no-untyped-def]
     |y - x_a|^2 = mu R_a^2 and likewise b and c, where y is linear in
     mu = lambda^2. For equal spheres lambda is circumradius / R.
     """
-    x1, y1, z1 = s.near[X, b] - s.near[X, a], s.near[Y, b] - s.near[Y, a], s.near[Z, b] - s.near[Z, a]
-    x2, y2, z2 = s.near[X, c] - s.near[X, a], s.near[Y, c] - s.near[Y, a], s.near[Z, c] - s.near[Z, a]
+    x1, y1, z1 = (
+        s.near[X, b] - s.near[X, a],
+        s.near[Y, b] - s.near[Y, a],
+        s.near[Z, b] - s.near[Z, a],
+    )
+    x2, y2, z2 = (
+        s.near[X, c] - s.near[X, a],
+        s.near[Y, c] - s.near[Y, a],
+        s.near[Z, c] - s.near[Z, a],
+    )
     d11 = x1 * x1 + y1 * y1 + z1 * z1
     d22 = x2 * x2 + y2 * y2 + z2 * z2
     d12 = x1 * x2 + y1 * y2 + z1 * z2
@@ -97,7 +129,7 @@ def opening_ratio(s, a, b, c):  # type: ignore[no-untyped-def]
 
 
 @helper
-def _touch(s, a, px, py, pz):  # type: ignore[no-untyped-def]
+def touch(s, a, px, py, pz):  # type: ignore[no-untyped-def]
     """Start the sums of sphere a, with p as reference point, at first use."""
     if s.patch[a, STAMP] != s.clock[0]:
         s.patch[a, STAMP] = s.clock[0]
@@ -108,15 +140,17 @@ def _touch(s, a, px, py, pz):  # type: ignore[no-untyped-def]
         s.patch[a, _Z0] = pz - s.near[Z, a]
         s.patch[a, _RE] = 1.0
         s.patch[a, _IM] = 0.0
-        s.patch[a, _TURN] = 0.0
-        s.patch[a, _AX] = 0.0
-        s.patch[a, _AY] = 0.0
-        s.patch[a, _AZ] = 0.0
+        s.patch[a, TURN] = 0.0
+        s.patch[a, AX] = 0.0
+        s.patch[a, AY] = 0.0
+        s.patch[a, AZ] = 0.0
         s.patch[a, _ARCS] = 0.0
 
 
 @helper
-def _add_arc(s, a, ex, ey, ez, height, rho2, angle, sine, cosine, px, py, pz, dx, dy, dz):  # type: ignore[no-untyped-def]
+def _add_arc(
+    s, a, ex, ey, ez, height, rho2, angle, sine, cosine, px, py, pz, dx, dy, dz
+):  # type: ignore[no-untyped-def]
     """Add the arc p -> p + d, clockwise about the outward axis e of sphere a.
 
     ``height`` is the distance of the arc's plane from the center along e;
@@ -145,20 +179,17 @@ def _add_arc(s, a, ex, ey, ez, height, rho2, angle, sine, cosine, px, py, pz, dx
         c = height / r
         s2 = 1.0 - c * c
         a2 = angle * angle
-        s.patch[a, _TURN] -= (
-            (0.5 * c * s2 * angle * a2)
-            * (
-                1.0 / 6.0
-                - a2 / 120.0 * (1.0 - 3.0 * s2)
-                + a2 * a2 / 5040.0 * (1.0 - 15.0 * s2 + 22.5 * s2 * s2)
-            )
+        s.patch[a, TURN] -= (0.5 * c * s2 * angle * a2) * (
+            1.0 / 6.0
+            - a2 / 120.0 * (1.0 - 3.0 * s2)
+            + a2 * a2 / 5040.0 * (1.0 - 15.0 * s2 + 22.5 * s2 * s2)
         )
         segment = rho2 * angle * a2 * (1.0 / 6.0 - a2 / 120.0 + a2 * a2 / 5040.0)
     else:
         k_re = (r + height) * rho2 + (r - height) * cosine
         k_im = (r - height) * sine
         re, im = re * k_re - im * k_im, re * k_im + im * k_re
-        s.patch[a, _TURN] -= angle * (1.0 - height / r)
+        s.patch[a, TURN] -= angle * (1.0 - height / r)
         segment = rho2 * angle - sine
     # only the direction of the product matters; keep its size in range
     norm = 1.0 / (abs(re) + abs(im))
@@ -168,14 +199,15 @@ def _add_arc(s, a, ex, ey, ez, height, rho2, angle, sine, cosine, px, py, pz, dx
     s.patch[a, _RE] = o_re * re - o_im * im
     s.patch[a, _IM] = o_re * im + o_im * re
     segment *= -0.5
-    s.patch[a, _AX] += 0.5 * tx + segment * ex
-    s.patch[a, _AY] += 0.5 * ty + segment * ey
-    s.patch[a, _AZ] += 0.5 * tz + segment * ez
+    s.patch[a, AX] += 0.5 * tx + segment * ex
+    s.patch[a, AY] += 0.5 * ty + segment * ey
+    s.patch[a, AZ] += 0.5 * tz + segment * ez
     s.patch[a, _ARCS] += 1.0
 
 
 @helper
-def _slot_of(s, t, a):  # type: ignore[no-untyped-def]
+def slot_of(s, t, a):  # type: ignore[no-untyped-def]
+    """Slot of candidate a in cell t, which has it."""
     if s.cell[t, 0] == a:
         return 0
     if s.cell[t, 1] == a:
@@ -186,21 +218,21 @@ def _slot_of(s, t, a):  # type: ignore[no-untyped-def]
 
 
 @helper
-def _rotate(s, t, i, j, k, l, n_cells):  # type: ignore[no-untyped-def]
-    """Turn about the pair in slots i, j of cell t from slot l to k and on.
+def _rotate(s, t, i, j, k, w, n_cells):  # type: ignore[no-untyped-def]
+    """Turn about the pair in slots i, j of cell t from slot w to k and on.
 
     Returns (corner, slot of the corner's third sphere, dihedral angle turned).
     """
     a, b = s.cell[t, i], s.cell[t, j]
     for _ in range(4 * n_cells):
-        other = s.across[t, l]
+        other = s.across[t, w]
         if other < 0:
             return -2 - other, k
-        i2 = _slot_of(s, other, a)
-        j2 = _slot_of(s, other, b)
-        l2 = _slot_of(s, other, s.cell[t, k])
-        k = 6 - i2 - j2 - l2
-        t, i, j, l = other, i2, j2, l2
+        i2 = slot_of(s, other, a)
+        j2 = slot_of(s, other, b)
+        w2 = slot_of(s, other, s.cell[t, k])
+        k = 6 - i2 - j2 - w2
+        t, i, j, w = other, i2, j2, w2
     return -1, 0
 
 
@@ -218,7 +250,7 @@ def _angle_about(s, a, b, c, d):  # type: ignore[no-untyped-def]
 
 
 @helper
-def _covered_half_angle(s, a, ex, ey, ez, mx, my, mz, c, qx, qy, qz):  # type: ignore[no-untyped-def]
+def _covered_half_angle(s, ex, ey, ez, mx, my, mz, c, qx, qy, qz):  # type: ignore[no-untyped-def]
     """Angle about the axis e between candidate c and the arc's end q - m."""
     wx, wy, wz = s.near[X, c] - mx, s.near[Y, c] - my, s.near[Z, c] - mz
     along = wx * ex + wy * ey + wz * ez
@@ -229,20 +261,20 @@ def _covered_half_angle(s, a, ex, ey, ez, mx, my, mz, c, qx, qy, qz):  # type: i
 
 
 @helper
-def _turned(s, t, i, j, k, l, n_cells):  # type: ignore[no-untyped-def]
+def _turned(s, t, i, j, k, w, n_cells):  # type: ignore[no-untyped-def]
     """Sum of the dihedral angles that `_rotate` passes."""
     a, b = s.cell[t, i], s.cell[t, j]
     total = 0.0
     for _ in range(4 * n_cells):
-        total += _angle_about(s, a, b, s.cell[t, l], s.cell[t, k])
-        other = s.across[t, l]
+        total += _angle_about(s, a, b, s.cell[t, w], s.cell[t, k])
+        other = s.across[t, w]
         if other < 0:
             break
-        i2 = _slot_of(s, other, a)
-        j2 = _slot_of(s, other, b)
-        l2 = _slot_of(s, other, s.cell[t, k])
-        k = 6 - i2 - j2 - l2
-        t, i, j, l = other, i2, j2, l2
+        i2 = slot_of(s, other, a)
+        j2 = slot_of(s, other, b)
+        w2 = slot_of(s, other, s.cell[t, k])
+        k = 6 - i2 - j2 - w2
+        t, i, j, w = other, i2, j2, w2
     return total
 
 
@@ -255,23 +287,31 @@ def _arcs(s, n_cells, n_corners):  # type: ignore[no-untyped-def]
     for q in range(n_corners):
         t = s.mark[q, 0]
         k = s.mark[q, 1]
-        for l in range(4):
-            if l == k or s.mark[q, 2 + l] == 1:
+        for w in range(4):
+            if w == k or s.mark[q, 2 + w] == 1:
                 continue
             i = 0
-            while i == k or i == l:
+            while i == k or i == w:
                 i += 1
-            j = 6 - i - k - l
+            j = 6 - i - k - w
             a, b = s.cell[t, i], s.cell[t, j]
-            end, end_slot = _rotate(s, t, i, j, k, l, n_cells)
+            end, end_slot = _rotate(s, t, i, j, k, w, n_cells)
             if end < 0:
                 return INVALID
-            s.mark[q, 2 + l] = 1
+            s.mark[q, 2 + w] = 1
             s.mark[end, 2 + end_slot] = 1
             ax, ay, az = s.near[X, a], s.near[Y, a], s.near[Z, a]
             ex, ey, ez = s.near[X, b] - ax, s.near[Y, b] - ay, s.near[Z, b] - az
-            cx, cy, cz = s.near[X, s.cell[t, l]] - ax, s.near[Y, s.cell[t, l]] - ay, s.near[Z, s.cell[t, l]] - az
-            dx, dy, dz = s.near[X, s.cell[t, k]] - ax, s.near[Y, s.cell[t, k]] - ay, s.near[Z, s.cell[t, k]] - az
+            cx, cy, cz = (
+                s.near[X, s.cell[t, w]] - ax,
+                s.near[Y, s.cell[t, w]] - ay,
+                s.near[Z, s.cell[t, w]] - az,
+            )
+            dx, dy, dz = (
+                s.near[X, s.cell[t, k]] - ax,
+                s.near[Y, s.cell[t, k]] - ay,
+                s.near[Z, s.cell[t, k]] - az,
+            )
             sense = (
                 ex * (cy * dz - cz * dy)
                 + ey * (cz * dx - cx * dz)
@@ -303,26 +343,77 @@ def _arcs(s, n_cells, n_corners):  # type: ignore[no-untyped-def]
             if chord2 < 1e-6 * rho2:
                 # next to nothing or next to a full circle: ask the flood
                 expected = (
-                    _turned(s, t, i, j, k, l, n_cells)
+                    _turned(s, t, i, j, k, w, n_cells)
                     - _covered_half_angle(
-                        s, a, ex, ey, ez, mx, my, mz, s.cell[t, l],
-                        s.corner[q, 0], s.corner[q, 1], s.corner[q, 2],
+                        s,
+                        ex,
+                        ey,
+                        ez,
+                        mx,
+                        my,
+                        mz,
+                        s.cell[t, w],
+                        s.corner[q, 0],
+                        s.corner[q, 1],
+                        s.corner[q, 2],
                     )
                     - _covered_half_angle(
-                        s, a, ex, ey, ez, mx, my, mz,
+                        s,
+                        ex,
+                        ey,
+                        ez,
+                        mx,
+                        my,
+                        mz,
                         s.cell[s.mark[end, 0], end_slot],
-                        s.corner[end, 0], s.corner[end, 1], s.corner[end, 2],
+                        s.corner[end, 0],
+                        s.corner[end, 1],
+                        s.corner[end, 2],
                     )
                 )
                 if expected > np.pi:
                     angle += 2.0 * np.pi
             elif angle < 0.0:
                 angle += 2.0 * np.pi
-            _touch(s, a, x1, y1, z1)
-            _touch(s, b, x1, y1, z1)
+            touch(s, a, x1, y1, z1)
+            touch(s, b, x1, y1, z1)
             # counterclockwise about a -> b is clockwise about b -> a
-            _add_arc(s, b, -ex, -ey, -ez, length - height, rho2, angle, sine, cosine, x1, y1, z1, dx, dy, dz)
-            _add_arc(s, a, ex, ey, ez, height, rho2, angle, sine, cosine, x2, y2, z2, -dx, -dy, -dz)
+            _add_arc(
+                s,
+                b,
+                -ex,
+                -ey,
+                -ez,
+                length - height,
+                rho2,
+                angle,
+                sine,
+                cosine,
+                x1,
+                y1,
+                z1,
+                dx,
+                dy,
+                dz,
+            )
+            _add_arc(
+                s,
+                a,
+                ex,
+                ey,
+                ez,
+                height,
+                rho2,
+                angle,
+                sine,
+                cosine,
+                x2,
+                y2,
+                z2,
+                -dx,
+                -dy,
+                -dz,
+            )
     return CLOSED
 
 
@@ -333,23 +424,23 @@ def _ring_is_open(s, t, i, j, n_cells):  # type: ignore[no-untyped-def]
     k = 0
     while k == i or k == j:
         k += 1
-    l = 6 - i - j - k
+    w = 6 - i - j - k
     first = t
     for _ in range(4 * n_cells):
-        other = s.across[t, l]
+        other = s.across[t, w]
         if other <= first:
             # round once; or a corner, or a ring already seen from an earlier cell
             return other == first
-        i2 = _slot_of(s, other, a)
-        j2 = _slot_of(s, other, b)
-        l2 = _slot_of(s, other, s.cell[t, k])
-        k = 6 - i2 - j2 - l2
-        t, i, j, l = other, i2, j2, l2
+        i2 = slot_of(s, other, a)
+        j2 = slot_of(s, other, b)
+        w2 = slot_of(s, other, s.cell[t, k])
+        k = 6 - i2 - j2 - w2
+        t, i, j, w = other, i2, j2, w2
     return False
 
 
 @helper
-def _covered(s, n, px, py, pz, depth, a, b):  # type: ignore[no-untyped-def]
+def covered(s, n, px, py, pz, depth, a, b):  # type: ignore[no-untyped-def]
     """Tell whether any candidate but a and b has a power below -depth at p."""
     for k in range(n):
         dx, dy, dz = s.near[X, k] - px, s.near[Y, k] - py, s.near[Z, k] - pz
@@ -367,15 +458,19 @@ def _circles_and_islands(s, n, n_cells):  # type: ignore[no-untyped-def]
             # an edge whose cells are all open: both its faces here lead on
             if s.across[t, k] < t:
                 continue
-            for l in range(k + 1, 4):
-                if s.across[t, l] < t:
+            for w in range(k + 1, 4):
+                if s.across[t, w] < t:
                     continue
                 i = 0
-                while i == k or i == l:
+                while i == k or i == w:
                     i += 1
-                j = 6 - i - k - l
+                j = 6 - i - k - w
                 a, b = s.cell[t, i], s.cell[t, j]
-                ex, ey, ez = s.near[X, b] - s.near[X, a], s.near[Y, b] - s.near[Y, a], s.near[Z, b] - s.near[Z, a]
+                ex, ey, ez = (
+                    s.near[X, b] - s.near[X, a],
+                    s.near[Y, b] - s.near[Y, a],
+                    s.near[Z, b] - s.near[Z, a],
+                )
                 length = np.sqrt(ex * ex + ey * ey + ez * ez)
                 ra, rb = s.near[REACH, a], s.near[REACH, b]
                 height = 0.5 * (length + (ra - rb) * (ra + rb) / length)
@@ -386,27 +481,27 @@ def _circles_and_islands(s, n, n_cells):  # type: ignore[no-untyped-def]
                 mx = s.near[X, a] + height * ex
                 my = s.near[Y, a] + height * ey
                 mz = s.near[Z, a] + height * ez
-                if _covered(s, n, mx, my, mz, rho2, a, b):
+                if covered(s, n, mx, my, mz, rho2, a, b):
                     continue
-                _touch(s, a, mx, my, mz)
-                _touch(s, b, mx, my, mz)
-                s.patch[a, _TURN] -= 2.0 * np.pi * (1.0 - height / ra)
-                s.patch[b, _TURN] -= 2.0 * np.pi * (1.0 - (length - height) / rb)
+                touch(s, a, mx, my, mz)
+                touch(s, b, mx, my, mz)
+                s.patch[a, TURN] -= 2.0 * np.pi * (1.0 - height / ra)
+                s.patch[b, TURN] -= 2.0 * np.pi * (1.0 - (length - height) / rb)
                 half = np.pi * rho2
-                s.patch[a, _AX] -= half * ex
-                s.patch[a, _AY] -= half * ey
-                s.patch[a, _AZ] -= half * ez
-                s.patch[b, _AX] += half * ex
-                s.patch[b, _AY] += half * ey
-                s.patch[b, _AZ] += half * ez
+                s.patch[a, AX] -= half * ex
+                s.patch[a, AY] -= half * ey
+                s.patch[a, AZ] -= half * ez
+                s.patch[b, AX] += half * ex
+                s.patch[b, AY] += half * ey
+                s.patch[b, AZ] += half * ez
     for t in range(n_cells):
         for i in range(4):
             a = s.cell[t, i]
             if s.patch[a, STAMP] == s.clock[0]:
                 continue
             x, y, z, r = s.near[X, a], s.near[Y, a], s.near[Z, a], s.near[REACH, a]
-            _touch(s, a, x, y, z)
-            if _covered(s, n, x, y, z, r * r, a, a):
+            touch(s, a, x, y, z)
+            if covered(s, n, x, y, z, r * r, a, a):
                 # nothing of this sphere is seen
                 s.patch[a, _ARCS] = -1.0
 
@@ -416,7 +511,7 @@ def _patch_area(s, a):  # type: ignore[no-untyped-def]
     """Area of the wall on sphere a over R^2, between 0 and 4 pi."""
     if s.patch[a, _ARCS] < 0.0:
         return 0.0
-    area = s.patch[a, _TURN]
+    area = s.patch[a, TURN]
     if s.patch[a, _ARCS] == 0.0:
         return area + _FULL
     area += 2.0 * np.arctan2(s.patch[a, _IM], s.patch[a, _RE])
@@ -424,9 +519,9 @@ def _patch_area(s, a):  # type: ignore[no-untyped-def]
     if area > _FULL - 1e-6:
         # rounding below zero, or a sphere all but free: its vector area tells
         outward = (
-            s.patch[a, _AX] * s.patch[a, _X0]
-            + s.patch[a, _AY] * s.patch[a, _Y0]
-            + s.patch[a, _AZ] * s.patch[a, _Z0]
+            s.patch[a, AX] * s.patch[a, _X0]
+            + s.patch[a, AY] * s.patch[a, _Y0]
+            + s.patch[a, AZ] * s.patch[a, _Z0]
         )
         r = s.near[REACH, a]
         if outward > -1e-14 * r * r * r:
@@ -461,7 +556,7 @@ def integrate_wall(s, n, n_cells, n_corners):  # type: ignore[no-untyped-def]
         power = s.near[POWER, a]
         area = _patch_area(s, a) * r * r
         s.patch[a, AREA] = area
-        ax, ay, az = s.patch[a, _AX], s.patch[a, _AY], s.patch[a, _AZ]
+        ax, ay, az = s.patch[a, AX], s.patch[a, AY], s.patch[a, AZ]
         tx += ax
         ty += ay
         tz += az
