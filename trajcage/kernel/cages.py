@@ -58,10 +58,16 @@ class Windows(NamedTuple):
     corners: NDArray[np.float64]  #: (m, d) corner of the wall behind it, length
 
 
+#: numbers (n, 4), status (n,), bounding neighbors (n,), window members (n, d)
+_Output = tuple[
+    NDArray[np.float64], NDArray[np.uint8], NDArray[np.int32], NDArray[np.int64]
+]
+
+
 class _Rows(NamedTuple):
     """Growing output of one thread."""
 
-    count: NDArray[np.int64]  #: (2,) rows used of patches and windows
+    used: NDArray[np.int64]  #: (2,) rows used of patches and windows
     patch_owner: NDArray[np.int64]
     patch_neighbor: NDArray[np.int64]
     patch_numbers: NDArray[np.float64]  #: area and vector
@@ -87,7 +93,7 @@ def _make_rows(size: int) -> _Rows:
 
 
 @helper
-def _cage(grid, s, i, radius, first, limits, shift, plane):  # type: ignore[no-untyped-def]
+def _cage(grid, s, i, radius, first, limits, shift, plane):
     """Flood and integrate one cage."""
     xi, yi, zi = grid.home[i, 0], grid.home[i, 1], grid.home[i, 2]
     if plane is None:
@@ -106,7 +112,7 @@ def _cage(grid, s, i, radius, first, limits, shift, plane):  # type: ignore[no-u
 
 
 @helper
-def _window(grid, s, q, row, members, plane):  # type: ignore[no-untyped-def]
+def _window(grid, s, q, row, members, plane):
     """Write the particles of the window at corner q; return its opening ratio."""
     if plane is None:
         a, b, c = wall3d.window(s, q)
@@ -121,31 +127,31 @@ def _window(grid, s, q, row, members, plane):  # type: ignore[no-untyped-def]
 
 
 @helper
-def _keep_rows(grid, s, i, bounding, n_corners, rows, plane):  # type: ignore[no-untyped-def]
+def _keep_rows(grid, s, i, bounding, n_corners, rows, plane):
     """Copy patches and windows of one cage; False if the rows are full."""
-    if rows.count[0] + bounding > len(rows.patch_owner) or rows.count[
+    if rows.used[0] + bounding > len(rows.patch_owner) or rows.used[
         1
     ] + n_corners > len(rows.window_owner):
         return False
     for m in range(bounding):
         a = s.seen[m]
-        row = rows.count[0]
+        row = rows.used[0]
         rows.patch_owner[row] = i
         rows.patch_neighbor[row] = grid.owner[s.found[a]]
         rows.patch_numbers[row, 0] = s.patch[a, AREA]
         rows.patch_numbers[row, 1] = s.near[X, a]
         rows.patch_numbers[row, 2] = s.near[Y, a]
         rows.patch_numbers[row, 3] = s.near[Z, a]
-        rows.count[0] += 1
+        rows.used[0] += 1
     for q in range(n_corners):
-        row = rows.count[1]
+        row = rows.used[1]
         rows.window_owner[row] = i
         rows.window_numbers[row, 0] = _window(
             grid, s, q, row, rows.window_neighbors, plane
         )
         for axis in range(3):
             rows.window_numbers[row, 1 + axis] = s.corner[q, axis]
-        rows.count[1] += 1
+        rows.used[1] += 1
     return True
 
 
@@ -160,14 +166,12 @@ def _measure_range(
     shifts,
     keep,
     rows,
-    numbers,
-    status,
-    bounds,
-    members,
+    output,
     plane,
-):  # type: ignore[no-untyped-def]
+):
     """Measure particles ``todo[begin:]``; return where it stopped for more room."""
     reach, first, r_max, tolerance = settings
+    numbers, status, bounds, members = output
     for at in range(begin, len(todo)):
         i = todo[at]
         limits = (reach, radii[i] + r_max, tolerance, grid.halo)
@@ -316,7 +320,7 @@ def _measure_part(
     radius: NDArray[np.float64],
     settings: tuple[float, float, float, float],
     keep: bool,
-    output: tuple[NDArray[np.generic], ...],
+    output: _Output,
     todo: NDArray[np.int64],
 ) -> list[_Rows]:
     """Measure one share of the particles, with more room whenever asked for."""
@@ -337,7 +341,7 @@ def _measure_part(
             _SHIFTS,
             keep,
             rows,
-            *output,
+            output,
             plane,
         )
         finished.append(rows)
@@ -349,20 +353,20 @@ def _gather_rows(
     rows: list[_Rows], n: int, d: int, scale: float
 ) -> tuple[Wall, Windows]:
     """Join the rows of all threads and sort them by particle."""
-    owner = np.concatenate([r.patch_owner[: r.count[0]] for r in rows])
+    owner = np.concatenate([r.patch_owner[: r.used[0]] for r in rows])
     order = np.argsort(owner, kind="stable")
-    numbers = np.concatenate([r.patch_numbers[: r.count[0]] for r in rows])[order]
-    neighbors = np.concatenate([r.patch_neighbor[: r.count[0]] for r in rows])[order]
+    numbers = np.concatenate([r.patch_numbers[: r.used[0]] for r in rows])[order]
+    neighbors = np.concatenate([r.patch_neighbor[: r.used[0]] for r in rows])[order]
     wall = Wall(
         _offsets(owner, n),
         neighbors,
         numbers[:, 0] / scale ** (d - 1),
         numbers[:, 1 : 1 + d] / scale,
     )
-    owner = np.concatenate([r.window_owner[: r.count[1]] for r in rows])
+    owner = np.concatenate([r.window_owner[: r.used[1]] for r in rows])
     order = np.argsort(owner, kind="stable")
-    numbers = np.concatenate([r.window_numbers[: r.count[1]] for r in rows])[order]
-    members = np.concatenate([r.window_neighbors[: r.count[1]] for r in rows])[order]
+    numbers = np.concatenate([r.window_numbers[: r.used[1]] for r in rows])[order]
+    members = np.concatenate([r.window_neighbors[: r.used[1]] for r in rows])[order]
     shut = Windows(
         _offsets(owner, n), members[:, :d], numbers[:, 0], numbers[:, 1 : 1 + d] / scale
     )

@@ -29,7 +29,7 @@ __all__ = ["flood"]
 
 
 @helper
-def _solve(s, a, b, c):  # type: ignore[no-untyped-def]
+def _solve(s, a, b, c):
     """Point of equal power to three candidates, and that power."""
     x0, y0, g0 = s.near[X, a], s.near[Y, a], s.near[SHIFTED, a]
     x1, y1 = s.near[X, b] - x0, s.near[Y, b] - y0
@@ -43,7 +43,7 @@ def _solve(s, a, b, c):  # type: ignore[no-untyped-def]
 
 
 @helper
-def _next_along(s, n, px, py, nx, ny, a, b):  # type: ignore[no-untyped-def]
+def _next_along(s, n, px, py, nx, ny, a, b):
     """First candidate to share the power of ``a`` along the ray p + t n."""
     x0, y0, g0 = s.near[X, a], s.near[Y, a], s.near[SHIFTED, a]
     best = np.inf
@@ -60,7 +60,7 @@ def _next_along(s, n, px, py, nx, ny, a, b):  # type: ignore[no-untyped-def]
 
 
 @helper
-def _climb(grid, s, i, xi, yi, ri, n, known, limits, shift):  # type: ignore[no-untyped-def]
+def _climb(grid, s, i, xi, yi, ri, n, known, limits, shift):
     """Walk up the power distance from the particle to the first vertex."""
     reach, largest, tolerance, halo = limits
     a = nearest(s, n)
@@ -116,7 +116,7 @@ def _climb(grid, s, i, xi, yi, ri, n, known, limits, shift):  # type: ignore[no-
 
 
 @helper
-def _sorted3(a, b, c):  # type: ignore[no-untyped-def]
+def _sorted3(a, b, c):
     if a > b:
         a, b = b, a
     if b > c:
@@ -127,7 +127,7 @@ def _sorted3(a, b, c):  # type: ignore[no-untyped-def]
 
 
 @helper
-def _new_cell(s, t, slot, a, b, c, px, py, power):  # type: ignore[no-untyped-def]
+def _new_cell(s, t, slot, a, b, c, px, py, power):
     s.cell[t, 0] = a
     s.cell[t, 1] = b
     s.cell[t, 2] = c
@@ -143,7 +143,7 @@ def _new_cell(s, t, slot, a, b, c, px, py, power):  # type: ignore[no-untyped-de
 
 
 @helper
-def _gaps(s, begin, n, t):  # type: ignore[no-untyped-def]
+def _gaps(s, begin, n, t):
     """Power of candidates above that of vertex t; infinite for its own three."""
     a = s.cell[t, 0]
     px, py = s.vertex[t, 0], s.vertex[t, 1]
@@ -158,7 +158,7 @@ def _gaps(s, begin, n, t):  # type: ignore[no-untyped-def]
 
 
 @helper
-def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):  # type: ignore[no-untyped-def]
+def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):
     """Find all power vertices of the cage and the corners of its wall.
 
     Parameters and results are those of :func:`trajcage.kernel.flood3d.flood`.

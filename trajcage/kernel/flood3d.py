@@ -38,13 +38,13 @@ __all__ = [
 
 
 @helper
-def pad(n):  # type: ignore[no-untyped-def]
+def pad(n):
     """Round up to whole vector registers: loops without a remainder."""
     return (n + 15) & ~15
 
 
 @helper
-def collect(grid, s, i, xi, yi, zi, ri, n, inner, outer, tolerance, shift):  # type: ignore[no-untyped-def]
+def collect(grid, s, i, xi, yi, zi, ri, n, inner, outer, tolerance, shift):
     """Make candidates of the grid points in a shell; return (code, count).
 
     An overlap within the tolerance counts as a contact: the exclusion radius
@@ -87,7 +87,7 @@ def collect(grid, s, i, xi, yi, zi, ri, n, inner, outer, tolerance, shift):  # t
 
 
 @helper
-def outside(grid, xi, yi, zi, px, py, pz, radius):  # type: ignore[no-untyped-def]
+def outside(grid, xi, yi, zi, px, py, pz, radius):
     """Tell whether a ball about a point reaches beyond an open edge of the box."""
     geometry = grid.geometry
     dx = xi + px - geometry[CORNER, 0]
@@ -103,7 +103,7 @@ def outside(grid, xi, yi, zi, px, py, pz, radius):  # type: ignore[no-untyped-de
 
 
 @helper
-def _solve(s, a, b, c, d):  # type: ignore[no-untyped-def]
+def _solve(s, a, b, c, d):
     """Point of equal power to four candidates, and that power."""
     x0, y0, z0, g0 = s.near[X, a], s.near[Y, a], s.near[Z, a], s.near[SHIFTED, a]
     x1, y1, z1 = s.near[X, b] - x0, s.near[Y, b] - y0, s.near[Z, b] - z0
@@ -125,7 +125,7 @@ def _solve(s, a, b, c, d):  # type: ignore[no-untyped-def]
 
 
 @helper
-def _next_along(s, n, px, py, pz, nx, ny, nz, a, b, c):  # type: ignore[no-untyped-def]
+def _next_along(s, n, px, py, pz, nx, ny, nz, a, b, c):
     """First candidate to share the power of ``a`` along the ray p + t n."""
     x0, y0, z0, g0 = s.near[X, a], s.near[Y, a], s.near[Z, a], s.near[SHIFTED, a]
     best = np.inf
@@ -143,7 +143,7 @@ def _next_along(s, n, px, py, pz, nx, ny, nz, a, b, c):  # type: ignore[no-untyp
 
 
 @helper
-def nearest(s, n):  # type: ignore[no-untyped-def]
+def nearest(s, n):
     """Candidate of least power at the particle, -1 if there is none."""
     who = -1
     least = np.inf
@@ -155,7 +155,7 @@ def nearest(s, n):  # type: ignore[no-untyped-def]
 
 
 @helper
-def ray_to_sphere(px, py, pz, nx, ny, nz, radius):  # type: ignore[no-untyped-def]
+def ray_to_sphere(px, py, pz, nx, ny, nz, radius):
     """Parameter at which p + t n leaves the sphere of that radius about 0."""
     aa = nx * nx + ny * ny + nz * nz
     bb = px * nx + py * ny + pz * nz
@@ -166,7 +166,7 @@ def ray_to_sphere(px, py, pz, nx, ny, nz, radius):  # type: ignore[no-untyped-de
 
 
 @helper
-def _climb(grid, s, i, xi, yi, zi, ri, n, known, limits, shift):  # type: ignore[no-untyped-def]
+def _climb(grid, s, i, xi, yi, zi, ri, n, known, limits, shift):
     """Walk up the power distance from the particle to the first vertex.
 
     Returns (code, candidates, radius known, a, b, c, d). The path stays in
@@ -253,7 +253,7 @@ def _climb(grid, s, i, xi, yi, zi, ri, n, known, limits, shift):  # type: ignore
 
 
 @helper
-def _sorted4(a, b, c, d):  # type: ignore[no-untyped-def]
+def _sorted4(a, b, c, d):
     if a > b:
         a, b = b, a
     if c > d:
@@ -268,7 +268,7 @@ def _sorted4(a, b, c, d):  # type: ignore[no-untyped-def]
 
 
 @helper
-def find_cell(s, a, b, c, d):  # type: ignore[no-untyped-def]
+def find_cell(s, a, b, c, d):
     """Look up a sorted cell; return (cell or -1, free slot of the hash table)."""
     mask = len(s.slots) - 1
     clock = s.clock[0]
@@ -288,7 +288,7 @@ def find_cell(s, a, b, c, d):  # type: ignore[no-untyped-def]
 
 
 @helper
-def _new_cell(s, t, slot, a, b, c, d, px, py, pz, power):  # type: ignore[no-untyped-def]
+def _new_cell(s, t, slot, a, b, c, d, px, py, pz, power):
     s.cell[t, 0] = a
     s.cell[t, 1] = b
     s.cell[t, 2] = c
@@ -304,7 +304,7 @@ def _new_cell(s, t, slot, a, b, c, d, px, py, pz, power):  # type: ignore[no-unt
 
 
 @helper
-def _gaps(s, begin, n, t):  # type: ignore[no-untyped-def]
+def _gaps(s, begin, n, t):
     """Power of candidates above that of vertex t; infinite for its own four."""
     a = s.cell[t, 0]
     px, py, pz = s.vertex[t, 0], s.vertex[t, 1], s.vertex[t, 2]
@@ -323,7 +323,7 @@ def _gaps(s, begin, n, t):  # type: ignore[no-untyped-def]
 
 
 @helper
-def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):  # type: ignore[no-untyped-def]
+def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):
     """Find all power vertices of the cage and the corners of its wall.
 
     Parameters

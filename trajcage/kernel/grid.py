@@ -88,7 +88,7 @@ def build_grid(
 
 
 @compiled
-def _fill(home, fractions, vectors, radii, periodic, width, low, per_edge, shape):  # type: ignore[no-untyped-def]
+def _fill(home, fractions, vectors, radii, periodic, width, low, per_edge, shape):
     """Count, then place, every particle and image (counting sort by cell)."""
     n = len(home)
     n_cells = shape[0] * shape[1] * shape[2]
@@ -158,7 +158,7 @@ def _fill(home, fractions, vectors, radii, periodic, width, low, per_edge, shape
 
 
 @helper
-def gather(grid, i, xi, yi, zi, inner, outer, found, n_found):  # type: ignore[no-untyped-def]
+def gather(grid, i, xi, yi, zi, inner, outer, found, n_found):
     """Append the points with ``inner < distance <= outer`` from particle i.
 
     Images of i itself are left out: they move along with it and never wall

@@ -75,12 +75,11 @@ def helper(function: Callable[P, R]) -> Callable[P, R]:
 
 def _compile(function: Callable[P, R], **options: bool) -> Callable[P, R]:
     config: Any = numba.config
+    njit: Any = numba.njit
     before = config.CACHE_DIR
     config.CACHE_DIR = str(_CACHE_DIRECTORY or before)
     try:
-        decorate = numba.njit(
-            nogil=True, error_model="numpy", fastmath=False, **options
-        )
+        decorate = njit(nogil=True, error_model="numpy", fastmath=False, **options)
         result: Callable[P, R] = decorate(function)
     finally:
         config.CACHE_DIR = before

@@ -17,7 +17,7 @@ __all__ = ["integrate_wall", "opening_ratio", "window"]
 
 
 @helper
-def window(s, q):  # type: ignore[no-untyped-def]
+def window(s, q):
     """Return the two candidates whose circles meet in corner q."""
     t = s.mark[q, 0]
     f = s.mark[q, 1]
@@ -25,14 +25,14 @@ def window(s, q):  # type: ignore[no-untyped-def]
 
 
 @helper
-def opening_ratio(s, a, b):  # type: ignore[no-untyped-def]
+def opening_ratio(s, a, b):
     """Factor on the exclusion radii at which the two disks just touch."""
     dx, dy = s.near[X, b] - s.near[X, a], s.near[Y, b] - s.near[Y, a]
     return np.sqrt(dx * dx + dy * dy) / (s.near[REACH, a] + s.near[REACH, b])
 
 
 @helper
-def _polish_corners(s, n_corners):  # type: ignore[no-untyped-def]
+def _polish_corners(s, n_corners):
     """Move the corners from the circles with broken ties to the true ones."""
     for q in range(n_corners):
         a, b = window(s, q)
@@ -49,7 +49,7 @@ def _polish_corners(s, n_corners):  # type: ignore[no-untyped-def]
 
 
 @helper
-def _turn(s, t, i, k, n_cells):  # type: ignore[no-untyped-def]
+def _turn(s, t, i, k, n_cells):
     """Turn about slot i of cell t, from its third slot to slot k and on.
 
     Returns (corner, angle turned). The edge from i to the third slot is shut.
@@ -72,7 +72,7 @@ def _turn(s, t, i, k, n_cells):  # type: ignore[no-untyped-def]
 
 
 @helper
-def _covered_half_angle(s, a, q):  # type: ignore[no-untyped-def]
+def _covered_half_angle(s, a, q):
     """Angle at a between corner q and the center of the corner's other disk."""
     b, c = window(s, q)
     if b == a:
@@ -83,7 +83,7 @@ def _covered_half_angle(s, a, q):  # type: ignore[no-untyped-def]
 
 
 @helper
-def _arcs(s, n_cells, n_corners):  # type: ignore[no-untyped-def]
+def _arcs(s, n_cells, n_corners):
     """Walk every arc of the wall once, counterclockwise on its disk."""
     for q in range(n_corners):
         t = s.mark[q, 0]
@@ -125,7 +125,7 @@ def _arcs(s, n_cells, n_corners):  # type: ignore[no-untyped-def]
 
 
 @helper
-def integrate_wall(s, n, n_cells, n_corners):  # type: ignore[no-untyped-def]
+def integrate_wall(s, n, n_cells, n_corners):
     """Area, length, wall sum, bounding neighbors and weakest window of a cage.
 
     Returns what :func:`trajcage.kernel.wall3d.integrate_wall` does.

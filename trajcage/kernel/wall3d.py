@@ -38,7 +38,7 @@ STAMP, _X0, _Y0, _Z0, _RE, _IM, TURN, AX, AY, AZ, _ARCS, AREA = range(12)
 
 
 @helper
-def window(s, q):  # type: ignore[no-untyped-def]
+def window(s, q):
     """Return the three candidates whose spheres meet in corner q."""
     t = s.mark[q, 0]
     f = s.mark[q, 1]
@@ -49,7 +49,7 @@ def window(s, q):  # type: ignore[no-untyped-def]
 
 
 @helper
-def polish_corners(s, n_corners):  # type: ignore[no-untyped-def]
+def polish_corners(s, n_corners):
     """Move the corners from the spheres with broken ties to the true ones.
 
     One Newton step; where three spheres barely meet the step would amplify
@@ -90,7 +90,7 @@ def polish_corners(s, n_corners):  # type: ignore[no-untyped-def]
 
 
 @helper
-def opening_ratio(s, a, b, c):  # type: ignore[no-untyped-def]
+def opening_ratio(s, a, b, c):
     """Factor on the exclusion radii at which the window a, b, c is just shut.
 
     The three scaled spheres then meet in one point of the plane of centers:
@@ -129,7 +129,7 @@ def opening_ratio(s, a, b, c):  # type: ignore[no-untyped-def]
 
 
 @helper
-def touch(s, a, px, py, pz):  # type: ignore[no-untyped-def]
+def touch(s, a, px, py, pz):
     """Start the sums of sphere a, with p as reference point, at first use."""
     if s.patch[a, STAMP] != s.clock[0]:
         s.patch[a, STAMP] = s.clock[0]
@@ -150,7 +150,7 @@ def touch(s, a, px, py, pz):  # type: ignore[no-untyped-def]
 @helper
 def _add_arc(
     s, a, ex, ey, ez, height, rho2, angle, sine, cosine, px, py, pz, dx, dy, dz
-):  # type: ignore[no-untyped-def]
+):
     """Add the arc p -> p + d, clockwise about the outward axis e of sphere a.
 
     ``height`` is the distance of the arc's plane from the center along e;
@@ -206,7 +206,7 @@ def _add_arc(
 
 
 @helper
-def slot_of(s, t, a):  # type: ignore[no-untyped-def]
+def slot_of(s, t, a):
     """Slot of candidate a in cell t, which has it."""
     if s.cell[t, 0] == a:
         return 0
@@ -218,7 +218,7 @@ def slot_of(s, t, a):  # type: ignore[no-untyped-def]
 
 
 @helper
-def _rotate(s, t, i, j, k, w, n_cells):  # type: ignore[no-untyped-def]
+def _rotate(s, t, i, j, k, w, n_cells):
     """Turn about the pair in slots i, j of cell t from slot w to k and on.
 
     Returns (corner, slot of the corner's third sphere, dihedral angle turned).
@@ -237,7 +237,7 @@ def _rotate(s, t, i, j, k, w, n_cells):  # type: ignore[no-untyped-def]
 
 
 @helper
-def _angle_about(s, a, b, c, d):  # type: ignore[no-untyped-def]
+def _angle_about(s, a, b, c, d):
     """Dihedral angle at the edge a b between candidates c and d."""
     x0, y0, z0 = s.near[X, a], s.near[Y, a], s.near[Z, a]
     ex, ey, ez = s.near[X, b] - x0, s.near[Y, b] - y0, s.near[Z, b] - z0
@@ -250,7 +250,7 @@ def _angle_about(s, a, b, c, d):  # type: ignore[no-untyped-def]
 
 
 @helper
-def _covered_half_angle(s, ex, ey, ez, mx, my, mz, c, qx, qy, qz):  # type: ignore[no-untyped-def]
+def _covered_half_angle(s, ex, ey, ez, mx, my, mz, c, qx, qy, qz):
     """Angle about the axis e between candidate c and the arc's end q - m."""
     wx, wy, wz = s.near[X, c] - mx, s.near[Y, c] - my, s.near[Z, c] - mz
     along = wx * ex + wy * ey + wz * ez
@@ -261,7 +261,7 @@ def _covered_half_angle(s, ex, ey, ez, mx, my, mz, c, qx, qy, qz):  # type: igno
 
 
 @helper
-def _turned(s, t, i, j, k, w, n_cells):  # type: ignore[no-untyped-def]
+def _turned(s, t, i, j, k, w, n_cells):
     """Sum of the dihedral angles that `_rotate` passes."""
     a, b = s.cell[t, i], s.cell[t, j]
     total = 0.0
@@ -279,7 +279,7 @@ def _turned(s, t, i, j, k, w, n_cells):  # type: ignore[no-untyped-def]
 
 
 @helper
-def _arcs(s, n_cells, n_corners):  # type: ignore[no-untyped-def]
+def _arcs(s, n_cells, n_corners):
     """Walk every arc of the wall once and add it to its two spheres."""
     for q in range(n_corners):
         for f in range(4):
@@ -418,7 +418,7 @@ def _arcs(s, n_cells, n_corners):  # type: ignore[no-untyped-def]
 
 
 @helper
-def _ring_is_open(s, t, i, j, n_cells):  # type: ignore[no-untyped-def]
+def _ring_is_open(s, t, i, j, n_cells):
     """Tell whether all cells about an edge are in the cage, t the first of them."""
     a, b = s.cell[t, i], s.cell[t, j]
     k = 0
@@ -440,7 +440,7 @@ def _ring_is_open(s, t, i, j, n_cells):  # type: ignore[no-untyped-def]
 
 
 @helper
-def covered(s, n, px, py, pz, depth, a, b):  # type: ignore[no-untyped-def]
+def covered(s, n, px, py, pz, depth, a, b):
     """Tell whether any candidate but a and b has a power below -depth at p."""
     for k in range(n):
         dx, dy, dz = s.near[X, k] - px, s.near[Y, k] - py, s.near[Z, k] - pz
@@ -451,7 +451,7 @@ def covered(s, n, px, py, pz, depth, a, b):  # type: ignore[no-untyped-def]
 
 
 @helper
-def _circles_and_islands(s, n, n_cells):  # type: ignore[no-untyped-def]
+def _circles_and_islands(s, n, n_cells):
     """Add full circles in which two spheres meet, and spheres without any arc."""
     for t in range(n_cells):
         for k in range(3):
@@ -507,7 +507,7 @@ def _circles_and_islands(s, n, n_cells):  # type: ignore[no-untyped-def]
 
 
 @helper
-def _patch_area(s, a):  # type: ignore[no-untyped-def]
+def _patch_area(s, a):
     """Area of the wall on sphere a over R^2, between 0 and 4 pi."""
     if s.patch[a, _ARCS] < 0.0:
         return 0.0
@@ -530,7 +530,7 @@ def _patch_area(s, a):  # type: ignore[no-untyped-def]
 
 
 @helper
-def integrate_wall(s, n, n_cells, n_corners):  # type: ignore[no-untyped-def]
+def integrate_wall(s, n, n_cells, n_corners):
     """Volume, area, wall sum, bounding neighbors and weakest window of a cage.
 
     Returns
