@@ -9,6 +9,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from trajcage.errors import UsageError
 from trajcage.kernel import measure_cages
+from trajcage.lattices import LATTICES
 from trajcage.model import (
     Box,
     CageStatus,
@@ -21,6 +22,7 @@ from trajcage.model import (
 from trajcage.neighborhood import check_distinct, neighbor_list
 
 __all__ = [
+    "DENSEST_PACKING",
     "CageOptions",
     "Overlaps",
     "cages",
@@ -32,9 +34,13 @@ __all__ = [
     "stored_values",
 ]
 
-# No packing of equal spheres is denser than FCC (Hales 2005, Ann. Math. 162, 1065),
-# none of equal disks than the triangular lattice (Fejes Toth 1940).
-_DENSEST = {2: math.pi / math.sqrt(12.0), 3: math.pi / math.sqrt(18.0)}
+#: Highest packing fraction of equal particles, by dimension: no packing of spheres is
+#: denser than FCC (Hales 2005, Ann. Math. 162, 1065), none of disks than the triangular
+#: lattice (Fejes Toth 1940).
+DENSEST_PACKING = {
+    2: LATTICES["triangular"].close_packing.value,
+    3: LATTICES["fcc"].close_packing.value,
+}
 
 # Single precision of box and radii, in a packing fraction.
 _GRAIN = 1e-5
@@ -177,7 +183,7 @@ def check_packing(frame: Frame) -> str:
     FrameError
         If equal particles exceed it.
     """
-    phi, densest = frame.packing_fraction, _DENSEST[frame.dimensions]
+    phi, densest = frame.packing_fraction, DENSEST_PACKING[frame.dimensions]
     if phi <= densest * (1.0 + _GRAIN):
         return ""
     shape = "disks" if frame.dimensions == 2 else "spheres"

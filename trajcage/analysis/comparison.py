@@ -67,7 +67,7 @@ def compare_lattices(
     equal_diameter: float,
     free_volume_mean: float,
 ) -> list[_Row]:
-    """Ideal lattices that exist at a packing fraction, in the units of the run.
+    """Ideal lattices that exist at a packing fraction.
 
     Parameters
     ----------
@@ -76,16 +76,18 @@ def compare_lattices(
     packing_fraction : float
         Mean packing fraction.
     equal_diameter : float, length
-        Diameter of equal particles of the same packing fraction and number density.
+        Diameter of equal particles of the same packing fraction and number density,
+        in any unit.
     free_volume_mean : float, length^d
-        Measured mean free volume.
+        Measured mean free volume, in powers of that unit.
 
     Returns
     -------
     list of dict
-        One for each lattice: `name`, `cage_status`, `free_volume`, `free_surface`,
-        `bounding_neighbors`, `weakest_window`, `compressibility_factor` of the
-        cell theory, and `free_volume_ratio` of the measured mean to it.
+        One for each lattice: `name`, `cage_status`, `free_volume`, `free_surface`
+        (in powers of that unit), `bounding_neighbors`, `weakest_window`,
+        `compressibility_factor` of the cell theory, and `free_volume_ratio` of the
+        measured mean to it.
     """
     d, rows = dimensions, []
     for name in lattice_names(d):

@@ -111,7 +111,7 @@ class FreeVolumeDistribution:
         }
 
     def summary(self) -> dict[str, float | int]:
-        """Moments over all frames; volumes in length^d."""
+        """Moments over all frames; volumes in mean diameters^d."""
         n = int(self._counts.sum())
         if n == 0:
             return {"n_values": 0, "left_out": self._left_out}
@@ -123,9 +123,9 @@ class FreeVolumeDistribution:
         )
         wide = variance > 1e-10 * first**2  # else only rounding is left
         return {
-            "mean": first * self._unit,
-            "geometric_mean": math.exp(logarithm) * self._unit,
-            "standard_deviation": math.sqrt(variance) * self._unit,
+            "mean": first,
+            "geometric_mean": math.exp(logarithm),
+            "standard_deviation": math.sqrt(variance),
             "skewness": third_central / variance**1.5 if wide else math.nan,
             "kurtosis_excess": fourth_central / variance**2 - 3 if wide else math.nan,
             "n_values": n,

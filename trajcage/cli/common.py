@@ -1,13 +1,24 @@
 """Options and forms of output that several commands share."""
 
 import json
-from collections.abc import Callable
+import math
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import is_dataclass
+from enum import Enum
 from pathlib import Path
 from typing import Any, TypeVar
 
 import click
 
-__all__ = ["input_options", "json_option", "print_json", "result_argument", "table"]
+__all__ = [
+    "input_options",
+    "json_option",
+    "number",
+    "print_json",
+    "result_argument",
+    "table",
+    "with_error",
+]
 
 F = TypeVar("F", bound=Callable[..., Any])
 
@@ -32,6 +43,7 @@ _INPUT = (
     click.option(
         "--dimensions",
         type=click.IntRange(2, 3),
+        metavar="2|3",
         help="Number of dimensions. From the input unless given.",
     ),
     click.option(
@@ -39,7 +51,9 @@ _INPUT = (
         metavar="AXES",
         help="Periodic edges: xyz, xy, ..., or none. From the input unless given.",
     ),
-    click.option("--dt", type=float, help="Time of one simulation step."),
+    click.option(
+        "--dt", type=float, metavar="TIME", help="Time of one simulation step."
+    ),
     click.option("--time-unit", metavar="NAME", help="Name of the time unit."),
 )
 
@@ -58,18 +72,52 @@ def input_options(function: F) -> F:
 
 
 def print_json(value: object) -> None:
-    """Print a value as JSON; what is undefined must be null already."""
-    click.echo(json.dumps(value, indent=2, allow_nan=False))
+    """Print a value as JSON; what is undefined or infinite becomes null."""
+    click.echo(json.dumps(_plain(value), indent=2, allow_nan=False))
 
 
-def table(rows: list[tuple[str, ...]], header: tuple[str, ...] = ()) -> str:
-    """Lay out rows in columns: the first to the left, the others to the right."""
-    lines = [header, *rows] if header else rows
+def _plain(value: object) -> object:
+    if isinstance(value, Enum):
+        return value.name.lower()
+    if is_dataclass(value) and not isinstance(value, type):
+        return {k: _plain(getattr(value, k)) for k in value.__dataclass_fields__}
+    if isinstance(value, Mapping):
+        return {name: _plain(item) for name, item in value.items()}
+    if isinstance(value, (list, tuple)):
+        return [_plain(item) for item in value]
+    if isinstance(value, float) and not math.isfinite(value):
+        return None
+    return value
+
+
+def table(
+    rows: Sequence[Sequence[str]], header: Sequence[str] = (), *, align: str = "right"
+) -> str:
+    """Lay out rows in columns: the first to the left, the others as told."""
+    lines = [header, *rows] if header else list(rows)
     widths = [max(len(line[k]) for line in lines) for k in range(len(lines[0]))]
-    return "\n".join(
-        "  ".join(
-            cell.ljust(width) if k == 0 else cell.rjust(width)
+    laid_out = []
+    for line in lines:
+        cells = [
+            cell.ljust(width) if k == 0 or align == "left" else cell.rjust(width)
             for k, (cell, width) in enumerate(zip(line, widths, strict=True))
-        ).rstrip()
-        for line in lines
-    )
+        ]
+        laid_out.append("  ".join(cells).rstrip())
+    return "\n".join(laid_out)
+
+
+def number(value: float | None, digits: int = 6) -> str:
+    """Write a number, ``-`` for one that does not exist."""
+    if value is None or not math.isfinite(value):
+        return "-"
+    return f"{value:.{digits}g}"
+
+
+def with_error(mean: float | None, error: float | None) -> str:
+    """Write a mean with its error, to two digits of the error."""
+    if mean is None or error is None or error <= 0.0:
+        return number(mean)
+    decimals = max(0, 1 - math.floor(math.log10(error)))
+    if decimals > 9:
+        return f"{mean:.6g} ± {error:.1e}"
+    return f"{mean:.{decimals}f} ± {error:.{decimals}f}"

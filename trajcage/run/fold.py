@@ -12,6 +12,7 @@ from trajcage.analysis.comparison import (
     compare_lattices,
     phase_table,
 )
+from trajcage.analysis.conclusion import SUMMARY as TIME_SCALARS
 from trajcage.analysis.conclusion import Conclusion
 from trajcage.analysis.distributions import FreeVolumeDistribution
 from trajcage.analysis.fold import TimeFold
@@ -20,7 +21,7 @@ from trajcage.analysis.state import State, prefixed, under
 from trajcage.analysis.statistics import BlockMoments, MeanEstimate
 from trajcage.analysis.thermodynamics import CompressibilityStatus, equal_diameter
 from trajcage.analysis.tracking import RegionTracker
-from trajcage.model import CageStatus, Frame, FrameRecord
+from trajcage.model import CageStatus, Field, Frame, FrameRecord
 from trajcage.run.frames import MeasuredFrame
 from trajcage.run.settings import RunSettings
 
@@ -45,11 +46,11 @@ class RunFold:
         n, d = first.positions.shape
         self._settings = settings
         self._first = first
-        self._names = tuple(
-            f.name
-            for f in settings.fields(d)
-            if not (f.per_particle or f.shape or f.codes)
-        )
+        scalars = [
+            f for f in settings.fields(d) if not (f.per_particle or f.shape or f.codes)
+        ]
+        self._names = tuple(f.name for f in scalars)
+        self._scales = [_scale(f, first.mean_diameter) for f in scalars]
         self._series = BlockMoments(len(self._names), 1)
         self._missing = np.zeros(len(self._names), dtype=np.int64)
         self._statuses = np.zeros(len(CageStatus), dtype=np.int64)
@@ -184,6 +185,7 @@ class RunFold:
             "n_frames": self._n_frames,
             "n_particles": first.n_particles,
             "dimensions": d,
+            "lengths_in": "mean_diameter",
             "mean_diameter": first.mean_diameter,
             "equal_radii": first.equal_radii,
             "cages": dict(
@@ -210,18 +212,26 @@ class RunFold:
             summary |= {
                 "equations_of_state": compare_equations(d, first.radii, phi, factor),
                 "lattices": compare_lattices(
-                    d, phi, equal_diameter(first), estimates["free_volume_mean"].mean
+                    d,
+                    phi,
+                    equal_diameter(first) / first.mean_diameter,
+                    estimates["free_volume_mean"].mean,
                 ),
                 "phase_marks": phase_table(d),
             }
         if time is not None:
-            summary["time"] = time.summary
+            summary["time"] = {
+                f.name: time.summary[f.name] / _scale(f, first.mean_diameter)
+                for f in TIME_SCALARS
+            }
             summary["time_reasons"] = time.reasons
         return summary
 
     def _estimate(self, row: int) -> MeanEstimate:
-        mean = float(self._series.mean(row)[0])
-        estimate = self._series.estimate(row, mean, np.ones(1))
+        """Mean and error of an observable, lengths in mean diameters."""
+        scale = self._scales[row]
+        mean = float(self._series.mean(row)[0]) / scale
+        estimate = self._series.estimate(row, mean, np.ones(1) / scale)
         return dataclasses.replace(estimate, n_missing=int(self._missing[row]))
 
     def state(self) -> State:
@@ -256,6 +266,15 @@ class RunFold:
             "tracker": self._tracker,
             "time": self._time,
         }
+
+
+def _scale(field: Field, mean_diameter: float) -> float:
+    """Return the unit of a field, with lengths in mean diameters, in the run's units."""
+    power = 0
+    for factor in field.unit.split():
+        if factor.startswith("length"):
+            power = int(factor.removeprefix("length") or 1)
+    return float(mean_diameter**power)
 
 
 def _jsonable(value: object) -> object:

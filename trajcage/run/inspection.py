@@ -1,11 +1,11 @@
 """What a run would understand of an input, without measuring it."""
 
-import math
 from collections.abc import Sequence
 from dataclasses import asdict, dataclass
 from pathlib import Path
 
 from trajcage.analysis.cages import (
+    DENSEST_PACKING,
     Overlaps,
     check_packing,
     default_overlap_tolerance,
@@ -98,9 +98,9 @@ def inspect(
         dt=dt,
         time_unit=time_unit,
     )
-    with open_trajectory(options) as trajectory_:
-        description = trajectory_.describe()
-        frame = trajectory_.frame(0)
+    with open_trajectory(options) as opened:
+        description = opened.describe()
+        frame = opened.frame(0)
     check_distinct(frame)
     warning = check_packing(frame)
     tolerance = overlap_tolerance
@@ -108,8 +108,7 @@ def inspect(
         tolerance = default_overlap_tolerance(frame)
     overlaps = find_overlaps(frame, tolerance)
     phi, d = frame.packing_fraction, frame.dimensions
-    densest = math.pi / math.sqrt(12.0 if d == 2 else 18.0)
-    gap = frame.mean_diameter * ((densest / phi) ** (1.0 / d) - 1.0)
+    gap = frame.mean_diameter * ((DENSEST_PACKING[d] / phi) ** (1.0 / d) - 1.0)
     notes = [*description.notes, warning, *_advice(description, phi, gap, overlaps)]
     return Inspection(
         input=description,

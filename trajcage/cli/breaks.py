@@ -1,0 +1,131 @@
+"""The command that lists the cages that broke."""
+
+import csv
+import sys
+from typing import TYPE_CHECKING, Any
+
+import click
+
+from trajcage.cli.common import number, print_json, result_argument, table
+
+if TYPE_CHECKING:
+    from trajcage.store import Result
+
+__all__ = ["command"]
+
+
+@click.command(name="breaks")
+@result_argument
+@click.option("--csv", "as_csv", is_flag=True, help="Print all events as CSV.")
+@click.option("--json", "as_json", is_flag=True, help="Print all events as JSON.")
+@click.option(
+    "--limit",
+    type=click.IntRange(min=0),
+    default=20,
+    show_default=True,
+    help="Events to show as text.",
+)
+def command(*, result: Any, as_csv: bool, as_json: bool, limit: int) -> None:
+    """List the cages that broke: who, when, how far, and which neighbors were lost.
+
+    A cage is broken when a set share of the neighbors at its start is gone. Ids are
+    those of the input; times are in the time unit of the file, lengths in its unit of
+    length.
+    """
+    from trajcage.errors import ResultFileError
+    from trajcage.store import open_result
+
+    with open_result(result) as opened:
+        if "events" not in opened.tables:
+            raise ResultFileError(
+                f"{result} holds no cage breaking: it was measured with --skip time"
+            )
+        events = _events(opened)
+        n_particles, n_frames = opened.n_particles, opened.frames_complete
+    if as_json:
+        print_json(events)
+    elif as_csv:
+        _write_csv(events)
+    else:
+        click.echo(_text(events[:limit], len(events), n_particles, n_frames))
+
+
+def _events(opened: "Result") -> list[dict[str, Any]]:
+    """Events as rows with ids in place of indices and codes by name."""
+    from trajcage.analysis.regions import Region
+
+    columns = opened.table("events")
+    ids = opened.ids
+    rows = []
+    for k in range(len(columns["particle"])):
+        row: dict[str, Any] = {}
+        for name, values in columns.items():
+            if name.endswith("_offsets"):
+                continue
+            if f"{name}_offsets" in columns:
+                start, stop = (int(i) for i in columns[f"{name}_offsets"][k : k + 2])
+                row[name] = ids[values[start:stop]].tolist()
+            elif name == "particle":
+                row["id"] = int(ids[values[k]])
+            elif name.startswith("region_"):
+                row[name] = Region(int(values[k])).name.lower()
+            else:
+                row[name] = values[k].tolist()
+        rows.append(row)
+    return rows
+
+
+def _write_csv(events: list[dict[str, Any]]) -> None:
+    writer = csv.writer(sys.stdout, lineterminator="\n")
+    for k, event in enumerate(events):
+        flat: dict[str, object] = {}
+        for name, value in event.items():
+            if name == "displacement":
+                flat |= {
+                    f"{name}_{axis}": x for axis, x in zip("xyz", value, strict=False)
+                }
+            else:
+                flat[name] = (
+                    " ".join(map(str, value)) if isinstance(value, list) else value
+                )
+        if k == 0:
+            writer.writerow(flat)
+        writer.writerow(flat.values())
+
+
+def _text(
+    events: list[dict[str, Any]], total: int, n_particles: int, n_frames: int
+) -> str:
+    head = f"{total} cages broke among {n_particles} particles in {n_frames} frames"
+    if not events:
+        return head
+    rows = [
+        (
+            str(event["id"]),
+            ("before " if event["from_record_start"] else "")
+            + number(event["start_time"]),
+            number(event["end_time"]),
+            number(sum(x * x for x in event["displacement"]) ** 0.5, 4),
+            f"{len(event['neighbors_lost'])}/{event['n_neighbors_start']}",
+            str(len(event["neighbors_gained"])),
+            f"{event['region_before']} - {event['region_after']}",
+            number(event["weakest_window_before"], 4),
+            {1: "yes", 0: "no"}.get(event["through_weakest_window"], "-"),
+        )
+        for event in events
+    ]
+    header = (
+        "id",
+        "start_time",
+        "end_time",
+        "displacement",
+        "lost",
+        "gained",
+        "region",
+        "weakest_window",
+        "through",
+    )
+    text = f"{head}\n\n{table(rows, header)}"
+    if total > len(events):
+        text += f"\n... and {total - len(events)} more; --csv lists all"
+    return text
