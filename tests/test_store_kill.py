@@ -132,7 +132,7 @@ def test_killed_again_and_again_equals_uninterrupted(tmp_path, reference):
     seed = random.Random(5)
     kills = 0
     for _ in range(6):
-        process = start(path, 30, STORE_SCENARIO_PAUSE="0.004")
+        process = start(path, 30, STORE_SCENARIO_PAUSE="0.02")
         wait_for(path, process)
         time.sleep(0.35 + seed.uniform(0.0, 0.1))
         if process.poll() is None:

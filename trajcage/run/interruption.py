@@ -14,7 +14,8 @@ class StopRequest:
     """Turn the first interrupt into a request that the run looks at by itself.
 
     A second one acts as usual, for those who cannot wait for the frame to end.
-    Outside the main thread signals are left alone.
+    Signals that the process was told to ignore (as in background jobs of a shell
+    script), and all of them outside the main thread, are left alone.
     """
 
     def __init__(self) -> None:
@@ -23,7 +24,8 @@ class StopRequest:
 
     def __enter__(self) -> Self:
         if threading.current_thread() is threading.main_thread():
-            self._before = {s: signal.signal(s, self._note) for s in _SIGNALS}
+            heard = [s for s in _SIGNALS if signal.getsignal(s) != signal.SIG_IGN]
+            self._before = {s: signal.signal(s, self._note) for s in heard}
         return self
 
     def __exit__(

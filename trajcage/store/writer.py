@@ -30,6 +30,10 @@ __all__ = ["ResultWriter"]
 _State = Mapping[str, NDArray[np.generic]]
 _Rows = Mapping[str, Mapping[str, ArrayLike]]
 
+# Summaries of one run are about equally long; whole blocks make them equal, so that
+# the dataset, which cannot shrink, does not tell how often it was replaced.
+_SUMMARY_BLOCK = 32_768
+
 
 class ResultWriter:
     """Writes one result file; made by :meth:`create` or :meth:`resume`.
@@ -419,7 +423,7 @@ class ResultWriter:
         state = self._state if state is None else state
         packed = None if state is None else pack_arrays(state)
         new_arrays = check_arrays(arrays or {}, self._arrays)
-        text = None if summary is None else json.dumps(summary, indent=1).encode()
+        text = None if summary is None else _summary_text(summary)
         self._failed = True  # until proven otherwise
         with guard(self.path, "writing"):
             old = self._commit
@@ -487,6 +491,11 @@ class ResultWriter:
             return None
         data = root["state"]["ab"[self._commit.state_slot]][:size]
         return unpack_arrays(data.tobytes())
+
+
+def _summary_text(summary: Mapping[str, object]) -> bytes:
+    text = json.dumps(summary, indent=1).encode()
+    return text.ljust(-(-len(text) // _SUMMARY_BLOCK) * _SUMMARY_BLOCK)
 
 
 def _check_free(path: Path, *, overwrite: bool) -> None:
