@@ -7,20 +7,29 @@ from typing import NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
-from trajcage.kernel import wall2d, wall3d
-from trajcage.kernel.codes import CLOSED, INVALID, NEED_CAPACITY, NEED_HALO
+from trajcage.kernel import patch3d, wall2d, wall3d
+from trajcage.kernel.codes import (
+    CLOSED,
+    INVALID,
+    NEED_CAPACITY,
+    NEED_HALO,
+    OPEN,
+    WRAPPED,
+)
 from trajcage.kernel.flood2d import flood as flood2d
 from trajcage.kernel.flood3d import flood as flood3d
 from trajcage.kernel.grid import Grid, build_grid
 from trajcage.kernel.jit import compiled, helper
+from trajcage.kernel.patch3d import AREA
 from trajcage.kernel.scratch import X, Y, Z, make_scratch
-from trajcage.kernel.wall3d import AREA
+from trajcage.kernel.torus import make_torus
 
 __all__ = ["Cages", "measure_cages"]
 
-#: Strengths of the tie-breaking; the next one is tried if a flood came out
+#: Strengths of the tie-breaking, relative to the power and (for ties of contacts
+#: with far spheres) absolute; the next ones are tried if a flood came out
 #: inconsistent, which takes input that is degenerate at exactly this level.
-_SHIFTS = np.array([1e-10, 3e-9, 1e-7])
+_SHIFTS = np.array([[1e-10, 0.0], [3e-9, 3e-12], [1e-7, 1e-10]])
 
 #: Status of a particle that waits for a wider halo.
 PENDING = 255
@@ -93,31 +102,31 @@ def _make_rows(size: int) -> _Rows:
 
 
 @helper
-def _cage(grid, s, i, radius, first, limits, shift, plane):
+def _cage(grid, s, i, radius, first, limits, shift, plane, torus):
     """Flood and integrate one cage."""
     xi, yi, zi = grid.home[i, 0], grid.home[i, 1], grid.home[i, 2]
     if plane is None:
         code, n, n_cells, n_corners = flood3d(
-            grid, s, i, xi, yi, zi, radius, first, limits, shift
+            grid, s, i, xi, yi, zi, radius, first, limits, shift, torus
         )
         if code != CLOSED:
             return n_corners, (code, 0.0, 0.0, 0.0, 0, 0.0, -1)
-        return n_corners, wall3d.integrate_wall(s, n, n_cells, n_corners)
+        return n_corners, wall3d.integrate_wall(grid, s, n, n_cells, n_corners, torus)
     code, n, n_cells, n_corners = flood2d(
-        grid, s, i, xi, yi, zi, radius, first, limits, shift
+        grid, s, i, xi, yi, zi, radius, first, limits, shift, torus
     )
     if code != CLOSED:
         return n_corners, (code, 0.0, 0.0, 0.0, 0, 0.0, -1)
-    return n_corners, wall2d.integrate_wall(s, n, n_cells, n_corners)
+    return n_corners, wall2d.integrate_wall(grid, s, n, n_cells, n_corners, torus)
 
 
 @helper
 def _window(grid, s, q, row, members, plane):
     """Write the particles of the window at corner q; return its opening ratio."""
     if plane is None:
-        a, b, c = wall3d.window(s, q)
+        a, b, c = patch3d.window(s, q)
         members[row, 2] = grid.owner[s.found[c]]
-        ratio = wall3d.opening_ratio(s, a, b, c)
+        ratio = patch3d.opening_ratio(s, a, b, c)
     else:
         a, b = wall2d.window(s, q)
         ratio = wall2d.opening_ratio(s, a, b)
@@ -168,6 +177,7 @@ def _measure_range(
     rows,
     output,
     plane,
+    torus,
 ):
     """Measure particles ``todo[begin:]``; return where it stopped for more room."""
     reach, first, r_max, tolerance = settings
@@ -178,7 +188,7 @@ def _measure_range(
         n_corners, cage = 0, (INVALID, 0.0, 0.0, 0.0, 0, 0.0, -1)
         for attempt in range(len(shifts)):
             n_corners, cage = _cage(
-                grid, s, i, radii[i], first, limits, shifts[attempt], plane
+                grid, s, i, radii[i], first, limits, shifts[attempt], plane, torus
             )
             if cage[0] != INVALID:
                 break
@@ -189,6 +199,10 @@ def _measure_range(
             status[i] = PENDING
             continue
         if code == CLOSED:
+            if torus is not None and torus.sums[1] > 0.0:
+                status[i] = WRAPPED
+            else:
+                status[i] = CLOSED
             if keep and not _keep_rows(grid, s, i, bounding, n_corners, rows, plane):
                 return at
             numbers[i, 0] = volume
@@ -198,7 +212,8 @@ def _measure_range(
             if where >= 0:
                 numbers[i, 3] = weakest
                 _window(grid, s, where, i, members, plane)
-        status[i] = code
+        else:
+            status[i] = code
     return len(todo)
 
 
@@ -247,26 +262,10 @@ def measure_cages(
     Cages
         The same bits for any number of threads.
     """
-    n = len(positions)
+    n, d = positions.shape
     # a power of two brings lengths to order one without rounding
     scale = float(2.0 ** -np.round(np.log2(2.0 * radii.max())))
-    d = positions.shape[1]
-    xyz = np.zeros((n, 3))
-    xyz[:, :d] = positions * scale
-    edges = np.eye(3)
-    edges[:d, :d] = vectors * scale
-    corner = np.zeros(3)
-    corner[:d] = origin * scale
-    flags = np.zeros(3, bool)
-    flags[:d] = periodic
-    radius = np.ascontiguousarray(radii * scale, dtype=np.float64)
-    r_max = float(radius.max())
-    spacing = float((abs(np.linalg.det(edges[:d, :d])) / n) ** (1.0 / d))
-    first = max(1.5 * 2.0 * float(radius.mean()), 1.3 * spacing)
-    side = max(r_max, 0.75 * spacing)
-    if d == 2:
-        edges[2, 2] = side
-    far = (20.0 * r_max) if reach is None else reach * scale
+    system = _System.embed(positions, vectors, origin, periodic, radii, scale)
     numbers = np.full((n, 4), np.nan)
     status = np.full(n, PENDING, np.uint8)
     bounds = np.full(n, -1, np.int32)
@@ -274,26 +273,18 @@ def measure_cages(
     output = (numbers, status, bounds, members)
     wanted = np.zeros(n, bool)
     wanted[slice(None) if subset is None else subset] = True
-    halo = 1.7 * first
-    all_rows: list[_Rows] = []
-    while wanted.any():
-        grid = build_grid(xyz, edges, corner, flags, radius, halo, side)
-        if d == 2:
-            grid.shape[1, 2] = 1  # nothing lies beyond the plane
-        todo = grid.order[wanted[grid.order]]
-        settings = (far, first, r_max, overlap_tolerance * scale)
-        parts = np.array_split(todo, max(1, min(threads, len(todo))))
-
-        work = partial(_measure_part, grid, radius, settings, windows, output)
-        if len(parts) == 1:
-            all_rows += work(parts[0])
-        else:
-            with ThreadPoolExecutor(len(parts)) as pool:
-                for rows in pool.map(work, parts):
-                    all_rows += rows
-        wanted &= status == PENDING
-        halo *= 1.6
-        first = min(1.3 * first, halo)
+    tolerance = overlap_tolerance * scale
+    far = 20.0 * system.r_max if reach is None else reach * scale
+    whole_box = bool(np.isinf(far))
+    if whole_box:
+        # further than this a region that does not wrap around is rare
+        far = 0.6 * float(np.linalg.norm(system.vectors[:d], axis=1).max())
+    rows = _rounds(system, wanted, far, tolerance, windows, threads, output, False)
+    if whole_box and np.all(periodic):
+        wanted = wanted & (status == OPEN)
+        status[wanted] = PENDING
+        sheared = system.without_symmetry()
+        rows += _rounds(sheared, wanted, np.inf, tolerance, windows, 1, output, True)
     if subset is not None:
         rest = np.ones(n, bool)
         rest[subset] = False
@@ -301,7 +292,7 @@ def measure_cages(
     numbers[:, 0] /= scale**d
     numbers[:, 1] /= scale ** (d - 1)
     numbers[:, 2] /= scale**d
-    wall, shut = _gather_rows(all_rows, n, d, scale) if windows else (None, None)
+    wall, shut = _gather_rows(rows, n, d, scale) if windows else (None, None)
     return Cages(
         numbers[:, 0].copy(),
         numbers[:, 1].copy(),
@@ -315,12 +306,115 @@ def measure_cages(
     )
 
 
+class _System(NamedTuple):
+    """A configuration in three dimensions with lengths of order one."""
+
+    positions: NDArray[np.float64]  #: (n, 3)
+    vectors: NDArray[np.float64]  #: (3, 3)
+    origin: NDArray[np.float64]  #: (3,)
+    periodic: NDArray[np.bool_]  #: (3,)
+    radii: NDArray[np.float64]  #: (n,)
+    r_max: float
+    spacing: float  #: edge of the cube (square) that holds one particle
+    dimensions: int
+
+    @classmethod
+    def embed(
+        cls,
+        positions: NDArray[np.float64],
+        vectors: NDArray[np.float64],
+        origin: NDArray[np.float64],
+        periodic: NDArray[np.bool_],
+        radii: NDArray[np.float64],
+        scale: float,
+    ) -> "_System":
+        """Scale all lengths and put a plane at z = 0."""
+        n, d = positions.shape
+        xyz, edges, corner = np.zeros((n, 3)), np.eye(3), np.zeros(3)
+        xyz[:, :d] = positions * scale
+        edges[:d, :d] = vectors * scale
+        corner[:d] = origin * scale
+        flags = np.zeros(3, bool)
+        flags[:d] = periodic
+        radius = np.ascontiguousarray(radii * scale, dtype=np.float64)
+        volume = abs(float(np.linalg.det(edges[:d, :d])))
+        spacing = float((volume / n) ** (1.0 / d))
+        return cls(xyz, edges, corner, flags, radius, float(radius.max()), spacing, d)
+
+    def without_symmetry(self) -> "_System":
+        """Shear space and change radii by 1e-11, which breaks all periodic ties."""
+        d = self.dimensions
+        random = np.random.default_rng(21)
+        shear = np.eye(3)
+        shear[:d, :d] += 1e-11 * random.uniform(-1.0, 1.0, (d, d))
+        radii = self.radii * (1.0 + 1e-11 * random.uniform(-1.0, 1.0, len(self.radii)))
+        return self._replace(
+            positions=self.positions @ shear,
+            vectors=self.vectors @ shear,
+            origin=self.origin @ shear,
+            radii=radii,
+        )
+
+
+def _rounds(
+    system: _System,
+    wanted: NDArray[np.bool_],
+    reach: float,
+    tolerance: float,
+    keep: bool,
+    threads: int,
+    output: _Output,
+    wrapped: bool,
+) -> list[_Rows]:
+    """Measure the wanted particles, with a wider halo of images in each round."""
+    mean = float(system.radii.mean())
+    first = max(3.0 * mean, 1.3 * system.spacing)
+    side = max(system.r_max, 0.75 * system.spacing)
+    vectors = system.vectors.copy()
+    halo = 1.7 * first
+    if system.dimensions == 2:
+        vectors[2, 2] = side
+    elif wrapped:
+        halo = max(halo, float(np.linalg.norm(system.vectors, axis=1).max()))
+    waiting = wanted.copy()
+    rows: list[_Rows] = []
+    while waiting.any():
+        grid = build_grid(
+            system.positions,
+            vectors,
+            system.origin,
+            system.periodic,
+            system.radii,
+            halo,
+            side,
+        )
+        if system.dimensions == 2:
+            grid.shape[1, 2] = 1  # nothing lies beyond the plane
+        todo = grid.order[waiting[grid.order]]
+        settings = (reach, first, system.r_max, tolerance)
+        parts = np.array_split(todo, max(1, min(threads, len(todo))))
+        work = partial(
+            _measure_part, grid, system.radii, settings, keep, output, wrapped
+        )
+        if len(parts) == 1:
+            rows += work(parts[0])
+        else:
+            with ThreadPoolExecutor(len(parts)) as pool:
+                for share in pool.map(work, parts):
+                    rows += share
+        waiting &= output[1] == PENDING
+        halo *= 1.6
+        first = min(1.3 * first, halo)
+    return rows
+
+
 def _measure_part(
     grid: Grid,
     radius: NDArray[np.float64],
     settings: tuple[float, float, float, float],
     keep: bool,
     output: _Output,
+    wrapped: bool,
     todo: NDArray[np.int64],
 ) -> list[_Rows]:
     """Measure one share of the particles, with more room whenever asked for."""
@@ -330,6 +424,7 @@ def _measure_part(
     begin = 0
     while begin < len(todo):
         scratch = make_scratch(n_candidates, n_cells)
+        torus = make_torus(grid, n_candidates, n_cells) if wrapped else None
         rows = _make_rows(max(4 * n_cells, 64 * (len(todo) - begin)) if keep else 0)
         begin = _measure_range(
             grid,
@@ -343,6 +438,7 @@ def _measure_part(
             rows,
             output,
             plane,
+            torus,
         )
         finished.append(rows)
         n_candidates, n_cells = 2 * n_candidates, 2 * n_cells

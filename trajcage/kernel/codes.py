@@ -8,6 +8,7 @@ __all__ = [
     "NEED_HALO",
     "OPEN",
     "OVERLAP",
+    "WRAPPED",
 ]
 
 # final answers, the same numbers as trajcage.model.CageStatus
@@ -16,6 +17,7 @@ OPEN = 1
 BORDER = 2
 OVERLAP = 3
 INVALID = 4
+WRAPPED = 5
 
 # requests to the driver: more room in the scratch arrays, a wider halo of images
 NEED_CAPACITY = 10

@@ -25,6 +25,7 @@ from trajcage.kernel.codes import (
 from trajcage.kernel.grid import CORNER, INVERSE_HEIGHT, gather
 from trajcage.kernel.jit import helper
 from trajcage.kernel.scratch import GAP, POWER, REACH, SHIFTED, TIE, X, Y, Z
+from trajcage.kernel.torus import begin, canonical, register
 
 __all__ = [
     "collect",
@@ -34,6 +35,7 @@ __all__ = [
     "outside",
     "pad",
     "ray_to_sphere",
+    "slot_of",
 ]
 
 
@@ -73,7 +75,7 @@ def collect(grid, s, i, xi, yi, zi, ri, n, inner, outer, tolerance, shift):
         s.near[Z, k] = dz
         s.near[REACH, k] = reach
         s.near[POWER, k] = power
-        s.near[SHIFTED, k] = power * (1.0 + shift * s.near[TIE, k])
+        s.near[SHIFTED, k] = power + s.near[TIE, k] * (shift[0] * power + shift[1])
     if pad(total) > len(s.found):
         return NEED_CAPACITY, n
     for k in range(total, pad(total)):
@@ -268,6 +270,18 @@ def _sorted4(a, b, c, d):
 
 
 @helper
+def slot_of(s, t, a):
+    """Slot of candidate a in cell t, which has it."""
+    if s.cell[t, 0] == a:
+        return 0
+    if s.cell[t, 1] == a:
+        return 1
+    if s.cell[t, 2] == a:
+        return 2
+    return 3
+
+
+@helper
 def find_cell(s, a, b, c, d):
     """Look up a sorted cell; return (cell or -1, free slot of the hash table)."""
     mask = len(s.slots) - 1
@@ -323,7 +337,7 @@ def _gaps(s, begin, n, t):
 
 
 @helper
-def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):
+def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
     """Find all power vertices of the cage and the corners of its wall.
 
     Parameters
@@ -336,8 +350,10 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):
     limits : tuple of float
         How far from the particle a cage is followed; the largest exclusion
         radius; overlap tolerance; distance up to which the grid is complete.
-    shift : float
-        Strength of the tie-breaking.
+    shift : (2,) float64
+        Strength of the tie-breaking, relative and absolute.
+    torus : Torus or None
+        Whether cells count up to translations by box edges.
 
     Returns
     -------
@@ -372,6 +388,20 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):
         known = need
     if outside(grid, xi, yi, zi, px, py, pz, ball):
         return BORDER, n, 0, 0
+    if torus is not None:
+        begin(torus, grid, i)
+        register(torus, grid, s, n)
+        if not canonical(torus, grid, a, b, c, d, 4):
+            return NEED_HALO, n, 0, 0
+        image = torus.image
+        a, b, c, d = _sorted4(
+            np.uint32(image[0]),
+            np.uint32(image[1]),
+            np.uint32(image[2]),
+            np.uint32(image[3]),
+        )
+        px, py, pz, power = _solve(s, a, b, c, d)
+        torus.offset[0, :] = 0
     _, slot = find_cell(s, a, b, c, d)
     _new_cell(s, 0, slot, a, b, c, d, px, py, pz, power)
     n_cells = 1
@@ -426,6 +456,12 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):
                 inside = slope * slope - power * square
                 if inside >= 0.0:
                     crossing = power / (np.sqrt(inside) - slope)
+            # slots and candidates of the face
+            f0 = 1 if f == 0 else 0
+            f1 = 2 if f <= 1 else 1
+            f2 = 3 if f <= 2 else 2
+            m0, m1, m2 = s.cell[t, f0], s.cell[t, f1], s.cell[t, f2]
+            m3 = m0
             while True:
                 who = -1
                 step = np.inf
@@ -463,20 +499,35 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):
                         far = reach
                         ball = largest
                     else:
-                        m0, m1, m2 = v0, v1, v2
-                        if f == 0:
-                            m0, m1, m2 = v1, v2, v3
-                        elif f == 1:
-                            m1, m2 = v2, v3
-                        elif f == 2:
-                            m2 = v3
-                        a, b, c, d = _sorted4(m0, m1, m2, np.uint32(who))
-                        other, slot = find_cell(s, a, b, c, d)
-                        if other >= 0:
-                            break
-                        qx, qy, qz, q_power = _solve(s, a, b, c, d)
-                        far = np.sqrt(qx * qx + qy * qy + qz * qz)
-                        ball = np.sqrt(max(q_power, 0.0) + largest * largest)
+                        m0, m1, m2 = s.cell[t, f0], s.cell[t, f1], s.cell[t, f2]
+                        m3 = np.uint32(who)
+                        ready = True
+                        if torus is not None:
+                            # the neighbor must be final before it is moved
+                            far = np.sqrt(qx * qx + qy * qy + qz * qz)
+                            q_power = power + (2.0 * slope + square * step) * step
+                            ball = np.sqrt(max(q_power, 0.0) + largest * largest)
+                            ready = far + ball <= known
+                            if ready and not canonical(torus, grid, m0, m1, m2, m3, 4):
+                                ready = False
+                                far = 1.2 * known - ball
+                            if ready:
+                                m0, m1 = (
+                                    np.uint32(torus.image[0]),
+                                    np.uint32(torus.image[1]),
+                                )
+                                m2, m3 = (
+                                    np.uint32(torus.image[2]),
+                                    np.uint32(torus.image[3]),
+                                )
+                        if ready:
+                            a, b, c, d = _sorted4(m0, m1, m2, m3)
+                            other, slot = find_cell(s, a, b, c, d)
+                            if other >= 0:
+                                break
+                            qx, qy, qz, q_power = _solve(s, a, b, c, d)
+                            far = np.sqrt(qx * qx + qy * qy + qz * qz)
+                            ball = np.sqrt(max(q_power, 0.0) + largest * largest)
                 need = far + ball
                 if need <= known:
                     break
@@ -492,6 +543,8 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):
                 _gaps(s, n, total, t)
                 n = total
                 known = need
+                if torus is not None:
+                    register(torus, grid, s, n)
             if blocked:
                 if outside(grid, xi, yi, zi, qx, qy, qz, largest):
                     return BORDER, n, n_cells, n_corners
@@ -517,12 +570,29 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):
                 n_cells += 1
                 s.stack[height] = other
                 height += 1
+                if torus is not None:
+                    for axis in range(3):
+                        torus.offset[other, axis] = (
+                            torus.offset[t, axis] + torus.move[axis]
+                        )
+            elif torus is not None:
+                for axis in range(3):
+                    if (
+                        torus.offset[other, axis]
+                        != torus.offset[t, axis] + torus.move[axis]
+                    ):
+                        torus.sums[1] = 1.0
             # link both sides of the face
-            back = 0
-            while back < 4 and s.cell[other, back] != who:
-                back += 1
-            if back == 4 or s.across[other, back] != -1:
+            back = slot_of(s, other, m3)
+            if s.cell[other, back] != m3 or s.across[other, back] != -1:
                 return INVALID, n, n_cells, n_corners
             s.across[t, f] = other
             s.across[other, back] = t
+            j0, j1, j2 = (
+                slot_of(s, other, m0),
+                slot_of(s, other, m1),
+                slot_of(s, other, m2),
+            )
+            s.join[t, f] = j0 << 2 * f0 | j1 << 2 * f1 | j2 << 2 * f2
+            s.join[other, back] = f0 << 2 * j0 | f1 << 2 * j1 | f2 << 2 * j2
     return CLOSED, n, n_cells, n_corners

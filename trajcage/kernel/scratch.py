@@ -46,6 +46,9 @@ class Scratch(NamedTuple):
     across: NDArray[np.int32]
     """(cells, 4): what lies across the face opposite to each candidate of the
     simplex: a cell, -1 unseen, -2 - c corner c."""
+    join: NDArray[np.int32]
+    """(cells, 4): the slots of a face's candidates in the cell across it, two
+    bits for each slot of this cell."""
     vertex: NDArray[np.float64]  #: (cells, 4) power vertex and its power
     stack: NDArray[np.int32]
     slots: NDArray[np.int64]  #: (slots, 2) hash table of cells: clock, cell
@@ -64,6 +67,7 @@ def make_scratch(n_candidates: int, n_cells: int) -> Scratch:
         np.empty(n_candidates, np.int64),
         near,
         np.empty((n_cells, 4), np.uint32),
+        np.empty((n_cells, 4), np.int32),
         np.empty((n_cells, 4), np.int32),
         np.empty((n_cells, 4)),
         np.empty(4 * n_cells, np.int32),

@@ -2,7 +2,9 @@
 
 On the circle about x_j with radius R, x . n = (|x|^2 - g) / 2R with g the
 power of the particle, so that the area is sum (g L - int |x|^2 dl) / 4R, in
-which nothing cancels however small the cage. For an arc p1 -> p2 the integral
+which nothing cancels however small the cage; around a periodic box the area is half
+of the sum over pairs of (distance x free length of their radical line) minus
+the sum of R L. For an arc p1 -> p2 the integral
 of the normal is the chord turned by a right angle.
 """
 
@@ -10,8 +12,10 @@ import numpy as np
 
 from trajcage.kernel.codes import CLOSED, INVALID
 from trajcage.kernel.jit import helper
+from trajcage.kernel.patch3d import AREA, AX, AY, STAMP, TURN, touch
 from trajcage.kernel.scratch import POWER, REACH, X, Y
-from trajcage.kernel.wall3d import AREA, AX, AY, STAMP, TURN, covered, slot_of, touch
+from trajcage.kernel.torus import home_of
+from trajcage.kernel.wall3d import covered
 
 __all__ = ["integrate_wall", "opening_ratio", "window"]
 
@@ -52,38 +56,39 @@ def _polish_corners(s, n_corners):
 def _turn(s, t, i, k, n_cells):
     """Turn about slot i of cell t, from its third slot to slot k and on.
 
-    Returns (corner, angle turned). The edge from i to the third slot is shut.
+    Returns (corner, slot of the center in its cell, angle turned). The edge
+    from i to the third slot is shut.
     """
-    a = s.cell[t, i]
     total = 0.0
     for _ in range(4 * n_cells):
         third = 3 - i - k
-        x0, y0 = s.near[X, a], s.near[Y, a]
-        ux, uy = s.near[X, s.cell[t, third]] - x0, s.near[Y, s.cell[t, third]] - y0
-        vx, vy = s.near[X, s.cell[t, k]] - x0, s.near[Y, s.cell[t, k]] - y0
+        a, b, c = s.cell[t, i], s.cell[t, third], s.cell[t, k]
+        ux, uy = s.near[X, b] - s.near[X, a], s.near[Y, b] - s.near[Y, a]
+        vx, vy = s.near[X, c] - s.near[X, a], s.near[Y, c] - s.near[Y, a]
         total += np.arctan2(abs(ux * vy - uy * vx), ux * vx + uy * vy)
-        other = s.across[t, third]
-        if other < 0:
-            return -2 - other, total
-        i2 = slot_of(s, other, a)
-        k2 = slot_of(s, other, s.cell[t, k])
-        t, i, k = other, i2, 3 - i2 - k2
-    return -1, total
+        if s.across[t, third] < 0:
+            return -2 - s.across[t, third], i, total
+        code = s.join[t, third]
+        t, i, k = (
+            s.across[t, third],
+            code >> 2 * i & 3,
+            3 - (code >> 2 * i & 3) - (code >> 2 * k & 3),
+        )
+    return -1, 0, total
 
 
 @helper
-def _covered_half_angle(s, a, q):
-    """Angle at a between corner q and the center of the corner's other disk."""
-    b, c = window(s, q)
-    if b == a:
-        b = c
+def _covered_half_angle(s, q, slot):
+    """Angle at the center in a slot between corner q and the corner's other disk."""
+    t = s.mark[q, 0]
+    a, b = s.cell[t, slot], s.cell[t, 3 - slot - s.mark[q, 1]]
     ux, uy = s.near[X, b] - s.near[X, a], s.near[Y, b] - s.near[Y, a]
     vx, vy = s.corner[q, 0] - s.near[X, a], s.corner[q, 1] - s.near[Y, a]
     return np.arctan2(abs(ux * vy - uy * vx), ux * vx + uy * vy)
 
 
 @helper
-def _arcs(s, n_cells, n_corners):
+def _arcs(grid, s, n_cells, n_corners, torus):
     """Walk every arc of the wall once, counterclockwise on its disk."""
     for q in range(n_corners):
         t = s.mark[q, 0]
@@ -100,50 +105,83 @@ def _arcs(s, n_cells, n_corners):
             vy = s.near[Y, s.cell[t, f]] - s.near[Y, a]
             if ux * vy - uy * vx < 0.0:
                 continue
-            end, turned = _turn(s, t, i, f, n_cells)
+            end, end_i, turned = _turn(s, t, i, f, n_cells)
             if end < 0:
                 return INVALID
             qx, qy = s.corner[q, 0] - s.near[X, a], s.corner[q, 1] - s.near[Y, a]
             dx = s.corner[end, 0] - s.corner[q, 0]
             dy = s.corner[end, 1] - s.corner[q, 1]
+            into = a
+            if torus is not None:
+                other = s.cell[s.mark[end, 0], end_i]
+                dx += s.near[X, a] - s.near[X, other]
+                dy += s.near[Y, a] - s.near[Y, other]
+                into = np.uint32(home_of(torus, grid, s, a))
             r2 = s.near[REACH, a] * s.near[REACH, a]
             chord2 = dx * dx + dy * dy
             angle = np.arctan2(qx * dy - qy * dx, r2 - 0.5 * chord2)
             if chord2 < 1e-6 * r2:
                 # next to nothing or next to a full circle: ask the flood
-                turned -= _covered_half_angle(s, a, q)
-                turned -= _covered_half_angle(s, a, end)
+                turned -= _covered_half_angle(s, q, i)
+                turned -= _covered_half_angle(s, end, end_i)
                 if turned > np.pi:
                     angle += 2.0 * np.pi
             elif angle < 0.0:
                 angle += 2.0 * np.pi
-            touch(s, a, 0.0, 0.0, 0.0)
-            s.patch[a, TURN] += angle
-            s.patch[a, AX] += dy
-            s.patch[a, AY] -= dx
+            touch(s, into, 0.0, 0.0, 0.0)
+            s.patch[into, TURN] += angle
+            s.patch[into, AX] += dy
+            s.patch[into, AY] -= dx
     return CLOSED
 
 
 @helper
-def integrate_wall(s, n, n_cells, n_corners):
+def _free_lines(s, n_cells, torus):
+    """Sum of distance x free length of the radical line over pairs of disks."""
+    for t in range(n_cells):
+        for f in range(3):
+            i = 1 if f == 0 else 0
+            j = 3 - i - f
+            a, b = s.cell[t, i], s.cell[t, j]
+            dx, dy = s.near[X, b] - s.near[X, a], s.near[Y, b] - s.near[Y, a]
+            px, py = s.vertex[t, 0] - s.near[X, a], s.vertex[t, 1] - s.near[Y, a]
+            other = s.across[t, f]
+            half = 0.5
+            if other < 0:
+                half = 1.0
+                px -= s.corner[-2 - other, 0] - s.near[X, a]
+                py -= s.corner[-2 - other, 1] - s.near[Y, a]
+            else:
+                # seen from both cells
+                c = s.cell[other, s.join[t, f] >> 2 * i & 3]
+                px -= s.vertex[other, 0] - s.near[X, c]
+                py -= s.vertex[other, 1] - s.near[Y, c]
+            torus.sums[0] += half * np.sqrt((dx * dx + dy * dy) * (px * px + py * py))
+
+
+@helper
+def integrate_wall(grid, s, n, n_cells, n_corners, torus):
     """Area, length, wall sum, bounding neighbors and weakest window of a cage.
 
     Returns what :func:`trajcage.kernel.wall3d.integrate_wall` does.
     """
     s.clock[1] = 0
     _polish_corners(s, n_corners)
-    code = _arcs(s, n_cells, n_corners)
+    code = _arcs(grid, s, n_cells, n_corners, torus)
     if code != CLOSED:
         return code, 0.0, 0.0, 0.0, 0, 0.0, -1
     for t in range(n_cells):
         for f in range(3):
             a = s.cell[t, f]
-            if s.patch[a, STAMP] != s.clock[0]:
+            into = a
+            if torus is not None:
+                into = np.uint32(home_of(torus, grid, s, a))
+            if s.patch[into, STAMP] != s.clock[0]:
                 # a disk without any arc: an island, or hidden
                 x, y, r = s.near[X, a], s.near[Y, a], s.near[REACH, a]
-                touch(s, a, 0.0, 0.0, 0.0)
+                touch(s, into, 0.0, 0.0, 0.0)
                 if not covered(s, n, x, y, 0.0, r * r, a, a):
-                    s.patch[a, TURN] = 2.0 * np.pi
+                    s.patch[into, TURN] = 2.0 * np.pi
     area = 0.0
     length = 0.0
     wall_sum = 0.0
@@ -160,6 +198,10 @@ def integrate_wall(s, n, n_cells, n_corners):
         area += (2.0 * power * arc - moment) / (4.0 * r)
         length += arc
         wall_sum += r * arc
+    if torus is not None:
+        _free_lines(s, n_cells, torus)
+        area = 0.5 * (torus.sums[0] - wall_sum)
+    area = max(area, 0.0)
     if not np.sqrt(tx * tx + ty * ty) <= 1e-7 * length + 1e-280:
         return INVALID, 0.0, 0.0, 0.0, 0, 0.0, -1
     bounding = 0

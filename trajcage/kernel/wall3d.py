@@ -1,239 +1,65 @@
 """Area, volume and windows of a cage from the corners of its wall (3D).
 
 The wall consists of patches of exclusion spheres, bounded by arcs in which
-two spheres meet. A patch needs no loops traced: its area is a sum over arcs
-of spherical triangles to one reference point plus the slivers between arc and
-geodesic, modulo the whole sphere (a form of Gauss-Bonnet that stays accurate
-for patches much smaller than the sphere). Its vector area is the boundary
-integral of r x dr / 2. On the sphere about x_j with radius R,
+two spheres meet. On the sphere about x_j with radius R,
 x . n = (|x|^2 - g) / 2R, where g is the power of the particle, so that the
 divergence theorem gives the volume as sum (g A - int |x|^2 dA) / 6R, in which
 nothing cancels however small the cage.
+
+A region that wraps around the periodic box has no such sum. There the volume
+is put together from cones about the spheres' centers:
+3 V = sum over pairs of (distance x free area of their radical plane)
+- sum R A.
 """
 
 import numpy as np
 
 from trajcage.kernel.codes import CLOSED, INVALID
 from trajcage.kernel.jit import helper
+from trajcage.kernel.patch3d import (
+    ARCS,
+    AREA,
+    AX,
+    AY,
+    AZ,
+    STAMP,
+    TURN,
+    add_arc,
+    opening_ratio,
+    patch_area,
+    polish_corners,
+    touch,
+    window,
+)
 from trajcage.kernel.scratch import POWER, REACH, X, Y, Z
+from trajcage.kernel.torus import home_of
 
-__all__ = [
-    "AREA",
-    "AX",
-    "AY",
-    "STAMP",
-    "TURN",
-    "covered",
-    "integrate_wall",
-    "opening_ratio",
-    "slot_of",
-    "touch",
-    "window",
-]
-
-_FULL = 4.0 * np.pi
-
-# columns of Scratch.patch
-STAMP, _X0, _Y0, _Z0, _RE, _IM, TURN, AX, AY, AZ, _ARCS, AREA = range(12)
+__all__ = ["covered", "integrate_wall"]
 
 
 @helper
-def window(s, q):
-    """Return the three candidates whose spheres meet in corner q."""
-    t = s.mark[q, 0]
-    f = s.mark[q, 1]
-    a = s.cell[t, 1 if f == 0 else 0]
-    b = s.cell[t, 2 if f <= 1 else 1]
-    c = s.cell[t, 3 if f <= 2 else 2]
-    return a, b, c
+def _step(s, t, i, j, k, w):
+    """Turn about the edge in slots i, j of cell t over its face without slot w.
 
-
-@helper
-def polish_corners(s, n_corners):
-    """Move the corners from the spheres with broken ties to the true ones.
-
-    One Newton step; where three spheres barely meet the step would amplify
-    rounding, and the corner stays where it is (its error does not matter: the
-    throat it closes has no width there).
+    Returns the cell across and the slots there of the edge, of the candidate
+    that comes next and of the one in slot k here.
     """
-    for q in range(n_corners):
-        a, b, c = window(s, q)
-        px, py, pz = s.corner[q, 0], s.corner[q, 1], s.corner[q, 2]
-        pp = px * px + py * py + pz * pz
-        ax, ay, az = px - s.near[X, a], py - s.near[Y, a], pz - s.near[Z, a]
-        bx, by, bz = px - s.near[X, b], py - s.near[Y, b], pz - s.near[Z, b]
-        cx, cy, cz = px - s.near[X, c], py - s.near[Y, c], pz - s.near[Z, c]
-        fa = (
-            pp
-            - 2.0 * (px * s.near[X, a] + py * s.near[Y, a] + pz * s.near[Z, a])
-            + s.near[POWER, a]
-        )
-        fb = (
-            pp
-            - 2.0 * (px * s.near[X, b] + py * s.near[Y, b] + pz * s.near[Z, b])
-            + s.near[POWER, b]
-        )
-        fc = (
-            pp
-            - 2.0 * (px * s.near[X, c] + py * s.near[Y, c] + pz * s.near[Z, c])
-            + s.near[POWER, c]
-        )
-        ux, uy, uz = by * cz - bz * cy, bz * cx - bx * cz, bx * cy - by * cx
-        vx, vy, vz = cy * az - cz * ay, cz * ax - cx * az, cx * ay - cy * ax
-        wx, wy, wz = ay * bz - az * by, az * bx - ax * bz, ax * by - ay * bx
-        det = ax * ux + ay * uy + az * uz
-        if abs(det) > 1e-4 * s.near[REACH, a] * s.near[REACH, b] * s.near[REACH, c]:
-            scale = -0.5 / det
-            s.corner[q, 0] = px + scale * (fa * ux + fb * vx + fc * wx)
-            s.corner[q, 1] = py + scale * (fa * uy + fb * vy + fc * wy)
-            s.corner[q, 2] = pz + scale * (fa * uz + fb * vz + fc * wz)
-
-
-@helper
-def opening_ratio(s, a, b, c):
-    """Factor on the exclusion radii at which the window a, b, c is just shut.
-
-    The three scaled spheres then meet in one point of the plane of centers:
-    |y - x_a|^2 = mu R_a^2 and likewise b and c, where y is linear in
-    mu = lambda^2. For equal spheres lambda is circumradius / R.
-    """
-    x1, y1, z1 = (
-        s.near[X, b] - s.near[X, a],
-        s.near[Y, b] - s.near[Y, a],
-        s.near[Z, b] - s.near[Z, a],
-    )
-    x2, y2, z2 = (
-        s.near[X, c] - s.near[X, a],
-        s.near[Y, c] - s.near[Y, a],
-        s.near[Z, c] - s.near[Z, a],
-    )
-    d11 = x1 * x1 + y1 * y1 + z1 * z1
-    d22 = x2 * x2 + y2 * y2 + z2 * z2
-    d12 = x1 * x2 + y1 * y2 + z1 * z2
-    ra = s.near[REACH, a] * s.near[REACH, a]
-    rb = s.near[REACH, b] * s.near[REACH, b]
-    rc = s.near[REACH, c] * s.near[REACH, c]
-    det = d11 * d22 - d12 * d12
-    # y - x_a = p e1 + q e2 with p, q linear in mu
-    p0 = 0.5 * (d11 * d22 - d22 * d12) / det
-    q0 = 0.5 * (d22 * d11 - d11 * d12) / det
-    p1 = 0.5 * ((ra - rb) * d22 - (ra - rc) * d12) / det
-    q1 = 0.5 * ((ra - rc) * d11 - (ra - rb) * d12) / det
-    aa = p1 * p1 * d11 + q1 * q1 * d22 + 2.0 * p1 * q1 * d12
-    bb = p0 * p1 * d11 + q0 * q1 * d22 + (p0 * q1 + q0 * p1) * d12 - 0.5 * ra
-    cc = p0 * p0 * d11 + q0 * q0 * d22 + 2.0 * p0 * q0 * d12
-    root = bb * bb - aa * cc
-    if root < 0.0 or bb >= 0.0:
-        return np.nan
-    return np.sqrt(cc / (np.sqrt(root) - bb))
-
-
-@helper
-def touch(s, a, px, py, pz):
-    """Start the sums of sphere a, with p as reference point, at first use."""
-    if s.patch[a, STAMP] != s.clock[0]:
-        s.patch[a, STAMP] = s.clock[0]
-        s.seen[s.clock[1]] = a
-        s.clock[1] += 1
-        s.patch[a, _X0] = px - s.near[X, a]
-        s.patch[a, _Y0] = py - s.near[Y, a]
-        s.patch[a, _Z0] = pz - s.near[Z, a]
-        s.patch[a, _RE] = 1.0
-        s.patch[a, _IM] = 0.0
-        s.patch[a, TURN] = 0.0
-        s.patch[a, AX] = 0.0
-        s.patch[a, AY] = 0.0
-        s.patch[a, AZ] = 0.0
-        s.patch[a, _ARCS] = 0.0
-
-
-@helper
-def _add_arc(
-    s, a, ex, ey, ez, height, rho2, angle, sine, cosine, px, py, pz, dx, dy, dz
-):
-    """Add the arc p -> p + d, clockwise about the outward axis e of sphere a.
-
-    ``height`` is the distance of the arc's plane from the center along e;
-    sine and cosine are those of the arc's angle, times the squared radius
-    ``rho2`` of its circle.
-    """
-    r = s.near[REACH, a]
-    x0, y0, z0 = s.patch[a, _X0], s.patch[a, _Y0], s.patch[a, _Z0]
-    r1x, r1y, r1z = px - s.near[X, a], py - s.near[Y, a], pz - s.near[Z, a]
-    r2x, r2y, r2z = r1x + dx, r1y + dy, r1z + dz
-    # spherical triangle (reference, p, p + d): E = 2 arg(re + i im)
-    u1x, u1y, u1z = r1x - x0, r1y - y0, r1z - z0
-    tx, ty, tz = u1y * dz - u1z * dy, u1z * dx - u1x * dz, u1x * dy - u1y * dx
-    im = x0 * tx + y0 * ty + z0 * tz
-    re = r * (
-        r * r
-        + x0 * (r1x + r2x)
-        + y0 * (r1y + r2y)
-        + z0 * (r1z + r2z)
-        + r1x * r2x
-        + r1y * r2y
-        + r1z * r2z
-    )
-    # sliver between geodesic and arc
-    if angle < 0.05:
-        c = height / r
-        s2 = 1.0 - c * c
-        a2 = angle * angle
-        s.patch[a, TURN] -= (0.5 * c * s2 * angle * a2) * (
-            1.0 / 6.0
-            - a2 / 120.0 * (1.0 - 3.0 * s2)
-            + a2 * a2 / 5040.0 * (1.0 - 15.0 * s2 + 22.5 * s2 * s2)
-        )
-        segment = rho2 * angle * a2 * (1.0 / 6.0 - a2 / 120.0 + a2 * a2 / 5040.0)
-    else:
-        k_re = (r + height) * rho2 + (r - height) * cosine
-        k_im = (r - height) * sine
-        re, im = re * k_re - im * k_im, re * k_im + im * k_re
-        s.patch[a, TURN] -= angle * (1.0 - height / r)
-        segment = rho2 * angle - sine
-    # only the direction of the product matters; keep its size in range
-    norm = 1.0 / (abs(re) + abs(im))
-    re *= norm
-    im *= norm
-    o_re, o_im = s.patch[a, _RE], s.patch[a, _IM]
-    s.patch[a, _RE] = o_re * re - o_im * im
-    s.patch[a, _IM] = o_re * im + o_im * re
-    segment *= -0.5
-    s.patch[a, AX] += 0.5 * tx + segment * ex
-    s.patch[a, AY] += 0.5 * ty + segment * ey
-    s.patch[a, AZ] += 0.5 * tz + segment * ez
-    s.patch[a, _ARCS] += 1.0
-
-
-@helper
-def slot_of(s, t, a):
-    """Slot of candidate a in cell t, which has it."""
-    if s.cell[t, 0] == a:
-        return 0
-    if s.cell[t, 1] == a:
-        return 1
-    if s.cell[t, 2] == a:
-        return 2
-    return 3
+    code = s.join[t, w]
+    i2, j2, w2 = code >> 2 * i & 3, code >> 2 * j & 3, code >> 2 * k & 3
+    return s.across[t, w], i2, j2, 6 - i2 - j2 - w2, w2
 
 
 @helper
 def _rotate(s, t, i, j, k, w, n_cells):
-    """Turn about the pair in slots i, j of cell t from slot w to k and on.
+    """Turn about the edge in slots i, j of cell t from slot w to k and on.
 
-    Returns (corner, slot of the corner's third sphere, dihedral angle turned).
+    Returns (corner, slots in its cell of the third sphere and of i).
     """
-    a, b = s.cell[t, i], s.cell[t, j]
     for _ in range(4 * n_cells):
-        other = s.across[t, w]
-        if other < 0:
-            return -2 - other, k
-        i2 = slot_of(s, other, a)
-        j2 = slot_of(s, other, b)
-        w2 = slot_of(s, other, s.cell[t, k])
-        k = 6 - i2 - j2 - w2
-        t, i, j, w = other, i2, j2, w2
-    return -1, 0
+        if s.across[t, w] < 0:
+            return -2 - s.across[t, w], k, i
+        t, i, j, k, w = _step(s, t, i, j, k, w)
+    return -1, 0, 0
 
 
 @helper
@@ -250,38 +76,108 @@ def _angle_about(s, a, b, c, d):
 
 
 @helper
-def _covered_half_angle(s, ex, ey, ez, mx, my, mz, c, qx, qy, qz):
-    """Angle about the axis e between candidate c and the arc's end q - m."""
-    wx, wy, wz = s.near[X, c] - mx, s.near[Y, c] - my, s.near[Z, c] - mz
+def _turned(s, t, i, j, k, w, n_cells):
+    """Sum of the dihedral angles that `_rotate` passes."""
+    total = 0.0
+    for _ in range(4 * n_cells):
+        total += _angle_about(s, s.cell[t, i], s.cell[t, j], s.cell[t, w], s.cell[t, k])
+        if s.across[t, w] < 0:
+            break
+        t, i, j, k, w = _step(s, t, i, j, k, w)
+    return total
+
+
+@helper
+def _foot(s, a, b):
+    """Return the unit vector a to b, their distance, and their circle.
+
+    The circle in which the spheres meet: distance of its plane from a, and
+    radius squared (negative if they do not meet).
+    """
+    ex, ey, ez = (
+        s.near[X, b] - s.near[X, a],
+        s.near[Y, b] - s.near[Y, a],
+        s.near[Z, b] - s.near[Z, a],
+    )
+    length = np.sqrt(ex * ex + ey * ey + ez * ez)
+    inverse = 1.0 / length
+    ra, rb = s.near[REACH, a], s.near[REACH, b]
+    height = 0.5 * (length + (ra - rb) * (ra + rb) * inverse)
+    rho2 = (ra - height) * (ra + height)
+    return ex * inverse, ey * inverse, ez * inverse, length, height, rho2
+
+
+@helper
+def _swept(s, t, i, j, k, w, ex, ey, ez, height, q, n_cells):
+    """Twice the area about the foot that a turn about an edge sweeps out.
+
+    The turn goes from corner q (or from vertex t if q < 0) along the power
+    vertices to the last corner (or around to vertex t again). Vectors are
+    taken from the foot in the frame of each cell, as the cells of a torus
+    have frames of their own. Returns the area with the sign of the turn.
+    """
+    first, first_i, first_j, first_k = t, i, j, k
+    total = 0.0
+    ox, oy, oz = 0.0, 0.0, 0.0
+    fresh = q < 0
+    if q >= 0:
+        a = s.cell[t, i]
+        ox = s.corner[q, 0] - s.near[X, a] - height * ex
+        oy = s.corner[q, 1] - s.near[Y, a] - height * ey
+        oz = s.corner[q, 2] - s.near[Z, a] - height * ez
+    for _ in range(4 * n_cells):
+        a = s.cell[t, i]
+        vx = s.vertex[t, 0] - s.near[X, a] - height * ex
+        vy = s.vertex[t, 1] - s.near[Y, a] - height * ey
+        vz = s.vertex[t, 2] - s.near[Z, a] - height * ez
+        if not fresh:
+            total += (
+                ex * (oy * vz - oz * vy)
+                + ey * (oz * vx - ox * vz)
+                + ez * (ox * vy - oy * vx)
+            )
+            if q < 0 and t == first and i == first_i and j == first_j and k == first_k:
+                return total
+        fresh = False
+        ox, oy, oz = vx, vy, vz
+        if s.across[t, w] < 0:
+            end = -2 - s.across[t, w]
+            vx = s.corner[end, 0] - s.near[X, a] - height * ex
+            vy = s.corner[end, 1] - s.near[Y, a] - height * ey
+            vz = s.corner[end, 2] - s.near[Z, a] - height * ez
+            return total + (
+                ex * (oy * vz - oz * vy)
+                + ey * (oz * vx - ox * vz)
+                + ez * (ox * vy - oy * vx)
+            )
+        t, i, j, k, w = _step(s, t, i, j, k, w)
+    return total
+
+
+@helper
+def _covered_half_angle(s, ex, ey, ez, height, q, slot_a, slot_w):
+    """Angle about the axis e between corner q and its third candidate."""
+    t = s.mark[q, 0]
+    a, c = s.cell[t, slot_a], s.cell[t, slot_w]
+    wx = s.near[X, c] - s.near[X, a]
+    wy = s.near[Y, c] - s.near[Y, a]
+    wz = s.near[Z, c] - s.near[Z, a]
     along = wx * ex + wy * ey + wz * ez
     wx, wy, wz = wx - along * ex, wy - along * ey, wz - along * ez
-    vx, vy, vz = qx - mx, qy - my, qz - mz
+    vx = s.corner[q, 0] - s.near[X, a] - height * ex
+    vy = s.corner[q, 1] - s.near[Y, a] - height * ey
+    vz = s.corner[q, 2] - s.near[Z, a] - height * ez
     kx, ky, kz = wy * vz - wz * vy, wz * vx - wx * vz, wx * vy - wy * vx
     return np.arctan2(np.sqrt(kx * kx + ky * ky + kz * kz), wx * vx + wy * vy + wz * vz)
 
 
 @helper
-def _turned(s, t, i, j, k, w, n_cells):
-    """Sum of the dihedral angles that `_rotate` passes."""
-    a, b = s.cell[t, i], s.cell[t, j]
-    total = 0.0
-    for _ in range(4 * n_cells):
-        total += _angle_about(s, a, b, s.cell[t, w], s.cell[t, k])
-        other = s.across[t, w]
-        if other < 0:
-            break
-        i2 = slot_of(s, other, a)
-        j2 = slot_of(s, other, b)
-        w2 = slot_of(s, other, s.cell[t, k])
-        k = 6 - i2 - j2 - w2
-        t, i, j, w = other, i2, j2, w2
-    return total
-
-
-@helper
-def _arcs(s, n_cells, n_corners):
+def _arcs(grid, s, n_cells, n_corners, torus):
     """Walk every arc of the wall once and add it to its two spheres."""
+    size2 = 0.0
     for q in range(n_corners):
+        px, py, pz = s.corner[q, 0], s.corner[q, 1], s.corner[q, 2]
+        size2 = max(size2, px * px + py * py + pz * pz)
         for f in range(4):
             s.mark[q, 2 + f] = 0
     for q in range(n_corners):
@@ -295,43 +191,40 @@ def _arcs(s, n_cells, n_corners):
                 i += 1
             j = 6 - i - k - w
             a, b = s.cell[t, i], s.cell[t, j]
-            end, end_slot = _rotate(s, t, i, j, k, w, n_cells)
+            end, end_w, end_i = _rotate(s, t, i, j, k, w, n_cells)
             if end < 0:
                 return INVALID
             s.mark[q, 2 + w] = 1
-            s.mark[end, 2 + end_slot] = 1
+            s.mark[end, 2 + end_w] = 1
+            ex, ey, ez, length, height, rho2 = _foot(s, a, b)
+            rho2 = max(rho2, 1e-300)
+            ra, rb = s.near[REACH, a], s.near[REACH, b]
             ax, ay, az = s.near[X, a], s.near[Y, a], s.near[Z, a]
-            ex, ey, ez = s.near[X, b] - ax, s.near[Y, b] - ay, s.near[Z, b] - az
-            cx, cy, cz = (
-                s.near[X, s.cell[t, w]] - ax,
-                s.near[Y, s.cell[t, w]] - ay,
-                s.near[Z, s.cell[t, w]] - az,
-            )
-            dx, dy, dz = (
-                s.near[X, s.cell[t, k]] - ax,
-                s.near[Y, s.cell[t, k]] - ay,
-                s.near[Z, s.cell[t, k]] - az,
-            )
+            c, d = s.cell[t, w], s.cell[t, k]
+            cx, cy, cz = s.near[X, c] - ax, s.near[Y, c] - ay, s.near[Z, c] - az
+            dx, dy, dz = s.near[X, d] - ax, s.near[Y, d] - ay, s.near[Z, d] - az
             sense = (
                 ex * (cy * dz - cz * dy)
                 + ey * (cz * dx - cx * dz)
                 + ez * (cx * dy - cy * dx)
             )
-            # from here on the arc runs counterclockwise about a -> b
-            p1, p2 = q, end
+            # both ends in the frame of this cell
+            x1, y1, z1 = s.corner[q, 0], s.corner[q, 1], s.corner[q, 2]
+            x2, y2, z2 = s.corner[end, 0], s.corner[end, 1], s.corner[end, 2]
+            if torus is not None:
+                other = s.cell[s.mark[end, 0], end_i]
+                x2 += ax - s.near[X, other]
+                y2 += ay - s.near[Y, other]
+                z2 += az - s.near[Z, other]
             if sense < 0.0:
-                p1, p2 = end, q
-            length = np.sqrt(ex * ex + ey * ey + ez * ez)
-            inverse = 1.0 / length
-            ex, ey, ez = ex * inverse, ey * inverse, ez * inverse
-            ra, rb = s.near[REACH, a], s.near[REACH, b]
-            height = 0.5 * (length + (ra - rb) * (ra + rb) * inverse)
-            rho2 = max((ra - height) * (ra + height), 1e-300)
-            mx, my, mz = ax + height * ex, ay + height * ey, az + height * ez
-            x1, y1, z1 = s.corner[p1, 0], s.corner[p1, 1], s.corner[p1, 2]
-            x2, y2, z2 = s.corner[p2, 0], s.corner[p2, 1], s.corner[p2, 2]
+                # from here on the arc runs counterclockwise about a -> b
+                x1, y1, z1, x2, y2, z2 = x2, y2, z2, x1, y1, z1
             dx, dy, dz = x2 - x1, y2 - y1, z2 - z1
-            qx, qy, qz = x1 - mx, y1 - my, z1 - mz
+            qx, qy, qz = (
+                x1 - ax - height * ex,
+                y1 - ay - height * ey,
+                z1 - az - height * ez,
+            )
             chord2 = dx * dx + dy * dy + dz * dz
             sine = (
                 ex * (qy * dz - qz * dy)
@@ -344,98 +237,71 @@ def _arcs(s, n_cells, n_corners):
                 # next to nothing or next to a full circle: ask the flood
                 expected = (
                     _turned(s, t, i, j, k, w, n_cells)
-                    - _covered_half_angle(
-                        s,
-                        ex,
-                        ey,
-                        ez,
-                        mx,
-                        my,
-                        mz,
-                        s.cell[t, w],
-                        s.corner[q, 0],
-                        s.corner[q, 1],
-                        s.corner[q, 2],
-                    )
-                    - _covered_half_angle(
-                        s,
-                        ex,
-                        ey,
-                        ez,
-                        mx,
-                        my,
-                        mz,
-                        s.cell[s.mark[end, 0], end_slot],
-                        s.corner[end, 0],
-                        s.corner[end, 1],
-                        s.corner[end, 2],
-                    )
+                    - _covered_half_angle(s, ex, ey, ez, height, q, i, w)
+                    - _covered_half_angle(s, ex, ey, ez, height, end, end_i, end_w)
                 )
                 if expected > np.pi:
                     angle += 2.0 * np.pi
             elif angle < 0.0:
                 angle += 2.0 * np.pi
-            touch(s, a, x1, y1, z1)
-            touch(s, b, x1, y1, z1)
+            nudge = 0.3 * np.sqrt(min(size2, ra * rb))
+            circle = (rho2, angle, sine, cosine, nudge)
             # counterclockwise about a -> b is clockwise about b -> a
-            _add_arc(
-                s,
-                b,
-                -ex,
-                -ey,
-                -ez,
-                length - height,
-                rho2,
-                angle,
-                sine,
-                cosine,
-                x1,
-                y1,
-                z1,
-                dx,
-                dy,
-                dz,
-            )
-            _add_arc(
-                s,
-                a,
-                ex,
-                ey,
-                ez,
-                height,
-                rho2,
-                angle,
-                sine,
-                cosine,
-                x2,
-                y2,
-                z2,
-                -dx,
-                -dy,
-                -dz,
-            )
+            if torus is None:
+                add_arc(
+                    s, b, -ex, -ey, -ez, length - height, circle, x1, y1, z1, dx, dy, dz
+                )
+                add_arc(s, a, ex, ey, ez, height, circle, x2, y2, z2, -dx, -dy, -dz)
+            else:
+                c = np.uint32(home_of(torus, grid, s, b))
+                ox, oy, oz = s.near[X, c], s.near[Y, c], s.near[Z, c]
+                ox, oy, oz = ox - s.near[X, b], oy - s.near[Y, b], oz - s.near[Z, b]
+                add_arc(
+                    s, c, -ex, -ey, -ez, length - height, circle,
+                    x1 + ox, y1 + oy, z1 + oz, dx, dy, dz,
+                )  # fmt: skip
+                c = np.uint32(home_of(torus, grid, s, a))
+                ox, oy, oz = s.near[X, c] - ax, s.near[Y, c] - ay, s.near[Z, c] - az
+                add_arc(
+                    s, c, ex, ey, ez, height, circle,
+                    x2 + ox, y2 + oy, z2 + oz, -dx, -dy, -dz,
+                )  # fmt: skip
+                swept = _swept(s, t, i, j, k, w, ex, ey, ez, height, q, n_cells)
+                swept = swept if sense > 0.0 else -swept
+                torus.sums[0] += 0.5 * length * (swept - rho2 * angle)
     return CLOSED
 
 
 @helper
-def _ring_is_open(s, t, i, j, n_cells):
+def _ring_is_open(s, t, i, j, k, w, n_cells):
     """Tell whether all cells about an edge are in the cage, t the first of them."""
-    a, b = s.cell[t, i], s.cell[t, j]
-    k = 0
-    while k == i or k == j:
-        k += 1
-    w = 6 - i - j - k
     first = t
     for _ in range(4 * n_cells):
         other = s.across[t, w]
         if other <= first:
             # round once; or a corner, or a ring already seen from an earlier cell
             return other == first
-        i2 = slot_of(s, other, a)
-        j2 = slot_of(s, other, b)
-        w2 = slot_of(s, other, s.cell[t, k])
-        k = 6 - i2 - j2 - w2
-        t, i, j, w = other, i2, j2, w2
+        t, i, j, k, w = _step(s, t, i, j, k, w)
+    return False
+
+
+@helper
+def _ring_is_new(s, t, i, j, k, w, walked, n_cells):
+    """Tell whether all cells about an edge are in the region and mark the edge.
+
+    In a torus a ring can pass the same cell twice, so edges are marked one by
+    one instead of by their lowest cell.
+    """
+    first, first_i, first_j, first_k = t, i, j, k
+    if walked[t] & (1 << 4 * min(i, j) + max(i, j)):
+        return False
+    for _ in range(4 * n_cells):
+        walked[t] |= 1 << 4 * min(i, j) + max(i, j)
+        if s.across[t, w] < 0:
+            return False
+        t, i, j, k, w = _step(s, t, i, j, k, w)
+        if t == first and i == first_i and j == first_j and k == first_k:
+            return True
     return False
 
 
@@ -451,86 +317,79 @@ def covered(s, n, px, py, pz, depth, a, b):
 
 
 @helper
-def _circles_and_islands(s, n, n_cells):
-    """Add full circles in which two spheres meet, and spheres without any arc."""
+def _circles(grid, s, n, n_cells, torus):
+    """Add the full circles in which two spheres meet."""
+    if torus is not None:
+        for t in range(n_cells):
+            torus.walked[t] = 0
     for t in range(n_cells):
         for k in range(3):
             # an edge whose cells are all open: both its faces here lead on
-            if s.across[t, k] < t:
+            if s.across[t, k] < (0 if torus is not None else t):
                 continue
             for w in range(k + 1, 4):
-                if s.across[t, w] < t:
+                if s.across[t, w] < (0 if torus is not None else t):
                     continue
                 i = 0
                 while i == k or i == w:
                     i += 1
                 j = 6 - i - k - w
                 a, b = s.cell[t, i], s.cell[t, j]
-                ex, ey, ez = (
-                    s.near[X, b] - s.near[X, a],
-                    s.near[Y, b] - s.near[Y, a],
-                    s.near[Z, b] - s.near[Z, a],
-                )
-                length = np.sqrt(ex * ex + ey * ey + ez * ez)
-                ra, rb = s.near[REACH, a], s.near[REACH, b]
-                height = 0.5 * (length + (ra - rb) * (ra + rb) / length)
-                rho2 = (ra - height) * (ra + height)
-                if rho2 <= 0.0 or not _ring_is_open(s, t, i, j, n_cells):
+                ex, ey, ez, length, height, rho2 = _foot(s, a, b)
+                if torus is None:
+                    if rho2 <= 0.0 or not _ring_is_open(s, t, i, j, k, w, n_cells):
+                        continue
+                elif not _ring_is_new(s, t, i, j, k, w, torus.walked, n_cells):
                     continue
-                ex, ey, ez = ex / length, ey / length, ez / length
                 mx = s.near[X, a] + height * ex
                 my = s.near[Y, a] + height * ey
                 mz = s.near[Z, a] + height * ez
-                if covered(s, n, mx, my, mz, rho2, a, b):
+                seen = rho2 > 0.0 and not covered(s, n, mx, my, mz, rho2, a, b)
+                into_a, into_b = a, b
+                if torus is not None:
+                    into_a = np.uint32(home_of(torus, grid, s, a))
+                    into_b = np.uint32(home_of(torus, grid, s, b))
+                    swept = abs(
+                        _swept(s, t, i, j, k, w, ex, ey, ez, height, -1, n_cells)
+                    )
+                    hole = 2.0 * np.pi * rho2 if seen else 0.0
+                    torus.sums[0] += 0.5 * length * (swept - hole)
+                if not seen:
                     continue
-                touch(s, a, mx, my, mz)
-                touch(s, b, mx, my, mz)
-                s.patch[a, TURN] -= 2.0 * np.pi * (1.0 - height / ra)
-                s.patch[b, TURN] -= 2.0 * np.pi * (1.0 - (length - height) / rb)
+                touch(s, into_a, mx, my, mz)
+                touch(s, into_b, mx, my, mz)
+                ra, rb = s.near[REACH, a], s.near[REACH, b]
+                s.patch[into_a, TURN] -= 2.0 * np.pi * (1.0 - height / ra)
+                s.patch[into_b, TURN] -= 2.0 * np.pi * (1.0 - (length - height) / rb)
                 half = np.pi * rho2
-                s.patch[a, AX] -= half * ex
-                s.patch[a, AY] -= half * ey
-                s.patch[a, AZ] -= half * ez
-                s.patch[b, AX] += half * ex
-                s.patch[b, AY] += half * ey
-                s.patch[b, AZ] += half * ez
+                s.patch[into_a, AX] -= half * ex
+                s.patch[into_a, AY] -= half * ey
+                s.patch[into_a, AZ] -= half * ez
+                s.patch[into_b, AX] += half * ex
+                s.patch[into_b, AY] += half * ey
+                s.patch[into_b, AZ] += half * ez
+
+
+@helper
+def _islands(grid, s, n, n_cells, torus):
+    """Add the spheres that meet no other: seen in full, or hidden."""
     for t in range(n_cells):
         for i in range(4):
             a = s.cell[t, i]
-            if s.patch[a, STAMP] == s.clock[0]:
+            into = a
+            if torus is not None:
+                into = np.uint32(home_of(torus, grid, s, a))
+            if s.patch[into, STAMP] == s.clock[0]:
                 continue
             x, y, z, r = s.near[X, a], s.near[Y, a], s.near[Z, a], s.near[REACH, a]
-            touch(s, a, x, y, z)
+            touch(s, into, x, y, z)
             if covered(s, n, x, y, z, r * r, a, a):
                 # nothing of this sphere is seen
-                s.patch[a, _ARCS] = -1.0
+                s.patch[into, ARCS] = -1.0
 
 
 @helper
-def _patch_area(s, a):
-    """Area of the wall on sphere a over R^2, between 0 and 4 pi."""
-    if s.patch[a, _ARCS] < 0.0:
-        return 0.0
-    area = s.patch[a, TURN]
-    if s.patch[a, _ARCS] == 0.0:
-        return area + _FULL
-    area += 2.0 * np.arctan2(s.patch[a, _IM], s.patch[a, _RE])
-    area -= _FULL * np.floor(area / _FULL)
-    if area > _FULL - 1e-6:
-        # rounding below zero, or a sphere all but free: its vector area tells
-        outward = (
-            s.patch[a, AX] * s.patch[a, _X0]
-            + s.patch[a, AY] * s.patch[a, _Y0]
-            + s.patch[a, AZ] * s.patch[a, _Z0]
-        )
-        r = s.near[REACH, a]
-        if outward > -1e-14 * r * r * r:
-            area -= _FULL
-    return area
-
-
-@helper
-def integrate_wall(s, n, n_cells, n_corners):
+def integrate_wall(grid, s, n, n_cells, n_corners, torus):
     """Volume, area, wall sum, bounding neighbors and weakest window of a cage.
 
     Returns
@@ -542,10 +401,11 @@ def integrate_wall(s, n, n_cells, n_corners):
     """
     s.clock[1] = 0
     polish_corners(s, n_corners)
-    code = _arcs(s, n_cells, n_corners)
+    code = _arcs(grid, s, n_cells, n_corners, torus)
     if code != CLOSED:
         return code, 0.0, 0.0, 0.0, 0, 0.0, -1
-    _circles_and_islands(s, n, n_cells)
+    _circles(grid, s, n, n_cells, torus)
+    _islands(grid, s, n, n_cells, torus)
     volume = 0.0
     surface = 0.0
     wall_sum = 0.0
@@ -554,7 +414,7 @@ def integrate_wall(s, n, n_cells, n_corners):
         a = s.seen[m]
         x, y, z, r = s.near[X, a], s.near[Y, a], s.near[Z, a], s.near[REACH, a]
         power = s.near[POWER, a]
-        area = _patch_area(s, a) * r * r
+        area = patch_area(s, a) * r * r
         s.patch[a, AREA] = area
         ax, ay, az = s.patch[a, AX], s.patch[a, AY], s.patch[a, AZ]
         tx += ax
@@ -567,6 +427,9 @@ def integrate_wall(s, n, n_cells, n_corners):
         volume += (2.0 * power * area - moment) / (6.0 * r)
         surface += area
         wall_sum += r * area
+    if torus is not None:
+        volume = (torus.sums[0] - wall_sum) / 3.0
+    volume = max(volume, 0.0)
     closure = np.sqrt(tx * tx + ty * ty + tz * tz)
     if not closure <= 1e-7 * surface + 1e-280:
         return INVALID, 0.0, 0.0, 0.0, 0, 0.0, -1
