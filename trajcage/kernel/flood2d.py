@@ -38,9 +38,17 @@ def _solve(s, a, b, c):
     x2, y2 = s.near[X, c] - x0, s.near[Y, c] - y0
     h1 = s.near[SHIFTED, b] - g0
     h2 = s.near[SHIFTED, c] - g0
-    scale = 0.5 / (x1 * y2 - y1 * x2)
+    det = x1 * y2 - y1 * x2
+    scale = 0.5 / det
     px = (h1 * y2 - h2 * y1) * scale
     py = (h2 * x1 - h1 * x2) * scale
+    if det * det < 1e-6:
+        # all but collinear: refine as in 3D
+        for _ in range(2):
+            r1 = h1 - 2.0 * (px * x1 + py * y1)
+            r2 = h2 - 2.0 * (px * x2 + py * y2)
+            px += (r1 * y2 - r2 * y1) * scale
+            py += (r2 * x1 - r1 * x2) * scale
     return px, py, px * px + py * py - 2.0 * (px * x0 + py * y0) + g0
 
 

@@ -122,6 +122,16 @@ def _solve(s, a, b, c, d):
     px = (h1 * ux + h2 * vx + h3 * wx) * scale
     py = (h1 * uy + h2 * vy + h3 * wy) * scale
     pz = (h1 * uz + h2 * vz + h3 * wz) * scale
+    if det * det < 1e-6:
+        # A flat cell: large terms cancel and leave an error within its plane.
+        # Refinement leaves one along the normal only, which no decision feels.
+        for _ in range(2):
+            r1 = h1 - 2.0 * (px * x1 + py * y1 + pz * z1)
+            r2 = h2 - 2.0 * (px * x2 + py * y2 + pz * z2)
+            r3 = h3 - 2.0 * (px * x3 + py * y3 + pz * z3)
+            px += (r1 * ux + r2 * vx + r3 * wx) * scale
+            py += (r1 * uy + r2 * vy + r3 * wy) * scale
+            pz += (r1 * uz + r2 * vz + r3 * wz) * scale
     power = px * px + py * py + pz * pz - 2.0 * (px * x0 + py * y0 + pz * z0) + g0
     return px, py, pz, power
 
