@@ -258,11 +258,10 @@ def frame_cages(
     overlaps = find_overlaps(frame, tolerance)
     if options.strict and overlaps.count:
         raise frame.error(
-            f"expected no overlap beyond {tolerance:.3g}, found {overlaps.count} "
-            f"overlapping pairs; the deepest is that of particles "
-            f"{overlaps.pair[0]} and {overlaps.pair[1]} by {overlaps.deepest:.3g}; "
-            "check the diameters, or allow it (without strict, or with a larger "
-            "overlap tolerance)"
+            f"expected no overlap beyond {tolerance:.3g}, found overlapping pairs: "
+            f"{overlaps.count}; the deepest is that of particles {overlaps.pair[0]} and "
+            f"{overlaps.pair[1]} by {overlaps.deepest:.3g}; correct the diameters, or "
+            "allow it: without strict, or with a larger overlap tolerance"
         )
     box = frame.box
     found = measure_cages(

@@ -71,9 +71,9 @@ _SOLID_BONDS = Field(
 )
 _STRUCTURE = Field(
     "structure",
-    "Local structure: "
-    + ", ".join(f"{code.value} {code.name.lower()}" for code in Structure),
+    "Ideal lattice that the surroundings of a solid particle resemble",
     dtype="u1",
+    codes=tuple(code.name.lower() for code in Structure),
 )
 _CUTOFF = Field(
     "order_cutoff",

@@ -35,11 +35,10 @@ class Region(IntEnum):
 FIELDS = (
     Field(
         "region",
-        "Region: "
-        + ", ".join(f"{code.value} {code.name.lower()}" for code in Region)
-        + "; crystal is solid by bond order; glass is else closed-caged and, where "
+        "crystal: solid by bond order; glass: else closed-caged and, where "
         "glass_needs_unbroken is 1, has not broken its cage within the time window",
         dtype="u1",
+        codes=tuple(code.name.lower() for code in Region),
     ),
     Field(
         "interface",

@@ -86,6 +86,8 @@ class _Program(click.Group):
             raise _Mistake(str(error)) from error
         except InterruptedRunError as error:
             raise _Stopped(str(error)) from error
+        except KeyboardInterrupt:
+            raise _Stopped("interrupted") from None
         except TrajcageError as error:
             raise _Failure(str(error)) from error
 

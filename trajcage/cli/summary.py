@@ -36,14 +36,6 @@ _SHOWN = (
 )
 
 
-# Why an observable has no value on any frame, where its record cannot know.
-_ABSENT = {
-    "cell_volume_shape": "particles of unequal size have no smallest cell",
-    "rattler_plateau": "the rattler fraction depends on the contact tolerance at all "
-    "tolerances, as in thermal configurations",
-}
-
-
 @click.command(name="summary")
 @result_argument
 @json_option
@@ -99,8 +91,7 @@ def _observables(summary: dict[str, Any]) -> str:
             continue
         if found["n_values"] == 0:
             rows.append((name, "-"))
-            why = _ABSENT.get(name, found["reason"])
-            notes.append(f"{name}: missing, {why}")
+            notes.append(f"{name}: missing, {_reason(name, summary)}")
             continue
         rows.append((name, with_error(found["mean"], found["error"])))
         if found["n_missing"]:
@@ -113,6 +104,33 @@ def _observables(summary: dict[str, Any]) -> str:
     if any(row[1].endswith("*") for row in rows):
         notes.append("* too few frames for an independent error: a lower bound")
     return "\n".join([text, *notes])
+
+
+def _reason(name: str, summary: dict[str, Any]) -> str:
+    """Why an observable has no value on any frame."""
+    if name == "cell_volume_shape":
+        if summary["equal_radii"]:
+            return "all cells are equal, or unknown"
+        return "particles of unequal size have no smallest cell"
+    if name == "rattler_plateau":
+        return (
+            "the rattler fraction depends on the contact tolerance at every tolerance, "
+            "as in thermal configurations"
+        )
+    if name == "persisting_fraction":
+        return "no particle has a bonded neighbor on the first frame"
+    if name == "compressibility_factor":
+        unresolved = summary["compressibility_status"]["unresolved"]
+        lattice = summary["compressibility_status"]["ideal_lattice"]
+        parts = []
+        if unresolved:
+            parts.append(
+                f"more than 1 in 1000 cages are not closed on {unresolved} frames"
+            )
+        if lattice:
+            parts.append(f"all cages are equal, an ideal lattice, on {lattice} frames")
+        return "; ".join(parts)
+    return "no particle has one on any frame"
 
 
 def _equations(summary: dict[str, Any]) -> str:

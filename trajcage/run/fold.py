@@ -60,6 +60,11 @@ class RunFold:
         self._time = TimeFold(settings.time, n, d, first.mean_diameter)
         self._n_frames = 0
 
+    @property
+    def n_frames(self) -> int:
+        """Frames consumed so far."""
+        return self._n_frames
+
     def update(self, measured: MeasuredFrame) -> tuple[FrameRecord, _Rows]:
         """Take the next frame; return what to store.
 

@@ -1,5 +1,6 @@
 """All that can be measured on one frame alone: a pure function for any process."""
 
+from collections.abc import Generator
 from dataclasses import dataclass
 
 import numpy as np
@@ -18,7 +19,7 @@ from trajcage.model import CageTable, Frame, NeighborList
 from trajcage.neighborhood import voronoi
 from trajcage.run.settings import RunSettings
 
-__all__ = ["MeasuredFrame", "measure_frame"]
+__all__ = ["MeasuredFrame", "MeasuredFrames", "measure_frame"]
 
 
 @dataclass(frozen=True, eq=False)
@@ -42,6 +43,10 @@ class MeasuredFrame:
     cages: CageTable
     values: dict[str, NDArray[np.generic] | float | int]
     bonds: NeighborList | None
+
+
+#: Measured frames in order; to be closed, which ends the processes behind it.
+MeasuredFrames = Generator[MeasuredFrame, None, None]
 
 
 def measure_frame(frame: Frame, settings: RunSettings) -> MeasuredFrame:

@@ -6,6 +6,7 @@ from pathlib import Path
 
 from trajcage.analysis.cages import (
     DENSEST_PACKING,
+    CageOptions,
     Overlaps,
     check_packing,
     default_overlap_tolerance,
@@ -103,7 +104,7 @@ def inspect(
         frame = opened.frame(0)
     check_distinct(frame)
     warning = check_packing(frame)
-    tolerance = overlap_tolerance
+    tolerance = CageOptions(overlap_tolerance=overlap_tolerance).overlap_tolerance
     if tolerance is None:
         tolerance = default_overlap_tolerance(frame)
     overlaps = find_overlaps(frame, tolerance)

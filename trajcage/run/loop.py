@@ -1,11 +1,13 @@
 """The ordered loop of a run: fold, append, commit, and stop in good order."""
 
 import time
-from collections.abc import Callable, Iterator
+from collections.abc import Callable
+
+import numpy as np
 
 from trajcage.errors import InterruptedRunError, TrajcageError
 from trajcage.run.fold import RunFold
-from trajcage.run.frames import MeasuredFrame
+from trajcage.run.frames import MeasuredFrame, MeasuredFrames
 from trajcage.run.interruption import StopRequest
 from trajcage.store import ResultWriter
 
@@ -21,10 +23,11 @@ _COMMIT_SHARE = 20
 
 
 def fold_frames(
-    measured: Iterator[MeasuredFrame],
+    measured: MeasuredFrames,
     fold: RunFold,
     writer: ResultWriter,
     n_frames: int,
+    stop: StopRequest,
     note: Callable[[str], None],
     progress: Progress | None,
 ) -> None:
@@ -34,7 +37,7 @@ def fold_frames(
 
     Parameters
     ----------
-    measured : iterator of MeasuredFrame
+    measured : generator of MeasuredFrame
         The frames that are missing in the file.
     fold : RunFold
         Restored to the frames that are there.
@@ -42,6 +45,8 @@ def fold_frames(
         Open for appending.
     n_frames : int
         Frames of the whole run.
+    stop : StopRequest
+        Asked after every frame.
     note : callable
         Called with what the user should know.
     progress : callable or None
@@ -56,44 +61,39 @@ def fold_frames(
     """
     overlapping = 0
     last, interval = time.monotonic(), _COMMIT_EVERY
-    with StopRequest() as stop:
-        try:
-            for frame in measured:
-                record, rows = fold.update(frame)
-                writer.append(record, rows)
-                if frame.values["overlaps"]:
-                    overlapping += 1
-                    if overlapping == 1:
-                        note(_overlap_note(frame))
-                if progress is not None:
-                    progress(writer.frames_complete + writer.n_pending, n_frames)
-                now = time.monotonic()
-                if now - last >= interval:
-                    _commit(fold, writer)
-                    last = time.monotonic()
-                    interval = max(_COMMIT_EVERY, _COMMIT_SHARE * (last - now))
-                if stop.signal is not None:
-                    break
-        except TrajcageError:
-            if writer.n_pending:
+    try:
+        for frame in measured:
+            record, rows = fold.update(frame)
+            writer.append(record, rows)
+            if frame.values["overlaps"]:
+                overlapping += 1
+                if overlapping == 1:
+                    note(_overlap_note(frame))
+            if progress is not None:
+                progress(writer.frames_complete + writer.n_pending, n_frames)
+            now = time.monotonic()
+            if now - last >= interval:
                 _commit(fold, writer)
-            raise
-        finally:
-            close = getattr(measured, "close", None)
-            if close is not None:
-                close()
-        if overlapping > 1:
-            note(f"{overlapping} frames have overlaps beyond the tolerance")
-        if stop.signal is not None and writer.frames_complete + writer.n_pending < (
-            n_frames
-        ):
+                last = time.monotonic()
+                interval = max(_COMMIT_EVERY, _COMMIT_SHARE * (last - now))
+            if stop.signal is not None:
+                break
+    except TrajcageError:
+        if writer.n_pending:
             _commit(fold, writer)
-            raise InterruptedRunError(
-                f"stopped by {stop.signal} after {writer.frames_complete} of {n_frames} "
-                f"frames, which are in {writer.path}; continue with --resume"
-            )
-        arrays, summary = fold.conclude()
-        writer.finish(arrays=arrays, summary=summary, state=fold.state())
+        raise
+    finally:
+        measured.close()
+    if overlapping > 1:
+        note(f"{overlapping} frames have overlaps beyond the tolerance")
+    if stop.signal is not None and fold.n_frames < n_frames:
+        _commit(fold, writer)
+        raise InterruptedRunError(
+            f"stopped by {stop.signal} after {writer.frames_complete} of {n_frames} "
+            f"frames, which are in {writer.path}; continue with --resume"
+        )
+    arrays, summary = fold.conclude()
+    writer.finish(arrays=arrays, summary=summary, state=fold.state())
 
 
 def _commit(fold: RunFold, writer: ResultWriter) -> None:
@@ -103,10 +103,15 @@ def _commit(fold: RunFold, writer: ResultWriter) -> None:
 
 def _overlap_note(measured: MeasuredFrame) -> str:
     values, frame = measured.values, measured.frame
-    first, second = (int(i) for i in values["deepest_overlap_ids"])  # type: ignore[union-attr]
-    depth, tolerance = values["deepest_overlap"], values["overlap_tolerance"]
+    first, second = np.asarray(values["deepest_overlap_ids"]).tolist()
+    pairs = (
+        "1 pair overlaps"
+        if values["overlaps"] == 1
+        else (f"{values['overlaps']} pairs overlap")
+    )
     return (
-        f"frame {frame.index}: {values['overlaps']} pairs overlap by more than "
-        f"{tolerance:.3g}, the deepest is particles {first} and {second} by {depth:.3g}; "
-        f"{values['cages_overlap']} particles have no cage (status overlap)"
+        f"frame {frame.index}: {pairs} by more than {values['overlap_tolerance']:.3g}, "
+        f"the deepest is that of particles {first} and {second} by "
+        f"{values['deepest_overlap']:.3g}; {values['cages_overlap']} particles have no "
+        "cage (status overlap)"
     )

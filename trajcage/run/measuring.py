@@ -17,9 +17,11 @@ from trajcage.errors import FrameError, ResultFileError, UsageError
 from trajcage.model import Frame
 from trajcage.readers import Trajectory, open_trajectory
 from trajcage.run.fold import RunFold
+from trajcage.run.frames import MeasuredFrame, MeasuredFrames
 from trajcage.run.inputs import Diameter, FrameSelection, input_options
+from trajcage.run.interruption import StopRequest
 from trajcage.run.loop import Progress, fold_frames
-from trajcage.run.provenance import describe_inputs, parameters
+from trajcage.run.provenance import describe_inputs, flat, parameters
 from trajcage.run.settings import RunSettings
 from trajcage.run.workers import measured_frames
 from trajcage.store import Result, ResultWriter, open_result
@@ -180,57 +182,58 @@ def measure(
             if text:
                 note(text)
         inputs = describe_inputs(source)
-        options = {
-            "inputs": [{k: entry[k] for k in ("size", "sha256")} for entry in inputs],
-            **given,
-            "settings": asdict(settings),
-        }
+        options = flat(
+            {
+                "inputs": [{k: file[k] for k in ("size", "sha256")} for file in inputs],
+                **given,
+                **asdict(settings),
+            }
+        )
         record = parameters(options, inputs, description, notes, command_line)
-        with _open_writer(
-            target, resume, overwrite, settings, first, opened, options, record
-        ) as writer:
-            fold = RunFold(settings, first)
-            if writer.state is not None:
-                fold.restore(writer.state)
-            measured = measured_frames(
-                opened,
-                frames[writer.frames_complete :],
-                settings,
-                workers or len(os.sched_getaffinity(0)),
-            )
-            fold_frames(measured, fold, writer, len(frames), note, progress)
+        fold = RunFold(settings, first)
+        n_workers = workers or len(os.sched_getaffinity(0))
+        measured = measured_frames(opened, frames, settings, n_workers)
+        if not resume:
+            # a first frame that fails leaves no file, and an old one alone
+            measured = _put_back(next(measured), measured)
+        with StopRequest() as stopping:
+            if resume:
+                writer = _resume_writer(target, settings, first, options)
+                if writer.state is not None:
+                    fold.restore(writer.state)
+                rest = frames[writer.frames_complete :]
+                measured = measured_frames(opened, rest, settings, n_workers)
+            else:
+                writer = _create_writer(
+                    target, settings, first, opened, record, overwrite=overwrite
+                )
+            with writer:
+                fold_frames(
+                    measured, fold, writer, len(frames), stopping, note, progress
+                )
     return open_result(target)
 
 
-def _open_writer(
+def _put_back(first: MeasuredFrame, rest: MeasuredFrames) -> MeasuredFrames:
+    yield first
+    yield from rest
+
+
+def _create_writer(
     target: Path,
-    resume: bool,
-    overwrite: bool,
     settings: RunSettings,
     first: Frame,
     trajectory: Trajectory,
-    options: Mapping[str, object],
     record: Mapping[str, object],
+    *,
+    overwrite: bool,
 ) -> ResultWriter:
-    """Start the result file, or open it behind its last frame."""
     d = first.dimensions
-    fields, tables = settings.fields(d), settings.tables(d)
-    arrays = settings.arrays(d, first.mean_diameter)
-    if resume:
-        return ResultWriter.resume(
-            target,
-            options=options,
-            fields=fields,
-            tables=tables,
-            arrays=arrays,
-            store_positions=settings.store_positions,
-            flush_every=0,
-        )
     return ResultWriter.create(
         target,
-        fields=fields,
-        tables=tables,
-        arrays=arrays,
+        fields=settings.fields(d),
+        tables=settings.tables(d),
+        arrays=settings.arrays(d, first.mean_diameter),
         n_particles=first.n_particles,
         dimensions=d,
         periodic=first.box.periodic,
@@ -242,6 +245,21 @@ def _open_writer(
         length_unit="length",
         time_unit=trajectory.time_unit,
         overwrite=overwrite,
+        store_positions=settings.store_positions,
+        flush_every=0,
+    )
+
+
+def _resume_writer(
+    target: Path, settings: RunSettings, first: Frame, options: Mapping[str, object]
+) -> ResultWriter:
+    d = first.dimensions
+    return ResultWriter.resume(
+        target,
+        options=options,
+        fields=settings.fields(d),
+        tables=settings.tables(d),
+        arrays=settings.arrays(d, first.mean_diameter),
         store_positions=settings.store_positions,
         flush_every=0,
     )

@@ -10,7 +10,7 @@ import trajcage
 from trajcage.readers import InputDescription, InputOptions
 from trajcage.store import describe_file
 
-__all__ = ["describe_inputs", "parameters"]
+__all__ = ["describe_inputs", "flat", "parameters"]
 
 _LIBRARIES = ("MDAnalysis", "freud-analysis", "gsd", "h5py", "numba", "numpy", "scipy")
 
@@ -23,6 +23,19 @@ def describe_inputs(options: InputOptions) -> list[dict[str, str | int]]:
     if isinstance(options.diameter, str) and options.diameter.startswith("@"):
         paths.append(Path(options.diameter[1:]).expanduser())
     return [describe_file(path) for path in paths]
+
+
+def flat(options: Mapping[str, object], prefix: str = "") -> dict[str, object]:
+    """Flatten nested options to dotted names, so that each can be named alone."""
+    found: dict[str, object] = {}
+    for name, value in options.items():
+        if isinstance(value, list) and value and isinstance(value[0], Mapping):
+            value = {str(k): item for k, item in enumerate(value)}  # noqa: PLW2901
+        if isinstance(value, Mapping):
+            found |= flat(value, f"{prefix}{name}.")
+        else:
+            found[f"{prefix}{name}"] = value
+    return found
 
 
 def parameters(

@@ -12,7 +12,7 @@ from multiprocessing import get_context
 from trajcage.errors import TrajcageError
 from trajcage.neighborhood import set_threads
 from trajcage.readers import InputOptions, Trajectory, open_trajectory
-from trajcage.run.frames import MeasuredFrame, measure_frame
+from trajcage.run.frames import MeasuredFrame, MeasuredFrames, measure_frame
 from trajcage.run.settings import RunSettings
 
 __all__ = ["measured_frames"]
@@ -38,7 +38,7 @@ def measured_frames(
     indices: Sequence[int],
     settings: RunSettings,
     n_workers: int,
-) -> Iterator[MeasuredFrame]:
+) -> MeasuredFrames:
     """Measure frames and yield them in the order asked for.
 
     Parameters
@@ -68,7 +68,7 @@ def measured_frames(
 
 def _measure(
     trajectory: Trajectory, indices: Sequence[int], settings: RunSettings
-) -> Iterator[MeasuredFrame]:
+) -> MeasuredFrames:
     for index in indices:
         yield measure_frame(trajectory.frame(index), settings)
 
@@ -78,7 +78,7 @@ def _from_pool(
     indices: Sequence[int],
     settings: RunSettings,
     n_workers: int,
-) -> Iterator[MeasuredFrame]:
+) -> MeasuredFrames:
     n_workers = min(n_workers, len(indices))
     length = max(1, min(_LONGEST_BLOCK, len(indices) // (4 * n_workers)))
     blocks = [indices[k : k + length] for k in range(0, len(indices), length)]
@@ -97,9 +97,7 @@ def _from_pool(
             pool.shutdown(wait=True, cancel_futures=True)
 
 
-def _finished(
-    block: Sequence[int], future: "Future[_Block]"
-) -> Iterator[MeasuredFrame]:
+def _finished(block: Sequence[int], future: "Future[_Block]") -> MeasuredFrames:
     try:
         frames, error = future.result()
     except BrokenProcessPool as broken:
