@@ -31,6 +31,9 @@ __all__ = ["Cages", "measure_cages"]
 #: inconsistent, which takes input that is degenerate at exactly this level.
 _SHIFTS = np.array([[1e-10, 0.0], [3e-9, 3e-12], [1e-7, 1e-10]])
 
+#: The same for regions that wrap around a box, see `trajcage.kernel.torus`.
+_SHEARS = (1e-11, 1e-9, 1e-7)
+
 #: Status of a particle that waits for a wider halo.
 PENDING = 255
 
@@ -249,7 +252,9 @@ def measure_cages(
         Particles to measure, all unless given.
     reach : float, length, optional
         A cage that extends further than this from its particle is open. Ten
-        of the largest diameters unless given.
+        of the largest diameters unless given. With ``inf`` the volume of a
+        region that wraps around a fully periodic box is measured, too; it
+        counts each sphere once, not each image.
     overlap_tolerance : float, length
         Overlaps up to this depth count as contacts.
     windows : bool
@@ -281,10 +286,22 @@ def measure_cages(
         far = 0.6 * float(np.linalg.norm(system.vectors[:d], axis=1).max())
     rows = _rounds(system, wanted, far, tolerance, windows, threads, output, False)
     if whole_box and np.all(periodic):
-        wanted = wanted & (status == OPEN)
+        wanted = wanted & (status == OPEN) & (n > 1)
         status[wanted] = PENDING
-        sheared = system.without_symmetry()
-        rows += _rounds(sheared, wanted, np.inf, tolerance, windows, 1, output, True)
+        for strength in _SHEARS:
+            sheared = system.without_symmetry(strength)
+            rows += _rounds(
+                sheared, wanted, np.inf, tolerance, windows, threads, output, True
+            )
+            wanted = wanted & (status == INVALID)
+            if not wanted.any():
+                break
+            status[wanted] = PENDING
+        status[status == PENDING] = INVALID
+        if n == 1:
+            # nothing but its own images, which move along
+            numbers[0] = abs(np.linalg.det(system.vectors[:d, :d])), 0.0, 0.0, np.nan
+            status[0], bounds[0] = WRAPPED, 0
     if subset is not None:
         rest = np.ones(n, bool)
         rest[subset] = False
@@ -341,13 +358,15 @@ class _System(NamedTuple):
         spacing = float((volume / n) ** (1.0 / d))
         return cls(xyz, edges, corner, flags, radius, float(radius.max()), spacing, d)
 
-    def without_symmetry(self) -> "_System":
-        """Shear space and change radii by 1e-11, which breaks all periodic ties."""
+    def without_symmetry(self, strength: float) -> "_System":
+        """Shear space and change radii a little, which breaks all periodic ties."""
         d = self.dimensions
         random = np.random.default_rng(21)
         shear = np.eye(3)
-        shear[:d, :d] += 1e-11 * random.uniform(-1.0, 1.0, (d, d))
-        radii = self.radii * (1.0 + 1e-11 * random.uniform(-1.0, 1.0, len(self.radii)))
+        shear[:d, :d] += strength * random.uniform(-1.0, 1.0, (d, d))
+        radii = self.radii * (
+            1.0 + strength * random.uniform(-1.0, 1.0, len(self.radii))
+        )
         return self._replace(
             positions=self.positions @ shear,
             vectors=self.vectors @ shear,
@@ -433,7 +452,7 @@ def _measure_part(
             begin,
             radius,
             settings,
-            _SHIFTS,
+            np.zeros((1, 2)) if wrapped else _SHIFTS,
             keep,
             rows,
             output,

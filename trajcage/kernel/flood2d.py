@@ -81,7 +81,7 @@ def _climb(grid, s, i, xi, yi, ri, n, known, limits, shift):
     while stage < 2:
         who = -1
         qx, qy = 0.0, 0.0
-        need = reach + largest
+        need = 0.0
         if a >= 0:
             nx, ny = -s.near[X, a], -s.near[Y, a]
             if stage == 1:
@@ -96,9 +96,10 @@ def _climb(grid, s, i, xi, yi, ri, n, known, limits, shift):
             else:
                 who = -1
                 qx, qy = px + edge * nx, py + edge * ny
+        if who < 0:
+            # nothing in the way: look further, but step by step
+            need = min(reach + largest, max(1.4 * known, known + largest))
         if need > known:
-            if a < 0:
-                need = min(need, 2.0 * known)
             if not need < np.inf:
                 return INVALID, n, known, a, b, c
             if need > halo:
@@ -206,8 +207,17 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
     if torus is not None:
         begin(torus, grid, i)
         register(torus, grid, s, n)
-        if not canonical(torus, grid, a, b, c, a, 3):
-            return NEED_HALO, n, 0, 0
+        while not canonical(torus, grid, a, b, c, a, 3):
+            need = 1.2 * known
+            if need > halo:
+                return NEED_HALO, n, 0, 0
+            code, n = collect(
+                grid, s, i, xi, yi, zi, ri, n, known, need, tolerance, shift
+            )
+            if code != CLOSED:
+                return code, n, 0, 0
+            known = need
+            register(torus, grid, s, n)
         image = torus.image
         a, b, c = _sorted3(
             np.uint32(image[0]), np.uint32(image[1]), np.uint32(image[2])
@@ -268,13 +278,13 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
                     need = np.sqrt(qx * qx + qy * qy) + ball
                 else:
                     qx, qy = px + step * nx, py + step * ny
-                    if not qx * qx + qy * qy <= reach * reach:
+                    if who < 0 or not qx * qx + qy * qy <= reach * reach:
                         # the cage leaves the reach along this edge
                         who = -1
                         edge = ray_to_sphere(px, py, 0.0, nx, ny, 0.0, reach)
                         qx, qy = px + edge * nx, py + edge * ny
                         ball = largest
-                        need = reach + ball
+                        need = min(reach + ball, max(1.4 * known, known + ball))
                     else:
                         m0, m1, m3 = e0, e1, np.uint32(who)
                         ready = True

@@ -197,6 +197,7 @@ def _climb(grid, s, i, xi, yi, zi, ri, n, known, limits, shift):
         who = -1
         step = np.inf
         nx, ny, nz = 0.0, 0.0, 0.0
+        qx, qy, qz = 0.0, 0.0, 0.0
         if a >= 0:
             ax, ay, az = s.near[X, a], s.near[Y, a], s.near[Z, a]
             if stage == 0:
@@ -229,13 +230,10 @@ def _climb(grid, s, i, xi, yi, zi, ri, n, known, limits, shift):
             else:
                 who = -1
                 qx, qy, qz = px + edge * nx, py + edge * ny, pz + edge * nz
-                need = reach + largest
-        else:
-            qx, qy, qz = 0.0, 0.0, 0.0
-            need = reach + largest
+        if who < 0:
+            # nothing in the way: look further, but step by step
+            need = min(reach + largest, max(1.4 * known, known + largest))
         if need > known:
-            if a < 0:
-                need = min(need, 2.0 * known)
             if not need < np.inf:
                 return INVALID, n, known, a, b, c, d
             if need > halo:
@@ -401,8 +399,17 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
     if torus is not None:
         begin(torus, grid, i)
         register(torus, grid, s, n)
-        if not canonical(torus, grid, a, b, c, d, 4):
-            return NEED_HALO, n, 0, 0
+        while not canonical(torus, grid, a, b, c, d, 4):
+            need = 1.2 * known
+            if need > halo:
+                return NEED_HALO, n, 0, 0
+            code, n = collect(
+                grid, s, i, xi, yi, zi, ri, n, known, need, tolerance, shift
+            )
+            if code != CLOSED:
+                return code, n, 0, 0
+            known = need
+            register(torus, grid, s, n)
         image = torus.image
         a, b, c, d = _sorted4(
             np.uint32(image[0]),
@@ -501,13 +508,13 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
                             step = near[GAP, k] / h
                             who = k
                     qx, qy, qz = px + step * nx, py + step * ny, pz + step * nz
-                    if not qx * qx + qy * qy + qz * qz <= reach * reach:
+                    if who < 0 or not qx * qx + qy * qy + qz * qz <= reach * reach:
                         # the cage leaves the reach along this edge
                         who = -1
                         edge = ray_to_sphere(px, py, pz, nx, ny, nz, reach)
                         qx, qy, qz = px + edge * nx, py + edge * ny, pz + edge * nz
-                        far = reach
                         ball = largest
+                        far = min(reach, max(1.4 * known - ball, known))
                     else:
                         m0, m1, m2 = s.cell[t, f0], s.cell[t, f1], s.cell[t, f2]
                         m3 = np.uint32(who)

@@ -20,6 +20,7 @@ class CageStatus(IntEnum):
     BORDER = 2  #: depends on what lies beyond an open edge of the data
     OVERLAP = 3  #: the particle overlaps a neighbor by more than the tolerance
     INVALID = 4  #: no usable position, or a geometry that stayed inconsistent
+    WRAPPED = 5  #: wraps around the periodic box: measured, but no cage
 
 
 @dataclass(frozen=True, eq=False)
