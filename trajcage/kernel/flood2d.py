@@ -114,7 +114,7 @@ def _climb(grid, s, i, xi, yi, ri, n, known, limits, shift):
                 a = nearest(s, n)
             continue
         if who < 0:
-            if outside(grid, xi, yi, 0.0, qx, qy, 0.0, largest):
+            if outside(grid, xi, yi, 0.0, 0.0, 0.0, 0.0, reach + largest):
                 return BORDER, n, known, a, b, c
             return OPEN, n, known, a, b, c
         px, py = qx, qy
@@ -339,7 +339,9 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
                 n_corners += 1
                 continue
             if who < 0:
-                if outside(grid, xi, yi, zi, qx, qy, 0.0, largest):
+                # whichever way out the flood found first, near an open edge of
+                # the data nobody knows whether it is one
+                if outside(grid, xi, yi, zi, 0.0, 0.0, 0.0, reach + largest):
                     return BORDER, n, n_cells, n_corners
                 return OPEN, n, n_cells, n_corners
             if other < 0:

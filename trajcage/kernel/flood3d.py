@@ -248,7 +248,7 @@ def _climb(grid, s, i, xi, yi, zi, ri, n, known, limits, shift):
                 a = nearest(s, n)
             continue
         if who < 0:
-            if outside(grid, xi, yi, zi, qx, qy, qz, largest):
+            if outside(grid, xi, yi, zi, 0.0, 0.0, 0.0, reach + largest):
                 return BORDER, n, known, a, b, c, d
             return OPEN, n, known, a, b, c, d
         px, py, pz = qx, qy, qz
@@ -574,7 +574,9 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
                 n_corners += 1
                 continue
             if who < 0:
-                if outside(grid, xi, yi, zi, qx, qy, qz, largest):
+                # whichever way out the flood found first, near an open edge of
+                # the data nobody knows whether it is one
+                if outside(grid, xi, yi, zi, 0.0, 0.0, 0.0, reach + largest):
                     return BORDER, n, n_cells, n_corners
                 return OPEN, n, n_cells, n_corners
             if other < 0:
