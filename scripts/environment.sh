@@ -12,6 +12,6 @@ make_environment() {
     bin=$PWD/$directory/bin
     [ -x "$bin/python" ] || "$python" -m venv "$directory"
     # dependency groups need pip 25.1
-    "$bin/python" -m pip install --quiet --disable-pip-version-check --upgrade 'pip>=25.1'
-    "$bin/python" -m pip install --quiet --disable-pip-version-check --editable . "$@"
+    "$bin/python" -m pip install -qq --disable-pip-version-check --upgrade 'pip>=25.1'
+    "$bin/python" -m pip install -qq --disable-pip-version-check --editable . "$@"
 }

@@ -237,3 +237,31 @@ def test_equal_particles_beside_a_mixture_fill_as_much():
     frame = frame_of(np.eye(4, 3) * 3, [9.0, 9.0, 9.0], radii)
     volume = np.pi / 6 * equal_diameter(frame) ** 3 * 4
     assert volume / 9.0**3 == pytest.approx(frame.packing_fraction)
+
+
+# Two particles in a periodic box: the partition function Q = V (V - v_ex) is exact, and
+# so is Z = 1 + v_ex / (2 (V - v_ex)), with v_ex the ball (disk) of radius sigma <= L/2.
+# The cage of each is all the space that the other leaves: the law of the cages gives
+# the same number for any configuration. Derived here.
+@pytest.mark.parametrize(
+    ("dimensions", "packing_fraction", "factor"),
+    [(3, 0.05, 1.125), (3, 0.1, 4.0 / 3.0), (2, 0.3, 1.75)],
+)
+def test_two_particles_in_a_box_have_the_exact_pressure(
+    dimensions, packing_fraction, factor
+):
+    d = dimensions
+    body = np.pi / 6 if d == 3 else np.pi / 4
+    edge = (2.0 * body / packing_fraction) ** (1.0 / d)
+    rng = np.random.default_rng(7)
+    for _ in range(20):
+        apart = rng.normal(size=d)
+        apart *= rng.uniform(1.0, 0.5 * edge) / np.linalg.norm(apart)
+        start = rng.uniform(0.0, edge, d)
+        positions = np.array([start, start + apart])
+        frame = frame_of(positions, [edge] * d, np.full(2, 0.5))
+        table, _ = frame_cages(frame, CageOptions(reach=np.inf))
+        assert table.measured.all()
+        found, status = compressibility_factor(frame, table)
+        assert status is CompressibilityStatus.MEASURED
+        assert found == pytest.approx(factor, rel=1e-7)

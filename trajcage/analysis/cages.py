@@ -54,7 +54,8 @@ class CageOptions:
     ----------
     reach : float, length, optional
         A cage that extends further than this from its particle is open; ten of
-        the largest diameters unless given.
+        the largest diameters unless given. With ``inf`` regions that wrap around a
+        fully periodic box are measured, too.
     overlap_tolerance : float, length, optional
         Overlaps up to this depth count as contacts; see
         :func:`default_overlap_tolerance`.
@@ -88,7 +89,7 @@ class CageOptions:
 def fields(dimensions: int) -> tuple[Field, ...]:
     """Declare the per-particle quantities of a :class:`CageTable`, as stored."""
     d = dimensions
-    left_out = "NaN where cage_status is not closed"
+    left_out = "NaN where cage_status is neither closed nor wrapped"
     return (
         Field(
             "free_volume",
@@ -112,14 +113,15 @@ def fields(dimensions: int) -> tuple[Field, ...]:
             "closed: measured; open: reaches further than the stated reach; border: "
             "depends on what lies beyond an open edge of the data; overlap: the "
             "particle overlaps a neighbor beyond the tolerance; invalid: geometry "
-            "inconsistent",
+            "inconsistent; wrapped: the region wraps around the periodic box and is "
+            "measured as a whole (infinite reach only)",
             dtype="u1",
             codes=tuple(code.name.lower() for code in CageStatus),
         ),
         Field(
             "bounding_neighbors",
             "Number of neighbors (periodic images counted apart) whose exclusion "
-            "sphere carries a piece of the wall; -1 where not closed",
+            "sphere carries a piece of the wall; -1 where unknown",
             dtype="i4",
         ),
         Field(
@@ -129,8 +131,8 @@ def fields(dimensions: int) -> tuple[Field, ...]:
         ),
         Field(
             "weakest_window_neighbors",
-            "Indices of the particles that form the weakest window; -1 where not "
-            "closed",
+            "Indices of the particles that form the weakest window; -1 where there is "
+            "none",
             dtype="i4",
             shape=(d,),
         ),
@@ -330,7 +332,8 @@ def cages(
         Corner of the box; it matters along open edges only. Zero unless given.
     reach : float, length, optional
         A cage that extends further than this from its particle is open; ten of
-        the largest diameters unless given.
+        the largest diameters unless given. With ``inf`` regions that wrap around a
+        fully periodic box are measured, too (status ``wrapped``).
     overlap_tolerance : float, length, optional
         Overlaps up to this depth count as contacts; 1e-9 mean diameters unless
         given.

@@ -151,7 +151,7 @@ def measure_regions(
     crystal = (structure != Structure.DISORDERED) & (structure != Structure.UNKNOWN)
     closed = cage_status == CageStatus.CLOSED
     caged = closed if broken is None else closed & ~broken
-    measured = closed | (cage_status == CageStatus.OPEN)
+    measured = closed | np.isin(cage_status, (CageStatus.OPEN, CageStatus.WRAPPED))
     unknown = (structure == Structure.UNKNOWN) | (~crystal & ~measured)
     region = np.select(
         [unknown, crystal, caged], [Region.UNKNOWN, Region.CRYSTAL, Region.GLASS]

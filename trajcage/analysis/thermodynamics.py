@@ -75,11 +75,13 @@ def fields(dimensions: int) -> tuple[Field, ...]:
         scalar(
             "compressibility_factor",
             "Z = P V / (N k T) = 1 + <wall_sum / free_volume> / (2 d), mean of the "
-            f"ratio {over}; NaN unless compressibility_status is measured",
+            "ratio over the particles with a closed cage or a wrapped region; NaN "
+            "unless compressibility_status is measured",
         ),
         Field(
             "compressibility_status",
-            "measured; unresolved: more than 1 in 1000 cages are not closed; "
+            "measured; unresolved: more than 1 in 1000 cages are neither closed nor "
+            "wrapped; "
             "ideal_lattice: all cages are equal, so this is no thermal sample",
             dtype="u1",
             per_particle=False,
@@ -171,7 +173,8 @@ def compressibility_factor(
 
     Z = 1 + <w_f / v_f> / (2 d), the mean over particles of the ratio of wall sum and
     free volume. With all others held fixed, a particle is anywhere in its cage with
-    equal probability, so that s_f / v_f is the rate of its contacts.
+    equal probability, so that s_f / v_f is the rate of its contacts. That holds for
+    regions that wrap around the periodic box, too.
 
     Returns
     -------
@@ -186,13 +189,13 @@ def compressibility_factor(
     1623 (1999). Citations from memory. On a perfect lattice with its neighbors fixed
     this average is not the pressure: Z - 1 comes out half that of the cell theory.
     """
-    if table.left_out > UNRESOLVED_SHARE * len(table):
+    measured = table.measured
+    if np.count_nonzero(~measured) > UNRESOLVED_SHARE * len(table):
         return math.nan, CompressibilityStatus.UNRESOLVED
     if _is_ideal_lattice(frame, table):
         return math.nan, CompressibilityStatus.IDEAL_LATTICE
-    closed = table.closed
     with np.errstate(divide="ignore"):
-        ratio = table.wall_sum[closed] / table.free_volume[closed]
+        ratio = table.wall_sum[measured] / table.free_volume[measured]
     z = 1.0 + float(ratio.mean()) / (2.0 * frame.dimensions)
     return z, CompressibilityStatus.MEASURED
 
@@ -204,8 +207,8 @@ def _is_ideal_lattice(frame: Frame, table: CageTable) -> bool:
     volume by up to the free surface times that shift. Two particles alone always
     have equal cages, by symmetry, and are no lattice.
     """
-    closed = table.closed
-    volumes, sizes = table.free_volume[closed], frame.radii[closed]
+    known = table.measured
+    volumes, sizes = table.free_volume[known], frame.radii[known]
     _, group = np.unique(np.round(sizes / sizes.mean(), 6), return_inverse=True)
     members = np.bincount(group)
     if frame.n_particles <= 2 or len(volumes) < 4 * len(members):
@@ -213,7 +216,7 @@ def _is_ideal_lattice(frame: Frame, table: CageTable) -> bool:
     mean = np.bincount(group, volumes) / members
     with np.errstate(invalid="ignore", divide="ignore"):
         spread = np.abs(volumes / mean[group] - 1.0)
-        steepness = float(np.mean(table.free_surface[closed] / volumes))
+        steepness = float(np.mean(table.free_surface[known] / volumes))
     shift = 2.0 * math.sqrt(frame.dimensions) * frame.resolution
     limit = min(1e-6 + shift * steepness, _LARGEST_LATTICE_SPREAD)
     return bool(np.all(spread <= limit))

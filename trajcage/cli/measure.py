@@ -32,8 +32,9 @@ _SKIPPABLE = ("cells", "order", "rattlers", "regions", "time")
 @click.option(
     "--reach",
     type=float,
+    metavar="LENGTH",
     help="A cage that extends further than this is open. Ten of the largest diameters "
-    "unless given.",
+    "unless given; with inf, regions that wrap around the periodic box are measured.",
 )
 @click.option(
     "--overlap-tolerance",

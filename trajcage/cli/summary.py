@@ -125,7 +125,7 @@ def _reason(name: str, summary: dict[str, Any]) -> str:
         parts = []
         if unresolved:
             parts.append(
-                f"more than 1 in 1000 cages are not closed on {unresolved} frames"
+                f"more than 1 in 1000 cages are not measured on {unresolved} frames"
             )
         if lattice:
             parts.append(f"all cages are equal, an ideal lattice, on {lattice} frames")

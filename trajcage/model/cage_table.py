@@ -60,7 +60,9 @@ class CageWindows:
 class CageTable:
     """What is known about the cage of every particle of one configuration.
 
-    Sizes are NaN, counts and neighbors -1 where the cage is not closed.
+    Sizes are NaN, counts and neighbors -1 where the cage is neither closed nor
+    wrapped; the latter, regions that wrap around the periodic box, are measured only
+    with an infinite reach.
 
     Parameters
     ----------
@@ -100,8 +102,13 @@ class CageTable:
 
     @property
     def closed(self) -> NDArray[np.bool_]:
-        """The measured cages, (n,) bool."""
+        """The closed cages, (n,) bool."""
         return np.asarray(self.status == CageStatus.CLOSED)
+
+    @property
+    def measured(self) -> NDArray[np.bool_]:
+        """Closed cages and regions that wrap around the box, (n,) bool."""
+        return np.asarray(self.closed | (self.status == CageStatus.WRAPPED))
 
     @property
     def counts(self) -> dict[str, int]:

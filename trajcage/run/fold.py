@@ -2,7 +2,7 @@
 
 import dataclasses
 import math
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 
 import numpy as np
 from numpy.typing import NDArray
@@ -23,6 +23,7 @@ from trajcage.analysis.thermodynamics import CompressibilityStatus, equal_diamet
 from trajcage.analysis.tracking import RegionTracker
 from trajcage.model import CageStatus, Field, Frame, FrameRecord
 from trajcage.run.frames import MeasuredFrame
+from trajcage.run.growth import Trail
 from trajcage.run.settings import RunSettings
 
 __all__ = ["RunFold"]
@@ -40,12 +41,20 @@ class RunFold:
     first : Frame
         The first frame of the run, which sets the number of particles and the
         scales of length.
+    inputs : sequence of dict
+        Size and sha256 of the input files as they are now, for the summary.
     """
 
-    def __init__(self, settings: RunSettings, first: Frame) -> None:
+    def __init__(
+        self,
+        settings: RunSettings,
+        first: Frame,
+        inputs: Sequence[Mapping[str, str | int]],
+    ) -> None:
         n, d = first.positions.shape
         self._settings = settings
         self._first = first
+        self._inputs = [{k: file[k] for k in ("size", "sha256")} for file in inputs]
         scalars = [
             f for f in settings.fields(d) if not (f.per_particle or f.shape or f.codes)
         ]
@@ -57,6 +66,7 @@ class RunFold:
         self._factors = np.zeros(len(CompressibilityStatus), dtype=np.int64)
         self._distribution = FreeVolumeDistribution(d, first.mean_diameter)
         self._tracker = RegionTracker()
+        self.trail = Trail()
         self._time = TimeFold(settings.time, n, d, first.mean_diameter)
         self._n_frames = 0
 
@@ -112,6 +122,7 @@ class RunFold:
                 self._series.add(row, value)
             else:
                 self._missing[row] += 1
+        self.trail.add(frame)
         self._n_frames += 1
         record = FrameRecord(frame.index, frame.step, frame.time, frame.box, values)
         return record, rows
@@ -190,6 +201,7 @@ class RunFold:
             "n_frames": self._n_frames,
             "n_particles": first.n_particles,
             "dimensions": d,
+            "inputs": self._inputs,
             "lengths_in": "mean_diameter",
             "mean_diameter": first.mean_diameter,
             "equal_radii": first.equal_radii,
@@ -264,11 +276,14 @@ class RunFold:
 
     def _parts(
         self,
-    ) -> dict[str, BlockMoments | FreeVolumeDistribution | RegionTracker | TimeFold]:
+    ) -> dict[
+        str, BlockMoments | FreeVolumeDistribution | RegionTracker | TimeFold | Trail
+    ]:
         return {
             "series": self._series,
             "distribution": self._distribution,
             "tracker": self._tracker,
+            "trail": self.trail,
             "time": self._time,
         }
 

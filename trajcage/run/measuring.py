@@ -2,7 +2,7 @@
 
 import contextlib
 import os
-from collections.abc import Callable, Collection, Mapping, Sequence
+from collections.abc import Callable, Collection, Sequence
 from dataclasses import asdict, replace
 from pathlib import Path
 
@@ -18,13 +18,15 @@ from trajcage.model import Frame
 from trajcage.readers import Trajectory, open_trajectory
 from trajcage.run.fold import RunFold
 from trajcage.run.frames import MeasuredFrame, MeasuredFrames
+from trajcage.run.growth import accept_growth, check_same_frames
 from trajcage.run.inputs import Diameter, FrameSelection, input_options
 from trajcage.run.interruption import StopRequest
 from trajcage.run.loop import Progress, fold_frames
+from trajcage.run.output import create_writer, resume_writer
 from trajcage.run.provenance import describe_inputs, flat, parameters
 from trajcage.run.settings import RunSettings
 from trajcage.run.workers import measured_frames
-from trajcage.store import Result, ResultWriter, open_result
+from trajcage.store import Result, open_result
 
 __all__ = ["measure"]
 
@@ -52,6 +54,7 @@ def measure(
     regions: RegionOptions | None = None,
     time_analysis: TimeOptions | None = None,
     workers: int = 1,
+    dask: object = None,
     resume: bool = False,
     overwrite: bool = False,
     store_positions: bool = False,
@@ -82,7 +85,7 @@ def measure(
         Frames to measure, as in a Python slice.
     reach : float, length, optional
         A cage that extends further than this is open; ten of the largest diameters
-        unless given.
+        unless given. With ``inf`` regions that wrap around the box are measured.
     overlap_tolerance : float, length, optional
         Overlaps up to this depth count as contacts. Unless given it follows from the
         resolution of the stored coordinates.
@@ -95,8 +98,13 @@ def measure(
     workers : int
         Processes; 0 for one on every core. Results do not depend on it. With more
         than one, call this under ``if __name__ == "__main__":``.
+    dask : str, path or distributed.Client, optional
+        An existing cluster that measures instead: the address of its scheduler, its
+        scheduler file, or a client. Its workers must see the input under the same
+        paths.
     resume : bool
-        Whether to continue the file, if there is one.
+        Whether to continue the file, if there is one. The trajectory may have grown
+        meanwhile.
     overwrite : bool
         Whether to replace the file, if there is one.
     store_positions : bool
@@ -128,6 +136,8 @@ def measure(
         raise UsageError("resume continues a file and overwrite replaces it: give one")
     if workers < 0:
         raise UsageError(f"workers must be 0 (all cores) or more, got {workers}")
+    if dask is not None and workers != 1:
+        raise UsageError("with dask the cluster has its own workers: leave out workers")
     selection = FrameSelection(start, stop, step)
     source = input_options(
         topology,
@@ -190,24 +200,36 @@ def measure(
             }
         )
         record = parameters(options, inputs, description, notes, command_line)
-        fold = RunFold(settings, first)
+        fold = RunFold(settings, first, inputs)
         n_workers = workers or len(os.sched_getaffinity(0))
-        measured = measured_frames(opened, frames, settings, n_workers)
+        measured = measured_frames(opened, frames, settings, n_workers, note, dask)
         if not resume:
             # a first frame that fails leaves no file, and an old one alone
             measured = _put_back(next(measured), measured)
         with StopRequest() as stopping:
             if resume:
-                writer = _resume_writer(target, settings, first, options)
-                if writer.state is not None:
-                    fold.restore(writer.state)
-                rest = frames[writer.frames_complete :]
-                measured = measured_frames(opened, rest, settings, n_workers)
+                trajectory_name = str(source.trajectory or source.topology)
+                options, grown = accept_growth(target, options, inputs, trajectory_name)
+                writer = resume_writer(target, settings, first, options)
             else:
-                writer = _create_writer(
-                    target, settings, first, opened, record, overwrite=overwrite
+                writer = create_writer(
+                    target,
+                    settings,
+                    first,
+                    opened.type_names,
+                    opened.time_unit,
+                    record,
+                    overwrite=overwrite,
                 )
             with writer:
+                if resume:
+                    if writer.state is not None:
+                        fold.restore(writer.state)
+                    check_same_frames(opened, frames, writer, fold.trail, grown=grown)
+                    rest = frames[writer.frames_complete :]
+                    measured = measured_frames(
+                        opened, rest, settings, n_workers, note, dask
+                    )
                 fold_frames(
                     measured, fold, writer, len(frames), stopping, note, progress
                 )
@@ -217,52 +239,6 @@ def measure(
 def _put_back(first: MeasuredFrame, rest: MeasuredFrames) -> MeasuredFrames:
     yield first
     yield from rest
-
-
-def _create_writer(
-    target: Path,
-    settings: RunSettings,
-    first: Frame,
-    trajectory: Trajectory,
-    record: Mapping[str, object],
-    *,
-    overwrite: bool,
-) -> ResultWriter:
-    d = first.dimensions
-    return ResultWriter.create(
-        target,
-        fields=settings.fields(d),
-        tables=settings.tables(d),
-        arrays=settings.arrays(d, first.mean_diameter),
-        n_particles=first.n_particles,
-        dimensions=d,
-        periodic=first.box.periodic,
-        ids=first.ids,
-        species=first.species,
-        type_names=trajectory.type_names,
-        radii=first.radii,
-        parameters=record,
-        length_unit="length",
-        time_unit=trajectory.time_unit,
-        overwrite=overwrite,
-        store_positions=settings.store_positions,
-        flush_every=0,
-    )
-
-
-def _resume_writer(
-    target: Path, settings: RunSettings, first: Frame, options: Mapping[str, object]
-) -> ResultWriter:
-    d = first.dimensions
-    return ResultWriter.resume(
-        target,
-        options=options,
-        fields=settings.fields(d),
-        tables=settings.tables(d),
-        arrays=settings.arrays(d, first.mean_diameter),
-        store_positions=settings.store_positions,
-        flush_every=0,
-    )
 
 
 def _radii_vary(trajectory: Trajectory, first: Frame, last: int) -> bool:

@@ -1,5 +1,6 @@
 """What made a result: versions, inputs, command line."""
 
+import math
 import platform
 from collections.abc import Mapping
 from dataclasses import asdict
@@ -33,6 +34,8 @@ def flat(options: Mapping[str, object], prefix: str = "") -> dict[str, object]:
             value = {str(k): item for k, item in enumerate(value)}  # noqa: PLW2901
         if isinstance(value, Mapping):
             found |= flat(value, f"{prefix}{name}.")
+        elif isinstance(value, float) and not math.isfinite(value):
+            found[f"{prefix}{name}"] = str(value)  # JSON has no infinity
         else:
             found[f"{prefix}{name}"] = value
     return found

@@ -1,23 +1,29 @@
-"""Measured frames in order, from this process or from several."""
+"""Measured frames in order: from this process, from several, or from a cluster."""
 
 import os
 import signal
 from collections import deque
-from collections.abc import Iterator, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from concurrent.futures import Future, ProcessPoolExecutor
 from concurrent.futures.process import BrokenProcessPool
 from contextlib import contextmanager
 from multiprocessing import get_context
 
 from trajcage.errors import TrajcageError
-from trajcage.neighborhood import set_threads
-from trajcage.readers import InputOptions, Trajectory, open_trajectory
-from trajcage.run.frames import MeasuredFrame, MeasuredFrames, measure_frame
+from trajcage.readers import Trajectory
+from trajcage.run.blocks import (
+    Block,
+    Crew,
+    MeasuredBlock,
+    cut,
+    in_order,
+    measure_block,
+    pack_job,
+)
+from trajcage.run.frames import MeasuredFrames, measure_frame
 from trajcage.run.settings import RunSettings
 
 __all__ = ["measured_frames"]
-
-_LONGEST_BLOCK = 8  # frames; the results of a block wait in memory
 
 _THREAD_LIMITS = (
     "MKL_NUM_THREADS",
@@ -26,11 +32,7 @@ _THREAD_LIMITS = (
     "OPENBLAS_NUM_THREADS",
 )
 
-# Frames of a block up to the first error, and that error.
-_Block = tuple[list[MeasuredFrame], TrajcageError | None]
-
-# What a worker process opens once: its trajectory and its settings.
-_opened: list[tuple[Trajectory, RunSettings]] = []
+_BlockFuture = Future[MeasuredBlock]
 
 
 def measured_frames(
@@ -38,6 +40,8 @@ def measured_frames(
     indices: Sequence[int],
     settings: RunSettings,
     n_workers: int,
+    note: Callable[[str], None],
+    cluster: object = None,
 ) -> MeasuredFrames:
     """Measure frames and yield them in the order asked for.
 
@@ -51,19 +55,32 @@ def measured_frames(
         What to measure.
     n_workers : int
         Processes. The frames that come out do not depend on it.
+    note : callable
+        Called with what the user should know.
+    cluster : str, path or distributed.Client, optional
+        See :class:`trajcage.run.cluster.Cluster`; in place of processes here.
 
     Raises
     ------
     TrajcageError
         At the first frame that fails, after all frames before it came out.
     """
-    if n_workers == 1 or len(indices) < 3:
+    if len(indices) < 3 or (n_workers == 1 and cluster is None):
         yield from _measure(trajectory, indices, settings)
         return
     # The first frame is measured here, so that mistakes show before processes
     # start, and the kernels are compiled once.
     yield from _measure(trajectory, indices[:1], settings)
-    yield from _from_pool(trajectory.options, indices[1:], settings, n_workers)
+    rest, n = indices[1:], trajectory.n_particles
+    if cluster is None:
+        job = pack_job(trajectory.options, settings)
+        n_workers = min(n_workers, len(rest))
+        yield from in_order(_Pool(job, n_workers, note), cut(rest, n_workers, n))
+        return
+    from trajcage.run.cluster import Cluster  # dask is optional
+
+    crew = Cluster(cluster, trajectory.options, settings)
+    yield from in_order(crew, cut(rest, crew.n_threads, n))
 
 
 def _measure(
@@ -73,59 +90,97 @@ def _measure(
         yield measure_frame(trajectory.frame(index), settings)
 
 
-def _from_pool(
-    options: InputOptions,
-    indices: Sequence[int],
-    settings: RunSettings,
-    n_workers: int,
-) -> MeasuredFrames:
-    n_workers = min(n_workers, len(indices))
-    length = max(1, min(_LONGEST_BLOCK, len(indices) // (4 * n_workers)))
-    blocks = [indices[k : k + length] for k in range(0, len(indices), length)]
-    waiting: deque[tuple[Sequence[int], Future[_Block]]] = deque()
-    with _one_thread_each():
-        pool = ProcessPoolExecutor(
-            n_workers, get_context("spawn"), _open, (options, settings)
-        )
+class _Pool(Crew):
+    """Processes on this machine, replaced when one of them dies.
+
+    When one dies, nobody knows at which of the blocks on their way. The first of
+    these is then measured frame by frame in a process of its own; the others start
+    again. A frame that ends a process alone, too, is the guilty one.
+    """
+
+    def __init__(self, job: bytes, n_workers: int, note: Callable[[str], None]) -> None:
+        self._job = job
+        self._n_workers = n_workers
+        self._note = note
+        self._waiting: deque[tuple[Block, _BlockFuture]] = deque()
+        self._executor = _executor(n_workers)
+
+    @property
+    def capacity(self) -> int:
+        return 2 * self._n_workers
+
+    def __len__(self) -> int:
+        return len(self._waiting)
+
+    def add(self, block: Block) -> None:
+        self._waiting.append((block, self._submit(self._executor, block)))
+
+    def take(self) -> MeasuredBlock:
+        block, future = self._waiting.popleft()
         try:
-            for block in [*blocks, *[None] * (2 * n_workers)]:
-                if block is not None:
-                    waiting.append((block, pool.submit(_measure_block, block)))
-                if waiting and (block is None or len(waiting) >= 2 * n_workers):
-                    yield from _finished(*waiting.popleft())
+            return future.result()
+        except BrokenProcessPool:
+            _shut(self._executor)
+        self._note(
+            f"a worker process died, maybe for lack of memory; frames {block[0]} to "
+            f"{block[-1]} are measured again one by one, then the run goes on"
+        )
+        found = self._one_by_one(block)
+        self._executor = _executor(self._n_workers)
+        for _ in range(len(self._waiting)):
+            other, future = self._waiting.popleft()
+            if future.cancelled() or future.exception() is not None:
+                future = self._submit(self._executor, other)
+            self._waiting.append((other, future))
+        return found
+
+    def close(self) -> None:
+        self._waiting.clear()
+        _shut(self._executor)
+
+    def _one_by_one(self, block: Block) -> MeasuredBlock:
+        executor = _executor(1)
+        frames = []
+        try:
+            for index in block:
+                found, error = self._submit(executor, [index]).result()
+                frames += found
+                if error is not None:
+                    return frames, error
+        except BrokenProcessPool as broken:
+            culprit = TrajcageError(
+                f"frame {index}: the worker process that measures it died, also when "
+                "alone, most likely for lack of memory; all frames before it are in "
+                "the file: continue with --resume on a machine with more memory, or "
+                "leave the frame out"
+            )
+            culprit.__cause__ = broken
+            return frames, culprit
         finally:
-            pool.shutdown(wait=True, cancel_futures=True)
+            _shut(executor)
+        return frames, None
+
+    def _submit(self, executor: ProcessPoolExecutor, block: Block) -> _BlockFuture:
+        with _one_thread_each():  # the first block starts the processes
+            try:
+                return executor.submit(measure_block, self._job, block)
+            except BrokenProcessPool as broken:
+                failed: _BlockFuture = Future()
+                failed.set_exception(broken)
+                return failed
 
 
-def _finished(block: Sequence[int], future: "Future[_Block]") -> MeasuredFrames:
-    try:
-        frames, error = future.result()
-    except BrokenProcessPool as broken:
-        raise TrajcageError(
-            f"a worker process died, probably at one of the frames {block[0]} to "
-            f"{block[-1]} and for lack of memory; all frames before are in the file: "
-            "continue with --resume and fewer --workers"
-        ) from broken
-    yield from frames
-    if error is not None:
-        raise error
+def _executor(n_workers: int) -> ProcessPoolExecutor:
+    return ProcessPoolExecutor(n_workers, get_context("spawn"), _ignore_interrupts)
 
 
-def _open(options: InputOptions, settings: RunSettings) -> None:
-    """Prepare a worker: the parent alone decides when to stop."""
+def _ignore_interrupts() -> None:
+    """Leave it to the parent to decide when to stop."""
     signal.signal(signal.SIGINT, signal.SIG_IGN)
-    set_threads(1)
-    _opened.append((open_trajectory(options), settings))
 
 
-def _measure_block(indices: Sequence[int]) -> _Block:
-    trajectory, settings = _opened[0]
-    frames: list[MeasuredFrame] = []
-    try:
-        frames.extend(_measure(trajectory, indices, settings))
-    except TrajcageError as error:
-        return frames, error
-    return frames, None
+def _shut(executor: ProcessPoolExecutor) -> None:
+    executor.shutdown(wait=True, cancel_futures=True)
 
 
 @contextmanager
