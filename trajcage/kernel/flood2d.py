@@ -110,8 +110,11 @@ def _climb(grid, s, i, xi, yi, ri, n, known, limits, shift):
             if code != CLOSED:
                 return code, n, known, a, b, c
             known = need
-            if stage == 0:
-                a = nearest(s, n)
+            # a new candidate may be nearer than the old two: start again
+            a = nearest(s, n)
+            b, c = -1, -1
+            px, py = 0.0, 0.0
+            stage = 0
             continue
         if who < 0:
             if outside(grid, xi, yi, 0.0, 0.0, 0.0, 0.0, reach + largest):

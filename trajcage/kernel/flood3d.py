@@ -244,8 +244,11 @@ def _climb(grid, s, i, xi, yi, zi, ri, n, known, limits, shift):
             if code != CLOSED:
                 return code, n, known, a, b, c, d
             known = need
-            if stage == 0:
-                a = nearest(s, n)
+            # a new candidate may be nearer than the old three: start again
+            a = nearest(s, n)
+            b, c, d = -1, -1, -1
+            px, py, pz = 0.0, 0.0, 0.0
+            stage = 0
             continue
         if who < 0:
             if outside(grid, xi, yi, zi, 0.0, 0.0, 0.0, reach + largest):
