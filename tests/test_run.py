@@ -161,6 +161,25 @@ def test_particles_regions_and_events_refer_to_each_other(glass):
         assert np.array_equal(breaks, result["cage_breaks"])
 
 
+def test_walls_tell_by_whom_each_particle_is_caged(tmp_path):
+    source = scenario.write_gsd(
+        tmp_path / "a.gsd", [scenario.shaken(k) for k in (1, 2)]
+    )
+    with measure(source, tmp_path / "r.h5", store_walls=True, skip=["time"]) as result:
+        walls = result.table("walls")
+        counts = np.diff(walls["neighbors_offsets"]).reshape(2, 27)
+        bounding = np.asarray(result["bounding_neighbors"])
+        closed = np.asarray(result["cage_status"]) == CageStatus.CLOSED
+        assert closed.any()
+        assert np.array_equal(counts[closed], bounding[closed])
+        surfaces = np.add.reduceat(
+            np.append(walls["areas"], 0.0), walls["areas_offsets"][:-1]
+        )
+        surfaces = surfaces.reshape(2, 27)[closed]
+        assert np.allclose(surfaces, np.asarray(result["free_surface"])[closed])
+        assert np.array_equal(walls["particle"].reshape(2, 27)[1], np.arange(27))
+
+
 def test_workers_do_not_change_a_bit(glass, tmp_path):
     path = tmp_path / "cages.h5"
     measure(scenario.GLASS, path, stop=8, store_positions=True, workers=2).close()

@@ -19,8 +19,12 @@ __all__ = ["main"]
 _COMMANDS = {
     "inspect": "Tell what is understood of an input.",
     "measure": "Measure cages, order and cage breaking; write a result file.",
+    "merge": "Put parts of a trajectory, measured apart, into one result file.",
+    "salvage": "Copy the complete frames out of a damaged result file.",
     "summary": "Show the numbers of a result file beside published references.",
     "breaks": "List the cages that broke.",
+    "plot": "Draw the figures of a result file.",
+    "report": "Write a result file as one page with figures.",
     "export": "Write a result file as CSV, extended XYZ or NPZ.",
     "lattice": "Show the cages of ideal lattices.",
 }

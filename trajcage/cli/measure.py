@@ -3,7 +3,6 @@
 import shlex
 import sys
 import time
-from collections.abc import Callable
 from contextlib import ExitStack
 from pathlib import Path
 from typing import Any
@@ -11,6 +10,7 @@ from typing import Any
 import click
 
 from trajcage.cli.common import input_options
+from trajcage.cli.progress import progress_bar
 
 __all__ = ["command"]
 
@@ -97,7 +97,16 @@ _SKIPPABLE = ("cells", "order", "rattlers", "regions", "time")
     show_default=True,
     help="Processes; 0 for one on every core. Results do not depend on it.",
 )
+@click.option(
+    "--dask",
+    metavar="ADDRESS",
+    help="Measure on an existing dask cluster: the address of its scheduler, or its "
+    "scheduler file. Its workers must see the input under the same paths.",
+)
 @click.option("--store-positions", is_flag=True, help="Store the positions too.")
+@click.option(
+    "--store-walls", is_flag=True, help="Store by whom each particle is caged."
+)
 @click.option("--resume", is_flag=True, help="Continue the result file if it exists.")
 @click.option("--overwrite", is_flag=True, help="Replace the result file if it exists.")
 @click.option("-q", "--quiet", is_flag=True, help="Print errors only.")
@@ -139,7 +148,7 @@ def command(
             output=output,
             time_analysis=time_analysis,
             contacts=ContactOptions(tolerance=contact_tolerance),
-            progress=None if quiet else _progress(stack),
+            progress=None if quiet else progress_bar(stack),
             notify=None if quiet else _note,
             command_line=shlex.join(["trajcage", *sys.argv[1:]]),
             **given,
@@ -156,23 +165,3 @@ def command(
 
 def _note(text: str) -> None:
     click.echo(f"Note: {text}", err=True)
-
-
-def _progress(stack: ExitStack) -> Callable[[int, int], None] | None:
-    """Return a progress bar on standard error, None unless that is a terminal."""
-    if not sys.stderr.isatty():
-        return None
-    bars: list[Any] = []
-
-    def advance(done: int, total: int) -> None:
-        if not bars:
-            bars.append(
-                stack.enter_context(
-                    click.progressbar(
-                        length=total, label="frames", show_pos=True, file=sys.stderr
-                    )
-                )
-            )
-        bars[0].update(done - bars[0].pos)
-
-    return advance

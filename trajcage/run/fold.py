@@ -111,6 +111,8 @@ class RunFold:
         if has_regions:
             values |= regions
             values["region_id"], rows["regions"] = self._follow(measured, values)
+        if self._settings.store_walls:
+            rows["walls"] = _wall_rows(measured)
         self._distribution.update(measured.cages)
         self._statuses += np.bincount(
             measured.cages.status, minlength=len(self._statuses)
@@ -286,6 +288,20 @@ class RunFold:
             "trail": self.trail,
             "time": self._time,
         }
+
+
+def _wall_rows(measured: MeasuredFrame) -> dict[str, NDArray[np.generic]]:
+    walls = measured.cages.walls
+    assert walls is not None
+    n = measured.frame.n_particles
+    return {
+        "frame": np.full(n, measured.frame.index),
+        "particle": np.arange(n),
+        "neighbors": walls.neighbors,
+        "neighbors_offsets": walls.offsets,
+        "areas": walls.areas,
+        "areas_offsets": walls.offsets,
+    }
 
 
 def _scale(field: Field, mean_diameter: float) -> float:

@@ -1,7 +1,7 @@
 """All that can be measured on one frame alone: a pure function for any process."""
 
 from collections.abc import Generator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -67,7 +67,7 @@ def measure_frame(frame: Frame, settings: RunSettings) -> MeasuredFrame:
     tolerance = settings.cages.overlap_tolerance
     if tolerance is None:
         tolerance = default_overlap_tolerance(frame)
-    table, overlaps = frame_cages(frame, settings.cages)
+    table, overlaps = frame_cages(frame, settings.cages, windows=settings.store_walls)
     values: dict[str, NDArray[np.generic] | float | int] = {**stored_values(table)}
     values |= measure_thermodynamics(frame, table, overlaps, tolerance)
     if settings.varying_radii:
@@ -84,7 +84,8 @@ def measure_frame(frame: Frame, settings: RunSettings) -> MeasuredFrame:
             bonds = _bare(order_neighbors(frame, cells, settings.order)[0])
     if settings.has("rattlers"):
         values |= measure_contacts(frame, settings.contacts)
-    return MeasuredFrame(frame, table, values, bonds)
+    # the windows take more room than all the rest, and nothing stores them
+    return MeasuredFrame(frame, replace(table, windows=None), values, bonds)
 
 
 def _bare(neighbors: NeighborList) -> NeighborList:

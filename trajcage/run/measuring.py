@@ -58,6 +58,7 @@ def measure(
     resume: bool = False,
     overwrite: bool = False,
     store_positions: bool = False,
+    store_walls: bool = False,
     progress: Progress | None = None,
     notify: Callable[[str], None] | None = None,
     command_line: str | None = None,
@@ -109,6 +110,8 @@ def measure(
         Whether to replace the file, if there is one.
     store_positions : bool
         Whether to store the positions too.
+    store_walls : bool
+        Whether to store by whom each particle is caged, with the wall areas.
     progress : callable, optional
         Called with the number of frames done and of all frames.
     notify : callable, optional
@@ -152,6 +155,7 @@ def measure(
     settings = RunSettings(
         skip=skip,
         store_positions=store_positions,
+        store_walls=store_walls,
         cages=CageOptions(reach, overlap_tolerance, strict),
         order=order or OrderOptions(),
         contacts=contacts or ContactOptions(),

@@ -56,6 +56,8 @@ class RunSettings:
         Whether radii are stored for each frame.
     store_positions : bool
         Whether positions are stored.
+    store_walls : bool
+        Whether it is stored by whom each particle is caged.
     cages, order, contacts, regions, time
         Options of the parts.
 
@@ -68,6 +70,7 @@ class RunSettings:
     skip: Collection[str] = ()
     varying_radii: bool = False
     store_positions: bool = False
+    store_walls: bool = False
     cages: CageOptions = field(default_factory=CageOptions)
     order: OrderOptions = field(default_factory=OrderOptions)
     contacts: ContactOptions = field(default_factory=ContactOptions)
@@ -116,6 +119,8 @@ class RunSettings:
             declared += fold.growing_tables(dimensions)
         if self.has("regions"):
             declared.append(_region_table(dimensions))
+        if self.store_walls:
+            declared.append(_wall_table(dimensions))
         return tuple(declared)
 
     def arrays(self, dimensions: int, mean_diameter: float) -> tuple[ArraySpec, ...]:
@@ -160,4 +165,24 @@ def _region_table(dimensions: int) -> TableSpec:
         "/trajcage/regions",
         columns,
         description="Connected regions of crystal, glass and fluid, largest first",
+    )
+
+
+def _wall_table(dimensions: int) -> TableSpec:
+    columns = (
+        Field("frame", "Source frame", "1", "i8", False),
+        Field("particle", "Index of the particle in the cage", "1", "i8", False),
+    )
+    ragged = (
+        Field("neighbors", "Indices of the bounding neighbors", "1", "i4", False),
+        Field(
+            "areas",
+            "Wall area (length in 2D) on the exclusion sphere of each",
+            f"length+{dimensions - 1}",
+            "f8",
+            False,
+        ),
+    )
+    return TableSpec(
+        "/trajcage/walls", columns, ragged, "By whom each particle is caged"
     )

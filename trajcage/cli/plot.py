@@ -1,0 +1,66 @@
+"""The command that draws figures."""
+
+from pathlib import Path
+from typing import Any
+
+import click
+
+from trajcage.cli.common import result_argument
+
+__all__ = ["command"]
+
+
+@click.command(name="plot")
+@result_argument
+@click.option(
+    "-o",
+    "--output",
+    type=click.Path(path_type=Path, file_okay=False),
+    required=True,
+    metavar="DIR",
+    help="Directory to write to; made if it is not there.",
+)
+@click.option(
+    "--only",
+    "names",
+    multiple=True,
+    metavar="NAME",
+    help="Draw only this figure; may be repeated.",
+)
+@click.option(
+    "--format",
+    "form",
+    type=click.Choice(["png", "svg", "pdf"]),
+    default="png",
+    show_default=True,
+    help="File format.",
+)
+@click.option("--overwrite", is_flag=True, help="Replace figures that are there.")
+def command(
+    *, result: Any, output: Path, names: tuple[str, ...], form: str, overwrite: bool
+) -> None:
+    r"""Draw the figures of a result file.
+
+    The figures are free-volume, lattices, pressure, windows, slice (of stored
+    positions), regions, survival, correlations and rattlers. One without data is left
+    out, and the reason is told.
+
+    \b
+      trajcage plot cages.h5 -o figures
+      trajcage plot cages.h5 -o figures --only slice --format svg --overwrite
+    """
+    from trajcage.errors import ResultFileError
+    from trajcage.plots import write_figures
+    from trajcage.store import open_result
+
+    with open_result(result) as opened:
+        paths, figures = write_figures(
+            opened, output, names, form=form, overwrite=overwrite
+        )
+    for path in paths.values():
+        click.echo(f"wrote {path}", err=True)
+    left_out = [f"{name}: {reason}" for name, reason in figures.missing.items()]
+    if not paths:
+        raise ResultFileError(f"no figure can be drawn. {'. '.join(left_out)}")
+    for line in left_out:
+        click.echo(f"left out {line}", err=True)

@@ -1,0 +1,38 @@
+"""The command that writes everything to one page."""
+
+from pathlib import Path
+from typing import Any
+
+import click
+
+from trajcage.cli.common import result_argument
+
+__all__ = ["command"]
+
+
+@click.command(name="report")
+@result_argument
+@click.option(
+    "-o",
+    "--output",
+    type=click.Path(path_type=Path, dir_okay=False),
+    required=True,
+    help="HTML file to write.",
+)
+@click.option("--overwrite", is_flag=True, help="Replace the page if it exists.")
+def command(*, result: Any, output: Path, overwrite: bool) -> None:
+    r"""Write a result file as one HTML page: warnings, numbers, figures, options.
+
+    The page holds all it shows and loads nothing; open it in any browser.
+
+    \b
+      trajcage report cages.h5 -o report.html
+    """
+    from trajcage.plots import write_report
+    from trajcage.store import open_result
+
+    with open_result(result) as opened:
+        figures = write_report(opened, output, overwrite=overwrite)
+    click.echo(f"wrote {output} with {len(figures.drawn)} figures", err=True)
+    for name, reason in figures.missing.items():
+        click.echo(f"left out {name}: {reason}", err=True)
