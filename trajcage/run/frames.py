@@ -19,7 +19,7 @@ from trajcage.model import CageTable, Frame, NeighborList
 from trajcage.neighborhood import voronoi
 from trajcage.run.settings import RunSettings
 
-__all__ = ["MeasuredFrame", "MeasuredFrames", "measure_frame"]
+__all__ = ["MeasuredFrame", "MeasuredFrames", "bare", "measure_frame"]
 
 
 @dataclass(frozen=True, eq=False)
@@ -81,15 +81,21 @@ def measure_frame(frame: Frame, settings: RunSettings) -> MeasuredFrame:
         if settings.has("order"):
             values |= measure_order(frame, cells, settings.order)
         if settings.has("regions"):
-            bonds = _bare(order_neighbors(frame, cells, settings.order)[0])
+            bonds = bare(order_neighbors(frame, cells, settings.order)[0])
     if settings.has("rattlers"):
         values |= measure_contacts(frame, settings.contacts)
     # the windows take more room than all the rest, and nothing stores them
     return MeasuredFrame(frame, replace(table, windows=None), values, bonds)
 
 
-def _bare(neighbors: NeighborList) -> NeighborList:
-    """Drop the geometry, which would make up most of what a worker sends home."""
+def bare(neighbors: NeighborList) -> NeighborList:
+    """Drop the geometry, which would make up most of what a worker sends home.
+
+    Parameters
+    ----------
+    neighbors : NeighborList
+        Neighbors with vectors and weights.
+    """
     d = neighbors.vectors.shape[1]
     return NeighborList(
         neighbors.offsets, neighbors.neighbors, np.zeros((0, d)), np.zeros(0)

@@ -131,6 +131,12 @@ def check_same_frames(
     done = frames[: writer.frames_complete]
     if not len(done):
         return
+    if writer.state is None:
+        raise ResultFileError(
+            f"cannot resume {writer.path}: it is salvaged, and the state of the time "
+            f"analysis was lost; trajcage merge {writer.path} -o NEW makes a file from "
+            "its frames that can be resumed"
+        )
     if (len(done), done[-1]) != (writer.frames_complete, writer.last_source_frame):
         raise ResultFileError(
             f"cannot resume {writer.path}: its last frame is frame "

@@ -107,6 +107,11 @@ class Result:
         return self._commit.complete
 
     @property
+    def resumable(self) -> bool:
+        """Whether the state after the last frame is there, which resuming needs."""
+        return self.frames_complete == 0 or self._commit.state_bytes >= 0
+
+    @property
     def steps(self) -> NDArray[np.int64]:
         """Simulation step of each frame, (T,) int64."""
         return np.asarray(self._series("particles/all/box/edges/step"), np.int64)
