@@ -78,6 +78,11 @@ def fields(dimensions: int) -> tuple[Field, ...]:
             "ratio over the particles with a closed cage or a wrapped region; NaN "
             "unless compressibility_status is measured",
         ),
+        scalar(
+            "reduced_pressure",
+            "P sigma^d / (k T) with the mean diameter sigma, from "
+            "compressibility_factor and the number density",
+        ),
         Field(
             "compressibility_status",
             "measured; unresolved: more than 1 in 1000 cages are neither closed nor "
@@ -138,7 +143,7 @@ def measure_thermodynamics(
     d, phi, counts = frame.dimensions, frame.packing_fraction, table.counts
     closed = table.closed
     factor, status = compressibility_factor(frame, table)
-    unit = equal_diameter(frame) ** d
+    unit, sigma = equal_diameter(frame) ** d, frame.mean_diameter
     references = {name: lattice_reference(name, phi) for name in lattice_names(d)}
     with np.errstate(divide="ignore"):  # jammed particles have no free volume
         logarithm = _mean(np.log(table.free_volume[closed]))
@@ -152,6 +157,7 @@ def measure_thermodynamics(
         "bounding_neighbors_mean": _mean(table.bounding_neighbors[closed]),
         "weakest_window_mean": _mean(table.weakest_window[closed]),
         "compressibility_factor": factor,
+        "reduced_pressure": factor * len(table) / frame.box.volume * sigma**d,
         "compressibility_status": int(status),
         "overlaps": overlaps.count,
         "overlap_tolerance": tolerance,

@@ -25,6 +25,7 @@ _SHOWN = (
     "bounding_neighbors_mean",
     "weakest_window_mean",
     "compressibility_factor",
+    "reduced_pressure",
     "cell_volume_shape",
     "crystal_fraction",
     "glass_fraction",

@@ -198,7 +198,8 @@ class RunFold:
                 f"{code.name.lower()} on {n} frames" for code, n in counted if n
             )
             factor = dataclasses.replace(factor, reason=why)
-            estimates["compressibility_factor"] = factor
+            for name in ("compressibility_factor", "reduced_pressure"):
+                estimates[name] = dataclasses.replace(estimates[name], reason=why)
         summary: dict[str, object] = {
             "n_frames": self._n_frames,
             "n_particles": first.n_particles,
