@@ -39,7 +39,7 @@ __all__ = ["command"]
 def command(
     *, result: Any, output: Path, names: tuple[str, ...], form: str, overwrite: bool
 ) -> None:
-    r"""Draw the figures of a result file.
+    """Draw the figures of a result file.
 
     The figures are free-volume, lattices, pressure, windows, slice (of stored
     positions), regions, survival, correlations and rattlers. One without data is left

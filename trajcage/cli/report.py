@@ -21,7 +21,7 @@ __all__ = ["command"]
 )
 @click.option("--overwrite", is_flag=True, help="Replace the page if it exists.")
 def command(*, result: Any, output: Path, overwrite: bool) -> None:
-    r"""Write a result file as one HTML page: warnings, numbers, figures, options.
+    """Write a result file as one HTML page: warnings, numbers, figures, options.
 
     The page holds all it shows and loads nothing; open it in any browser.
 

@@ -1,0 +1,17 @@
+"""Figures and reports of result files; the one door to matplotlib.
+
+What a figure shows was measured before: here it is only read, binned and drawn.
+"""
+
+from trajcage.plots.catalog import FIGURES, Figures, draw_figures
+from trajcage.plots.report import write_report
+from trajcage.plots.saving import FORMATS, write_figures
+
+__all__ = [
+    "FIGURES",
+    "FORMATS",
+    "Figures",
+    "draw_figures",
+    "write_figures",
+    "write_report",
+]
