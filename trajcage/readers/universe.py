@@ -27,7 +27,7 @@ from trajcage.readers.source import (
 )
 from trajcage.readers.text import decimal_spacing
 
-__all__ = ["UniverseSource", "read_topology"]
+__all__ = ["UniverseSource", "read_topology", "stored_spacing", "vectors_of"]
 
 # Formats that store a step or a time of their own with every frame. The rest
 # get a counter from MDAnalysis that is neither.
@@ -61,7 +61,7 @@ class UniverseSource(Source):
             with collect_warnings(self.notes):
                 particles = self._open(path, companion)
             self.n_frames = int(self._reader.n_frames)
-            self._unit = _stored_spacing(path, self.format)
+            self._unit = stored_spacing(path, self.format)
         except InputError:
             raise
         except Exception as error:  # third parties raise what they like
@@ -121,7 +121,7 @@ class UniverseSource(Source):
             positions=np.array(ts.positions, dtype=np.float64),
             ids=self._particles.own_ids(),
             types=self._particles.types.copy(),
-            vectors=_vectors(ts.dimensions),
+            vectors=vectors_of(ts.dimensions),
             step=step,
             time=time,
             radii=None if radii is None else radii.copy(),
@@ -204,8 +204,14 @@ def _particles(universe: Any, path: Path) -> Particles:
     )
 
 
-def _vectors(dimensions: NDArray[np.float32] | None) -> NDArray[np.float64] | None:
-    """Row vectors from MDAnalysis' lengths and angles, in float64."""
+def vectors_of(dimensions: NDArray[np.float32] | None) -> NDArray[np.float64] | None:
+    """Row vectors from MDAnalysis' lengths and angles, in float64.
+
+    Parameters
+    ----------
+    dimensions : (6,) float32 or None
+        Lengths and angles in degrees.
+    """
     if dimensions is None or not np.any(dimensions[:3]):
         return None
     six = np.array(dimensions, dtype=np.float64)
@@ -214,8 +220,16 @@ def _vectors(dimensions: NDArray[np.float32] | None) -> NDArray[np.float64] | No
     return np.diag(six[:3])  # a missing edge: fine in a plane, else an error later
 
 
-def _stored_spacing(path: Path, name: str) -> float:
-    """Spacing that the format itself imposes, 0 if only floats do."""
+def stored_spacing(path: Path, name: str) -> float:
+    """Spacing that the format itself imposes, 0 if only floats do.
+
+    Parameters
+    ----------
+    path : Path
+        The file.
+    name : str
+        Name of its format.
+    """
     if name == "XTC":
         with XTCFile(str(path)) as file:
             frame = file.read()
