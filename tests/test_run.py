@@ -408,7 +408,9 @@ def test_the_output_is_not_replaced_by_accident(tmp_path):
         ResultFileError, match=r"options: cages\.reach was null, now 3\.0;"
     ):
         measure(source, path, reach=3.0, resume=True)
-    with pytest.raises(ResultFileError, match=r"b\.gsd is not the file that it was made from"):
+    with pytest.raises(
+        ResultFileError, match=r"b\.gsd is not the file that it was made from"
+    ):
         measure(other, path, resume=True)
 
 
