@@ -54,7 +54,7 @@ def command(
     step: int | None,
     overwrite: bool,
 ) -> None:
-    r"""Write a result file as CSV, extended XYZ or NPZ.
+    """Write a result file as CSV, extended XYZ or NPZ.
 
     \b
       trajcage export cages.h5 --to csv --observables

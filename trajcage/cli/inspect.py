@@ -23,7 +23,7 @@ __all__ = ["command"]
 )
 @json_option
 def command(*, as_json: bool, **given: Any) -> None:
-    r"""Tell what is understood of an input, and refuse what makes no sense.
+    """Tell what is understood of an input, and refuse what makes no sense.
 
     \b
       trajcage inspect melt.gsd

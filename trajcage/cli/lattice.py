@@ -26,7 +26,7 @@ __all__ = ["command"]
 def command(
     *, names: tuple[str, ...], packing_fractions: tuple[float, ...], as_json: bool
 ) -> None:
-    r"""Show the cage of a particle on ideal lattices, all others held at their sites.
+    """Show the cage of a particle on ideal lattices, all others held at their sites.
 
     NAME is square, triangular, honeycomb, sc, bcc, fcc, hcp or diamond. Without one all
     are shown; without a packing fraction the ones at which the cages change are shown.

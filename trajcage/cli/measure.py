@@ -1,5 +1,6 @@
 """The command that does the main job."""
 
+import math
 import shlex
 import sys
 import time
@@ -17,6 +18,26 @@ __all__ = ["command"]
 _SKIPPABLE = ("cells", "order", "rattlers", "regions", "time")
 
 
+class _Reach(click.ParamType[float]):
+    """A length, or ``box`` for the whole periodic box."""
+
+    name = "length"
+
+    def convert(
+        self,
+        value: Any,
+        param: click.Parameter | None,
+        ctx: click.Context | None,
+    ) -> float:
+        """Return the length, infinite for the whole box."""
+        if value == "box":
+            return math.inf
+        number: float = click.FLOAT.convert(value, param, ctx)
+        if not number > 0.0:
+            self.fail(f"expected a positive length or 'box', got {value}", param, ctx)
+        return number
+
+
 @click.command(name="measure", short_help="Measure a trajectory.")
 @input_options
 @click.option(
@@ -31,10 +52,10 @@ _SKIPPABLE = ("cells", "order", "rattlers", "regions", "time")
 @click.option("--step", type=int, help="Take every so many frames.")
 @click.option(
     "--reach",
-    type=float,
-    metavar="LENGTH",
+    type=_Reach(),
+    metavar="LENGTH|box",
     help="A cage that extends further than this is open. Ten of the largest diameters "
-    "unless given; with inf, regions that wrap around the periodic box are measured.",
+    "unless given; with box, regions that wrap around the periodic box are measured.",
 )
 @click.option(
     "--overlap-tolerance",
@@ -122,7 +143,7 @@ def command(
     output: Path,
     **given: Any,
 ) -> None:
-    r"""Measure every frame of a trajectory and write one result file.
+    """Measure every frame of a trajectory and write one result file.
 
     TOPOLOGY and TRAJECTORY are any files that MDAnalysis reads; a single file can be
     both. The run can be stopped at any time with Ctrl-C and continued with --resume.

@@ -38,7 +38,7 @@ def command(
     overwrite: bool,
     quiet: bool,
 ) -> None:
-    r"""Put parts of one trajectory, measured apart, into one result file.
+    """Put parts of one trajectory, measured apart, into one result file.
 
     The parts follow each other without a gap and were measured with the same options.
     The merged file is the one that a single run over all frames writes. What needs
