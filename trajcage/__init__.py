@@ -8,7 +8,8 @@ if TYPE_CHECKING:
     from trajcage.lattices import lattice
     from trajcage.run import inspect, measure, merge
     from trajcage.run.cage_analysis import CageAnalysis, ClusterBackend
-    from trajcage.store import open_result, salvage
+    from trajcage.store import open_result
+    from trajcage.store.salvage import salvage
 
 __all__ = [
     "CageAnalysis",
