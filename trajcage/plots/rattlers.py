@@ -26,7 +26,7 @@ def rattlers(facts: Facts) -> Drawing | Missing:
     drawing, (axes,) = new_figure(
         "Rattlers and the contact tolerance",
         facts.caption(
-            f"Line: median over {len(known)} frames; band: lowest and highest frame.",
+            f"Line: median of the frames ({len(known)}); band: lowest and highest.",
             f"Plateau on {len(ranges)} of {facts.n_frames} frames"
             + (
                 "."
