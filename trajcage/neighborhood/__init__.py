@@ -9,7 +9,7 @@ recomputed in float64 from the true lattice vectors.
 from trajcage.neighborhood.bond_order import hexatic, steinhardt
 from trajcage.neighborhood.clusters import connected_groups
 from trajcage.neighborhood.pairs import PairRule, check_distinct, neighbor_list
-from trajcage.neighborhood.tessellation import voronoi
+from trajcage.neighborhood.tessellation import radical_voronoi, voronoi
 from trajcage.neighborhood.threads import set_threads
 
 __all__ = [
@@ -18,6 +18,7 @@ __all__ = [
     "connected_groups",
     "hexatic",
     "neighbor_list",
+    "radical_voronoi",
     "set_threads",
     "steinhardt",
     "voronoi",

@@ -6,11 +6,12 @@ import freud
 import numpy as np
 from numpy.typing import NDArray
 
+from trajcage.kernel import radical_cells
 from trajcage.model import Box, Frame, NeighborList
 from trajcage.neighborhood.boxes import freud_box, lower_triangle
 from trajcage.neighborhood.pairs import check_distinct
 
-__all__ = ["voronoi"]
+__all__ = ["radical_voronoi", "voronoi"]
 
 
 def voronoi(frame: Frame) -> tuple[NDArray[np.float64], NeighborList]:
@@ -74,6 +75,53 @@ def voronoi(frame: Frame) -> tuple[NDArray[np.float64], NeighborList]:
         neighbors=j,
         vectors=(positions[j] - positions[i]) + turns @ padded.vectors,
         weights=np.asarray(pairs.weights, dtype=np.float64) * scale ** (d - 1),
+    )
+
+
+def radical_voronoi(frame: Frame) -> tuple[NDArray[np.float64], NeighborList]:
+    """Tessellate space by power distance, |x - x_i|^2 - r_i^2, from each particle.
+
+    Facets lie in the planes of equal power, which pass between unequal spheres that
+    do not overlap, so each sphere is inside its own cell. Equal radii give the
+    Voronoi cells.
+
+    Parameters
+    ----------
+    frame : Frame
+        The configuration.
+
+    Returns
+    -------
+    cell_volumes : (n,) float64, length^d
+        Cell volumes (areas in 2D). NaN for cells that a particle beyond an open edge
+        of the data could still cut, if it is no larger than the largest particle
+        known; 0 for particles hidden inside larger ones.
+    neighbors : NeighborList
+        Neighbors across the facets, weighted by facet area (length in 2D).
+        In a small box a particle can neighbor its own images. Rows of NaN
+        cells are empty.
+
+    Raises
+    ------
+    FrameError
+        If two particles sit on top of each other.
+
+    Notes
+    -----
+    All in float64 by :func:`trajcage.kernel.radical_cells`; freud has no radical
+    cells. Method: B. J. Gellatly & J. L. Finney, J. Non-Cryst. Solids 50, 313 (1982).
+    """
+    check_distinct(frame)
+    box = frame.box
+    cells = radical_cells(
+        box.wrap(frame.positions),
+        box.vectors,
+        box.origin,
+        np.array(box.periodic),
+        frame.radii,
+    )
+    return cells.volumes, NeighborList(
+        cells.offsets, cells.neighbors, cells.vectors, cells.areas
     )
 
 
