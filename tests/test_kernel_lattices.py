@@ -143,7 +143,7 @@ def test_both_sides_of_every_threshold(name):
             if trial > limit.close_packing.value:
                 continue
             positions, vectors, _ = block(name, trial)
-            found = measure(positions, vectors, 0.5, subset=site, reach=3.0)
+            found = measure(positions, vectors, 0.5, subset=site, reach=6.0)
             assert found.status[0] != INVALID
             if trial != mark:
                 expected = OPEN if trial < escape else CLOSED

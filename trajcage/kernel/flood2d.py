@@ -313,6 +313,13 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
                                 break
                             qx, qy, q_power = _solve(s, a, b, c)
                             ball = np.sqrt(max(q_power, 0.0) + largest * largest)
+                            if q_power <= 0.0:
+                                # rounding hid the crossing of an edge that ends
+                                # within a disk
+                                blocked = True
+                                ball = largest
+                                step = crossing if crossing < np.inf else 0.0
+                                qx, qy = px + step * nx, py + step * ny
                             need = np.sqrt(qx * qx + qy * qy) + ball
                 if need <= known:
                     break
@@ -333,6 +340,8 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
             if blocked:
                 if outside(grid, xi, yi, zi, qx, qy, 0.0, largest):
                     return BORDER, n, n_cells, n_corners
+                if qx * qx + qy * qy > reach * reach:
+                    return OPEN, n, n_cells, n_corners
                 s.corner[n_corners, 0] = qx
                 s.corner[n_corners, 1] = qy
                 s.corner[n_corners, 2] = 0.0

@@ -546,8 +546,19 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
                             if other >= 0:
                                 break
                             qx, qy, qz, q_power = _solve(s, a, b, c, d)
-                            far = np.sqrt(qx * qx + qy * qy + qz * qz)
                             ball = np.sqrt(max(q_power, 0.0) + largest * largest)
+                            if q_power <= 0.0:
+                                # rounding hid the crossing of an edge that ends
+                                # within a sphere
+                                blocked = True
+                                ball = largest
+                                step = crossing if crossing < np.inf else 0.0
+                                qx, qy, qz = (
+                                    px + step * nx,
+                                    py + step * ny,
+                                    pz + step * nz,
+                                )
+                            far = np.sqrt(qx * qx + qy * qy + qz * qz)
                 need = far + ball
                 if need <= known:
                     break
@@ -568,6 +579,8 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
             if blocked:
                 if outside(grid, xi, yi, zi, qx, qy, qz, largest):
                     return BORDER, n, n_cells, n_corners
+                if far > reach:
+                    return OPEN, n, n_cells, n_corners
                 s.corner[n_corners, 0] = qx
                 s.corner[n_corners, 1] = qy
                 s.corner[n_corners, 2] = qz

@@ -180,7 +180,7 @@ def integrate_wall(grid, s, n, n_cells, n_corners, torus):
                 # a disk without any arc: an island, or hidden
                 x, y, r = s.near[X, a], s.near[Y, a], s.near[REACH, a]
                 touch(s, into, 0.0, 0.0, 0.0)
-                if not covered(s, n, x, y, 0.0, r * r, a, a):
+                if not covered(s, n, x, y, 0.0, 0.0, 0.0, 0.0, r, a, a):
                     s.patch[into, TURN] = 2.0 * np.pi
     area = 0.0
     length = 0.0

@@ -306,12 +306,22 @@ def _ring_is_new(s, t, i, j, k, w, walked, n_cells):
 
 
 @helper
-def covered(s, n, px, py, pz, depth, a, b):
-    """Tell whether any candidate but a and b has a power below -depth at p."""
+def covered(s, n, px, py, pz, ex, ey, ez, rho, a, b):
+    """Tell whether a circle of radius rho about p, or a sphere, lies within others.
+
+    The circle is that of candidates a and b about the axis e; with e = 0 the
+    sphere of a is asked for. A circle that is free stays clear of the radical
+    plane to any candidate c, so that power_c(p) + rho^2 > 2 rho |w|, where w
+    leads to c without its part along the axis. One that is not has some
+    power_c(p) + rho^2 <= 0. The bound lies in the middle, out of rounding's way.
+    """
     for k in range(n):
         dx, dy, dz = s.near[X, k] - px, s.near[Y, k] - py, s.near[Z, k] - pz
         r = s.near[REACH, k]
-        if dx * dx + dy * dy + dz * dz - r * r < -depth and k != a and k != b:
+        along = dx * ex + dy * ey + dz * ez
+        square = dx * dx + dy * dy + dz * dz
+        aside = np.sqrt(max(square - along * along, 0.0))
+        if square - r * r + rho * rho < rho * aside and k != a and k != b:
             return True
     return False
 
@@ -344,7 +354,9 @@ def _circles(grid, s, n, n_cells, torus):
                 mx = s.near[X, a] + height * ex
                 my = s.near[Y, a] + height * ey
                 mz = s.near[Z, a] + height * ez
-                seen = rho2 > 0.0 and not covered(s, n, mx, my, mz, rho2, a, b)
+                seen = rho2 > 0.0 and not covered(
+                    s, n, mx, my, mz, ex, ey, ez, np.sqrt(rho2), a, b
+                )
                 into_a, into_b = a, b
                 if torus is not None:
                     into_a = np.uint32(home_of(torus, grid, s, a))
@@ -383,7 +395,7 @@ def _islands(grid, s, n, n_cells, torus):
                 continue
             x, y, z, r = s.near[X, a], s.near[Y, a], s.near[Z, a], s.near[REACH, a]
             touch(s, into, x, y, z)
-            if covered(s, n, x, y, z, r * r, a, a):
+            if covered(s, n, x, y, z, 0.0, 0.0, 0.0, r, a, a):
                 # nothing of this sphere is seen
                 s.patch[into, ARCS] = -1.0
 
