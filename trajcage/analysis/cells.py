@@ -1,4 +1,4 @@
-"""Voronoi cells: local packing fraction, and the law of the cell volumes."""
+"""Voronoi or radical cells: local packing fraction, law of the cell volumes."""
 
 import numpy as np
 from numpy.typing import NDArray
@@ -14,13 +14,13 @@ def fields(dimensions: int) -> tuple[Field, ...]:
     return (
         Field(
             "cell_volume",
-            "Volume (area in 2D) of the Voronoi cell of the center; NaN where "
-            "particles beyond an open edge could cut it",
+            "Volume (area in 2D) of the Voronoi cell of the center, for unequal radii "
+            "of the radical cell; NaN where particles beyond an open edge could cut it",
             f"length+{dimensions}",
         ),
         Field(
             "local_packing_fraction",
-            "Volume (area in 2D) of the particle over that of its Voronoi cell",
+            "Volume (area in 2D) of the particle over that of its cell",
         ),
         Field(
             "cell_volume_shape",
@@ -48,7 +48,7 @@ def measure_cells(
     frame : Frame
         The configuration.
     volumes : (n,) float64, length^d
-        Cell volumes of :func:`trajcage.neighborhood.voronoi`.
+        Cell volumes of :func:`trajcage.neighborhood.tessellate`.
 
     Returns
     -------
@@ -71,7 +71,9 @@ def measure_cells(
             shape = (mean - smallest) ** 2 / variance
     return {
         "cell_volume": volumes,
-        "local_packing_fraction": body / volumes,
+        "local_packing_fraction": np.divide(
+            body, volumes, out=np.full(len(body), np.nan), where=volumes > 0.0
+        ),
         "cell_volume_shape": shape,
         "cells_unknown": len(volumes) - len(known),
     }

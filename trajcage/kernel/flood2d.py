@@ -181,7 +181,8 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
     near = s.near
     s.clock[0] += 1
     known = min(known, halo)
-    code, n = collect(grid, s, i, xi, yi, zi, ri, 0, -1.0, known, tolerance, shift)
+    none = np.int64(0)  # a literal would compile the helpers once more
+    code, n = collect(grid, s, i, xi, yi, zi, ri, none, -1.0, known, tolerance, shift)
     if code != CLOSED:
         return code, n, 0, 0
     while True:
@@ -239,7 +240,7 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
         t = s.stack[height]
         v0, v1, v2 = s.cell[t, 0], s.cell[t, 1], s.cell[t, 2]
         px, py, power = s.vertex[t, 0], s.vertex[t, 1], s.vertex[t, 3]
-        _gaps(s, 0, n, t)
+        _gaps(s, none, n, t)
         for f in range(3):
             if s.across[t, f] != -1:
                 continue

@@ -373,7 +373,8 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
     reach, largest, tolerance, halo = limits
     s.clock[0] += 1
     known = min(known, halo)
-    code, n = collect(grid, s, i, xi, yi, zi, ri, 0, -1.0, known, tolerance, shift)
+    none = np.int64(0)  # a literal would compile the helpers once more
+    code, n = collect(grid, s, i, xi, yi, zi, ri, none, -1.0, known, tolerance, shift)
     if code != CLOSED:
         return code, n, 0, 0
     while True:
@@ -442,7 +443,7 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
         v0, v1, v2, v3 = s.cell[t, 0], s.cell[t, 1], s.cell[t, 2], s.cell[t, 3]
         px, py, pz = s.vertex[t, 0], s.vertex[t, 1], s.vertex[t, 2]
         power = s.vertex[t, 3]
-        _gaps(s, 0, n, t)
+        _gaps(s, none, n, t)
         x0, y0, z0 = s.near[X, v0], s.near[Y, v0], s.near[Z, v0]
         x1, y1, z1 = s.near[X, v1] - x0, s.near[Y, v1] - y0, s.near[Z, v1] - z0
         x2, y2, z2 = s.near[X, v2] - x0, s.near[Y, v2] - y0, s.near[Z, v2] - z0

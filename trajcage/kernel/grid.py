@@ -69,7 +69,8 @@ def build_grid(
     heights = 1.0 / np.linalg.norm(inverse, axis=0)
     fractions = (positions - origin) @ inverse
     turns = np.where(periodic, np.floor(fractions), 0.0)
-    home = np.where(turns != 0.0, positions - turns @ vectors, positions)
+    moved = np.any(turns != 0.0, axis=1, keepdims=True)
+    home = np.where(moved, positions - turns @ vectors, positions)
     fractions = fractions - turns
     width = np.where(periodic, halo / heights, 0.0)
     low = np.where(periodic, -width, np.minimum(fractions.min(axis=0), 0.0))

@@ -9,7 +9,7 @@ recomputed in float64 from the true lattice vectors.
 from trajcage.neighborhood.bond_order import hexatic, steinhardt
 from trajcage.neighborhood.clusters import connected_groups
 from trajcage.neighborhood.pairs import PairRule, check_distinct, neighbor_list
-from trajcage.neighborhood.tessellation import radical_voronoi, voronoi
+from trajcage.neighborhood.tessellation import radical_voronoi, tessellate, voronoi
 from trajcage.neighborhood.threads import set_threads
 
 __all__ = [
@@ -21,5 +21,6 @@ __all__ = [
     "radical_voronoi",
     "set_threads",
     "steinhardt",
+    "tessellate",
     "voronoi",
 ]

@@ -11,7 +11,16 @@ from trajcage.model import Box, Frame, NeighborList
 from trajcage.neighborhood.boxes import freud_box, lower_triangle
 from trajcage.neighborhood.pairs import check_distinct
 
-__all__ = ["radical_voronoi", "voronoi"]
+__all__ = ["radical_voronoi", "tessellate", "voronoi"]
+
+
+def tessellate(frame: Frame) -> tuple[NDArray[np.float64], NeighborList]:
+    """Divide space among the particles: Voronoi for equal radii, radical for others.
+
+    Parameters, results and errors are those of :func:`voronoi` and
+    :func:`radical_voronoi`.
+    """
+    return voronoi(frame) if frame.equal_radii else radical_voronoi(frame)
 
 
 def voronoi(frame: Frame) -> tuple[NDArray[np.float64], NeighborList]:

@@ -16,7 +16,7 @@ from trajcage.analysis.contacts import measure_contacts
 from trajcage.analysis.order import measure_order, order_neighbors
 from trajcage.analysis.thermodynamics import measure_thermodynamics
 from trajcage.model import CageTable, Frame, NeighborList
-from trajcage.neighborhood import voronoi
+from trajcage.neighborhood import tessellate
 from trajcage.run.settings import RunSettings
 
 __all__ = ["MeasuredFrame", "MeasuredFrames", "bare", "measure_frame"]
@@ -76,7 +76,7 @@ def measure_frame(frame: Frame, settings: RunSettings) -> MeasuredFrame:
         values["position"] = frame.positions
     bonds = None
     if settings.has("cells"):
-        cells = voronoi(frame)
+        cells = tessellate(frame)
         values |= measure_cells(frame, cells[0])
         if settings.has("order"):
             values |= measure_order(frame, cells, settings.order)

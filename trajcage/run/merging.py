@@ -25,7 +25,7 @@ from trajcage.analysis.regions import RegionOptions
 from trajcage.analysis.time_options import TimeOptions
 from trajcage.errors import InputError, ResultFileError, UsageError
 from trajcage.model import CageTable, CageWalls, Frame
-from trajcage.neighborhood import voronoi
+from trajcage.neighborhood import tessellate
 from trajcage.readers import InputOptions, Trajectory, open_trajectory
 from trajcage.run.fold import RunFold
 from trajcage.run.frames import MeasuredFrame, MeasuredFrames, bare
@@ -298,7 +298,7 @@ def _stored_frames(
             )
             bonds = None
             if settings.has("regions"):
-                cells = voronoi(frame)
+                cells = tessellate(frame)
                 bonds = bare(order_neighbors(frame, cells, settings.order)[0])
             yield MeasuredFrame(frame, cages, values, bonds)
 
