@@ -25,6 +25,7 @@ _COMMANDS = {
     "breaks": "List the cages that broke.",
     "plot": "Draw the figures of a result file.",
     "report": "Write a result file as one page with figures.",
+    "cage": "Draw the cage of one particle.",
     "export": "Write a result file as CSV, extended XYZ or NPZ.",
     "lattice": "Show the cages of ideal lattices.",
 }

@@ -3,6 +3,7 @@
 What a figure shows was measured before: here it is only read, binned and drawn.
 """
 
+from trajcage.plots.cage_files import write_cage
 from trajcage.plots.catalog import FIGURES, Figures, draw_figures
 from trajcage.plots.report import write_report
 from trajcage.plots.saving import FORMATS, write_figures
@@ -12,6 +13,7 @@ __all__ = [
     "FORMATS",
     "Figures",
     "draw_figures",
+    "write_cage",
     "write_figures",
     "write_report",
 ]

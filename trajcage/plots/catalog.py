@@ -11,7 +11,7 @@ from trajcage.plots.facts import Facts
 from trajcage.plots.pressure import lattices, pressure
 from trajcage.plots.rattlers import rattlers
 from trajcage.plots.slices import slices
-from trajcage.plots.style import Drawing, Missing, styled
+from trajcage.plots.style import Drawing, Missing, settle, styled
 from trajcage.store import Result
 
 __all__ = ["FIGURES", "Figures", "draw_figures"]
@@ -80,5 +80,6 @@ def draw_figures(result: Result, names: Iterable[str] = ()) -> Figures:
             if isinstance(made, Missing):
                 missing[name] = made.reason
             else:
+                settle(made.figure)
                 drawn[name] = made
     return Figures(drawn, missing)

@@ -1,4 +1,4 @@
-"""Pieces of a self-contained HTML page: no script, no request, all text escaped."""
+"""Pieces of a self-contained HTML page: no request, all text escaped."""
 
 import base64
 import html
@@ -36,17 +36,19 @@ _POLICY = "default-src 'none'; img-src data:; style-src 'unsafe-inline'"
 _TYPES = {"svg": "image/svg+xml", "png": "image/png"}
 
 
-def page(title: str, lead: str, sections: Iterable[str]) -> str:
-    """Put sections together to a page."""
+def page(title: str, lead: str, sections: Iterable[str], *, script: str = "") -> str:
+    """Put sections together to a page, without a script unless given."""
     name = html.escape(title)
+    policy = _POLICY + ("; script-src 'unsafe-inline'" if script else "")
+    code = f"<script>\n{script}</script>\n" if script else ""
     return (
         '<!DOCTYPE html>\n<html lang="en">\n<head>\n<meta charset="utf-8">\n'
-        f'<meta http-equiv="Content-Security-Policy" content="{_POLICY}">\n'
+        f'<meta http-equiv="Content-Security-Policy" content="{policy}">\n'
         '<meta name="viewport" content="width=device-width, initial-scale=1">\n'
         f"<title>{name}</title>\n<style>{_STYLE}</style>\n</head>\n<body>\n"
         f'<h1>{name}</h1>\n<p class="lead">{html.escape(lead)}</p>\n'
         + "\n".join(sections)
-        + "\n</body>\n</html>\n"
+        + f"\n{code}</body>\n</html>\n"
     )
 
 
