@@ -172,6 +172,13 @@ def walk_up(cloud, points, start=None):
 def reference_cage(cloud):
     """Find the cage of the particle at the origin from a regular triangulation."""
     d = cloud.centers.shape[1]
+    nothing = np.zeros(0, int)
+    unknown = ReferenceCage(
+        False, cloud, nothing, nothing, np.zeros((0, d)), np.zeros((0, d), int),
+        np.zeros((0, d + 1), int),
+    )  # fmt: skip
+    if len(cloud.centers) < d + 2:
+        return unknown
     lifted = np.einsum("md,md->m", cloud.centers, cloud.centers) - cloud.reaches**2
     hull = ConvexHull(np.column_stack([cloud.centers, lifted]))
     lower = hull.equations[:, d] < 0
@@ -179,6 +186,9 @@ def reference_cage(cloud):
     first = simplices[:, 0]
     edges = cloud.centers[simplices[:, 1:]] - cloud.centers[first][:, None]
     steps = lifted[simplices[:, 1:]] - lifted[first][:, None]
+    # flat ones at the end of the cloud have no vertex
+    size = np.prod(np.linalg.norm(edges, axis=2), axis=1)
+    lower &= np.abs(np.linalg.det(edges)) > 1e-11 * size
     vertices = np.full((len(simplices), d), np.nan)
     vertices[lower] = np.linalg.solve(edges[lower], steps[lower][..., None] / 2)[..., 0]
     powers = (
@@ -204,11 +214,6 @@ def reference_cage(cloud):
     label = connected_components(links, directed=False)[1]
     end = walk_up(cloud, np.zeros((1, d)))[0]
     rows = np.nonzero(lower & np.all(np.sort(simplices, axis=1) == end, axis=1))[0]
-    nothing = np.zeros(0, int)
-    unknown = ReferenceCage(
-        False, cloud, nothing, nothing, np.zeros((0, d)), np.zeros((0, d), int),
-        np.zeros((0, d + 1), int),
-    )  # fmt: skip
     if len(rows) == 0:
         return unknown
     mine = lower & (label == label[rows[0]])
