@@ -20,5 +20,7 @@ show summary demo-output/fluid.h5
 show measure sample-data/batch9-glass.lammpstrj -o demo-output/glass.h5 --overwrite
 show breaks demo-output/glass.h5 --limit 5
 show lattice fcc --packing-fraction 0.58
+show plot demo-output/glass.h5 -o demo-output/glass-figures --overwrite
+show report demo-output/fluid.h5 -o demo-output/fluid.html --overwrite
 
-printf '\nThe results are in demo-output/fluid.h5 and demo-output/glass.h5.\n'
+printf '\nThe results are in demo-output: fluid.h5, glass.h5, glass-figures, fluid.html.\n'
