@@ -8,7 +8,7 @@ from numpy.typing import NDArray
 
 from trajcage.errors import InputError
 from trajcage.readers.options import InputOptions
-from trajcage.readers.source import RawFrame, Source, float_spacing
+from trajcage.readers.source import RawFrame, Source, collect_warnings, float_spacing
 from trajcage.readers.trajectory import Trajectory
 from trajcage.readers.universe import stored_spacing, vectors_of
 
@@ -22,10 +22,13 @@ class _AtomsSource(Source):
     ----------
     atoms : MDAnalysis.AtomGroup
         The particles.
+    needs_box : bool
+        Whether its box is used.
     """
 
-    def __init__(self, atoms: Any) -> None:
+    def __init__(self, atoms: Any, *, needs_box: bool) -> None:
         self._atoms = atoms
+        self._needs_box = needs_box
         trajectory = atoms.universe.trajectory
         self.files = (Path(str(trajectory.filename)),)
         name = trajectory.format
@@ -53,10 +56,12 @@ class _AtomsSource(Source):
     def read(self, index: int) -> RawFrame:
         """Take the frame that the universe is at, or move it there."""
         trajectory = self._atoms.universe.trajectory
-        ts = trajectory.ts if trajectory.ts.frame == index else trajectory[index]
+        with collect_warnings(self.notes):
+            ts = trajectory.ts if trajectory.ts.frame == index else trajectory[index]
         dimensions = ts.dimensions
         if (
-            self.format == "GSD"
+            self._needs_box
+            and self.format == "GSD"
             and dimensions is not None
             and not np.all(dimensions[3:] == 90.0)
         ):
@@ -64,14 +69,14 @@ class _AtomsSource(Source):
                 "MDAnalysis reads tilted boxes of GSD files wrongly; use "
                 "trajcage.measure, which reads them itself, or give box="
             )
-        step = ts.data.get("step")
+        step, time = ts.data.get("step"), ts.data.get("time")
         return RawFrame(
             positions=np.array(self._atoms.positions, dtype=np.float64),
             ids=np.asarray(self._atoms.ix, dtype=np.int64),
             types=self._types.copy(),
             vectors=vectors_of(dimensions),
             step=index if step is None else int(step),
-            time=float(ts.time),
+            time=None if time is None else float(time),
             radii=None if self._radii is None else self._radii.copy(),
         )
 
@@ -103,4 +108,4 @@ def open_atoms(atoms: Any, options: InputOptions) -> Trajectory:
     InputError
         If diameters or box are unknown, or the first frame cannot be used.
     """
-    return Trajectory(options, _AtomsSource(atoms))
+    return Trajectory(options, _AtomsSource(atoms, needs_box=options.box is None))

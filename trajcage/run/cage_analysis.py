@@ -1,6 +1,7 @@
 """The same measurement as an analysis of MDAnalysis, on any of its backends."""
 
 import multiprocessing
+import pickle
 from collections.abc import Callable, Collection, Sequence
 from typing import Any
 
@@ -188,9 +189,17 @@ class ClusterBackend(BackendBase):  # type: ignore[misc]  # as above
         computations : list
             The arguments.
         """
-        futures = self._client.map(func, list(computations), pure=False)
-        found: list[Any] = self._client.gather(futures)
+        # Packed here, so that threads of one worker do not share a universe.
+        packed = [pickle.dumps((func, argument)) for argument in computations]
+        found: list[Any] = self._client.gather(
+            self._client.map(_call, packed, pure=False)
+        )
         return found
+
+
+def _call(packed: bytes) -> Any:
+    func, argument = pickle.loads(packed)
+    return func(argument)
 
 
 def _joined(parts: Sequence[dict[str, Any]]) -> dict[str, Any]:

@@ -126,6 +126,8 @@ class _Pool(Crew):
             f"{block[-1]} are measured again one by one, then the run goes on"
         )
         found = self._one_by_one(block)
+        if found[1] is not None:
+            return found  # which ends the run
         self._executor = _executor(self._n_workers)
         for _ in range(len(self._waiting)):
             other, future = self._waiting.popleft()
