@@ -94,7 +94,7 @@ def test_shells_under_rotation_order_and_noise(name):
     exact = in_large_box(points, reach / 2)
     assert exact["status"] == CLOSED
     assert exact["bounding"] == len(points) - 1
-    np.testing.assert_allclose(np.ptp(exact["wall_sum"] / exact["surface"]), 0, atol=1)
+    assert exact["wall_sum"] == pytest.approx(reach * exact["surface"], rel=1e-12)
     for noise in (0.0, 1e-14, 1e-12, 1e-10, 1e-8, 1e-6, 1e-4):
         for _ in range(5):
             turn = np.eye(d)

@@ -173,7 +173,7 @@ def test_where_two_closed_forms_meet(name, ratio, volume):
     for step in (-1e-9, 1e-9):
         positions, vectors = lattice_sites(name, 7, 1.0)
         found = measure(positions, vectors, ratio / 2 * (1 + step))
-        np.testing.assert_allclose(found.free_volume, volume, rtol=1e-3)
+        np.testing.assert_allclose(found.free_volume, volume, rtol=1e-7)
 
 
 def test_eight_disks_about_a_square_site():
