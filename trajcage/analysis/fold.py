@@ -34,6 +34,13 @@ FIELDS = (
         per_particle=False,
     ),
     Field(
+        "mobility_known",
+        "1 if the record before this frame spans the mobility window; before that, "
+        "breaks have been missed and too many particles count as unbroken",
+        dtype="u1",
+        per_particle=False,
+    ),
+    Field(
         "cage_breaks",
         "Cages found broken on this frame",
         dtype="i8",
@@ -130,6 +137,7 @@ class TimeFold:
         self._ids = np.zeros(n, dtype=np.int64)
         self._count = 0
         self._last = np.zeros(3)  # index, step, time of the latest frame
+        self._first_time = np.nan
         self._tick = np.nan  # spacing of the first two frames
         self._uneven = np.zeros(0)  # index and spacing of the first uneven frame
         self._n_jumps = 0
@@ -180,6 +188,7 @@ class TimeFold:
         self._count += 1
         scalars = {
             "broken_fraction": float(np.mean(broken)),
+            "mobility_known": int(self._mobility_known(frame.time)),
             "cage_breaks": len(events["particle"]),
             "persisting_fraction": self._cages.persisting_fraction,
             "without_neighbors": self._cages.n_without_neighbors,
@@ -191,6 +200,12 @@ class TimeFold:
             broken,
             region,
         )
+
+    def _mobility_known(self, time: float) -> bool:
+        """Whether all breaks within the mobility window could be seen."""
+        window = self._options.mobility_window
+        needed = 10.0 * self._tick if window is None else window
+        return self._count > 1 and time - self._first_time >= needed * (1.0 - 1e-9)
 
     def _check(self, frame: Frame) -> None:
         n, d = frame.positions.shape
@@ -224,6 +239,7 @@ class TimeFold:
     def _advance_clock(self, frame: Frame) -> None:
         if self._count == 0:
             self._ids = frame.ids.copy()
+            self._first_time = frame.time
         else:
             spacing = frame.time - float(self._last[2])
             if self._count == 1:
@@ -279,6 +295,7 @@ class TimeFold:
             "ids": self._ids.copy(),
             "count": np.array(self._count),
             "last": self._last.copy(),
+            "first_time": np.array(self._first_time),
             "tick": np.array(self._tick),
             "uneven": self._uneven.copy(),
             "n_jumps": np.array(self._n_jumps),
@@ -305,6 +322,7 @@ class TimeFold:
         self._ids = np.array(state["ids"], dtype=np.int64)
         self._count = int(state["count"])
         self._last = np.array(state["last"], dtype=np.float64)
+        self._first_time = float(state["first_time"])
         self._tick = float(state["tick"])
         self._uneven = np.array(state["uneven"], dtype=np.float64)
         self._n_jumps = int(state["n_jumps"])

@@ -120,7 +120,9 @@ def _reason(name: str, summary: dict[str, Any]) -> str:
         )
     if name == "persisting_fraction":
         return "no particle has a bonded neighbor on the first frame"
-    if name == "compressibility_factor":
+    if name in {"broken_fraction", "fluid_fraction", "glass_fraction"}:
+        return "the record is shorter than the mobility window (--mobility-window)"
+    if name in {"compressibility_factor", "reduced_pressure"}:
         unresolved = summary["compressibility_status"]["unresolved"]
         lattice = summary["compressibility_status"]["ideal_lattice"]
         parts = []

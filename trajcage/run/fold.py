@@ -31,6 +31,11 @@ __all__ = ["RunFold"]
 _Rows = dict[str, dict[str, NDArray[np.generic]]]
 
 
+#: Shares that are biased while the record is shorter than the mobility window; those
+#: frames are left out of their means and counted as missing.
+_NEED_MOBILITY = {"broken_fraction", "fluid_fraction", "glass_fraction"}
+
+
 class RunFold:
     """Consume measured frames in order; yield records, curves and the summary.
 
@@ -118,9 +123,10 @@ class RunFold:
             measured.cages.status, minlength=len(self._statuses)
         )
         self._factors[int(values["compressibility_status"])] += 1
+        early = not values.get("mobility_known", True)
         for row, name in enumerate(self._names):
             value = np.array([values[name]], dtype=np.float64)
-            if np.isfinite(value[0]):
+            if np.isfinite(value[0]) and not (early and name in _NEED_MOBILITY):
                 self._series.add(row, value)
             else:
                 self._missing[row] += 1
