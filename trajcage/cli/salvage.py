@@ -25,5 +25,8 @@ def command(*, result: Path, target: Path) -> None:
         resumable = copy.resumable
     told = "continue it with trajcage measure --resume"
     if not resumable:
-        told = "it cannot be resumed, since the state of the time analysis is lost"
+        told = (
+            f"the state of the time analysis is lost: trajcage merge {target} -o NEW "
+            "makes a file from these frames that can be resumed"
+        )
     click.echo(f"{frames} complete frames in {target}; {told}", err=True)

@@ -22,6 +22,7 @@ from trajcage.store.lock import is_being_written
 from trajcage.store.superblock import Superblock, is_truncated, read_superblock
 
 __all__ = [
+    "abandon",
     "open_for_reading",
     "open_for_writing",
     "open_mended",
@@ -131,6 +132,29 @@ def open_for_writing(path: Path) -> Any:
                     f"{path} is open in another program; close it there first"
                 ) from error
             time.sleep(0.02)
+
+
+def abandon(file: Any) -> None:
+    """Close a file to which a write has failed, say on a full disk.
+
+    The library insists on writing what is left in its memory, fails again, and crashes
+    when its objects are released later. So these writes go to a file in memory; the
+    result file stays as the last commit left it.
+
+    Parameters
+    ----------
+    file : h5py.File
+        Open for writing.
+    """
+    if hasattr(os, "memfd_create"):  # on Linux
+        handle = file.id.get_vfd_handle()
+        sink = os.memfd_create("abandoned")
+        try:
+            os.ftruncate(sink, os.fstat(handle).st_size)
+            os.dup2(sink, handle, inheritable=False)
+        finally:
+            os.close(sink)
+    file.close()
 
 
 def _check_contents(file: Any, path: Path) -> None:

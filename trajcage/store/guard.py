@@ -1,5 +1,6 @@
 """One clear error instead of the many that the HDF5 library raises."""
 
+import os
 import zlib
 from collections.abc import Iterator
 from contextlib import contextmanager
@@ -38,4 +39,7 @@ def guard(path: Path, task: str) -> Iterator[None]:
         raise
     except _FROM_BELOW as error:
         lines = str(error).strip().splitlines() or [type(error).__name__]
-        raise ResultFileError(f"{path}: {task} failed: {lines[0]}") from error
+        reason = lines[0]
+        if isinstance(error, OSError) and error.errno:  # clearer than HDF5's own words
+            reason = os.strerror(error.errno)
+        raise ResultFileError(f"{path}: {task} failed: {reason}") from error

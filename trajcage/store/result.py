@@ -42,7 +42,7 @@ def open_result(path: str | Path) -> "Result":
     except ResultFileError as error:
         if is_truncated(target):
             raise ResultFileError(
-                f"{error} (the file is truncated; trajcage.store.salvage copies the "
+                f"{error} (the file is truncated; trajcage salvage copies the "
                 "frames that are left, if any)"
             ) from error
         raise

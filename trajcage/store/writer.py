@@ -14,7 +14,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from trajcage.errors import FrameError, ResultFileError, UsageError
 from trajcage.model import Field, FrameRecord
-from trajcage.store.access import open_for_writing, read_commit
+from trajcage.store.access import abandon, open_for_writing, read_commit
 from trajcage.store.framing import pack_arrays, unpack_arrays
 from trajcage.store.guard import guard
 from trajcage.store.layout import Layout, image, position_field
@@ -361,6 +361,8 @@ class ResultWriter:
         for name, new in (rows or {}).items():
             self._tables[name].add(self._tables[name].check(new))
         self._commit_all(state, arrays, summary, finished=True)
+        with guard(self.path, "finishing"):
+            self._trim_arrays()
         self.close()
 
     def close(self) -> None:
@@ -389,7 +391,7 @@ class ResultWriter:
         try:
             if self._failed:  # the error is on its way; a second would hide it
                 with suppress(OSError, RuntimeError):
-                    self._file.close()
+                    abandon(self._file)
             elif self._file:
                 with guard(self.path, "closing"):
                     self._file.close()
@@ -484,6 +486,18 @@ class ResultWriter:
                 blank = fill_value(array.dtype)
                 RowWriter(dataset).replace(array, blank)
                 self._rows[name] = len(array)
+
+    def _trim_arrays(self) -> None:
+        """Cut off the blank rows behind arrays that were longer in an earlier commit.
+
+        So a finished file does not tell how often it was committed. What is cut off
+        is vouched for by no commit record, hence nobody reads it.
+        """
+        for name in self._arrays:
+            dataset = self._file["trajcage"][name]
+            if dataset.ndim and len(dataset) > self._rows[name]:
+                dataset.id.set_extent((self._rows[name], *dataset.shape[1:]))
+                dataset.id.flush()
 
     def _stored_state(self, root: Any) -> dict[str, NDArray[np.generic]] | None:
         size = self._commit.state_bytes
