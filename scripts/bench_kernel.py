@@ -73,11 +73,11 @@ def sampling_time(positions, length, cages):
     random = np.random.default_rng(0)
     begin = time.thread_time()
     for i in chosen:
-        # a cube that holds most cages; the fraction inside gives the error
-        half = 0.5
-        volume = (2 * half) ** 3
-        hit = max(cages.free_volume[i] / volume, 1e-6)
-        samples = int(min((1 - hit) / hit * 1e4, 2e6))
+        # a cube of the cage's own size, which nobody knows beforehand: in favor of
+        # sampling, like the connected pieces it takes for one cage
+        half = 1.2 * cages.free_volume[i] ** (1 / 3)
+        hit = cages.free_volume[i] / (2 * half) ** 3
+        samples = int((1 - hit) / hit * 1e4)
         points = positions[i] + random.uniform(-half, half, (samples, 3))
         near = np.array(tree.query_ball_point(positions[i], 2.0))
         near = near[near != i]
