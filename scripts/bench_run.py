@@ -33,7 +33,7 @@ from trajcage.store import ResultWriter
 
 _STAGES = {
     "frame_cages": "cages",
-    "voronoi": "cells and Voronoi neighbors",
+    "tessellate": "cells and Voronoi neighbors",
     "measure_order": "order",
     "order_neighbors": "order",
     "measure_contacts": "contacts, rattlers",

@@ -1,5 +1,6 @@
 """Blocks of frames: measured by other processes, taken home in order."""
 
+import atexit
 import pickle
 import threading
 import uuid
@@ -84,12 +85,17 @@ def measure_block(job: bytes, indices: Block) -> MeasuredBlock:
 
 def _open(job: bytes) -> tuple[Trajectory, RunSettings]:
     if job not in _opened:
-        while _opened:  # of a run before, in the long life of a worker of a cluster
-            _opened.popitem()[1][0].close()
+        _close()  # of a run before, in the long life of a worker of a cluster
         options, settings, _ = pickle.loads(job)
         set_threads(1)
         _opened[job] = open_trajectory(options), settings
     return _opened[job]
+
+
+@atexit.register  # left to the end of the interpreter, files complain
+def _close() -> None:
+    while _opened:
+        _opened.popitem()[1][0].close()
 
 
 class Crew(ABC):
