@@ -164,9 +164,9 @@ def test_killed_at_random_moments_and_resumed(source, whole, tmp_path):
 
 
 def test_ctrl_c_stops_workers_and_parent_in_good_order(tmp_path):
-    path = tmp_path / "r.h5"
+    path, source = tmp_path / "r.h5", crowd.write(tmp_path / "a.gsd", 2000)
     process = subprocess.Popen(
-        command("measure", scenario.GLASS, "-o", path, "--workers", 2),
+        command("measure", source, "-o", path, "--workers", 2),
         stderr=subprocess.PIPE,
         text=True,
         start_new_session=True,

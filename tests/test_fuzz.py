@@ -16,7 +16,7 @@ from trajcage.readers.options import parse_box, parse_diameter
 from trajcage.run.inputs import FrameSelection, input_options
 from trajcage.store import open_result, salvage
 
-bounded = hypothesis.settings(max_examples=150, deadline=None)
+bounded = hypothesis.settings(max_examples=60, deadline=None)
 
 # Words near those that mean something, and any others.
 NUMBERS = st.one_of(
@@ -105,7 +105,7 @@ FLAGS += ["--dask", "--csv", "--json", "--to", "--packing-fraction", "--topology
 COMMANDS = ["measure", "inspect", "merge", "salvage", "summary", "breaks", "export"]
 
 
-@hypothesis.settings(max_examples=80, deadline=None)
+@hypothesis.settings(max_examples=40, deadline=None)
 @hypothesis.given(
     st.sampled_from([*COMMANDS, "lattice"]),
     st.lists(st.sampled_from(FLAGS) | WORDS.map(lambda w: w[:20]), max_size=6),
@@ -126,20 +126,31 @@ def original(tmp_path_factory):
     return path.read_bytes()
 
 
+SHARES = st.integers(0, 9_999)  # of the file, in units of 1 in 10,000
+
+
 @hypothesis.settings(max_examples=60, deadline=None)
-@hypothesis.given(data=st.data())
-def test_damaged_files_are_read_or_refused(tmp_path_factory, original, data):
+@hypothesis.given(
+    patches=st.lists(st.tuples(SHARES, st.binary(min_size=1, max_size=64)), max_size=3),
+    move=st.none() | st.tuples(SHARES, SHARES, SHARES),
+    cut=st.none() | SHARES,
+)
+def test_damaged_files_are_read_or_refused(
+    tmp_path_factory, original, patches, move, cut
+):
     """Bytes replaced, moved and cut off anywhere."""
+
+    def place(share):
+        return share * len(original) // 10_000
+
     damaged = bytearray(original)
-    places = st.integers(0, len(original) - 1)
-    for _ in range(data.draw(st.integers(0, 3))):
-        start, patch = data.draw(places), data.draw(st.binary(min_size=1, max_size=64))
-        damaged[start : start + len(patch)] = patch
-    if data.draw(st.booleans()):
-        source, target, length = data.draw(st.tuples(places, places, places))
+    for share, patch in patches:
+        damaged[place(share) : place(share) + len(patch)] = patch
+    if move is not None:
+        source, target, length = map(place, move)
         damaged[target : target + length] = damaged[source : source + length]
-    if data.draw(st.booleans()):
-        del damaged[data.draw(places) :]
+    if cut is not None:
+        del damaged[place(cut) :]
     folder = tmp_path_factory.mktemp("damaged")
     path = folder / "r.h5"
     path.write_bytes(damaged)
