@@ -67,6 +67,8 @@ def main() -> None:
                 process.kill()
                 process.communicate()
                 counts["kills"] += 1
+                if counts["kills"] % 20 == 0:
+                    print(f"{counts['kills']} kills", file=sys.stderr, flush=True)
                 if not path.exists():
                     counts["killed before there was a file"] += 1
                     continue
