@@ -182,16 +182,18 @@ class TestCommit:
         one = Commit.initial(self.names)
         two = Commit(2, 5, True, 5, 10, 1, 20, {"events": 3, "x": 4})
         table = np.stack([two.encode(), one.encode()])
-        assert latest_commit(table, two.columns) == two
+        assert latest_commit(table, two.columns, Path("r.h5")) == two
         for column in range(table.shape[1]):
             torn = table.copy()
             torn[0, column] += 1
-            assert latest_commit(torn, two.columns) == one
+            assert latest_commit(torn, two.columns, Path("r.h5")) == one
 
     def test_nothing_valid(self, path):
         with h5py.File(path, "r+") as file:
             file["trajcage/commit"][:, 1] = 10**12
-        with pytest.raises(ResultFileError, match="commit record is damaged"):
+        with pytest.raises(
+            ResultFileError, match=f"{path}: the commit record is damaged"
+        ):
             open_result(path)
 
 
@@ -203,17 +205,17 @@ class TestState:
             "größe": np.arange(6, dtype=np.uint8).reshape(2, 3),
             "text": np.array(["a", "bc"]),
         }
-        back = unpack_arrays(pack_arrays(state))
+        back = unpack_arrays(pack_arrays(state), Path("r.h5"))
         assert back.keys() == state.keys()
         for name, values in state.items():
             np.testing.assert_array_equal(back[name], values, strict=True)
-        assert unpack_arrays(pack_arrays({})) == {}
+        assert unpack_arrays(pack_arrays({}), Path("r.h5")) == {}
 
     def test_no_objects_either_way(self):
         with pytest.raises(UsageError, match="Python objects"):
             pack_arrays({"x": np.array([None])})
         with pytest.raises(ResultFileError, match="state of the run is damaged"):
-            unpack_arrays(pickle.dumps({"x": 1}))
+            unpack_arrays(pickle.dumps({"x": 1}), Path("r.h5"))
 
     def test_damage_is_seen(self):
         data = pack_arrays({"x": np.arange(9.0)})
@@ -221,9 +223,9 @@ class TestState:
             wrong = bytearray(data)
             wrong[position] ^= 0x10
             with pytest.raises(ResultFileError, match="state of the run is damaged"):
-                unpack_arrays(bytes(wrong))
+                unpack_arrays(bytes(wrong), Path("r.h5"))
         with pytest.raises(ResultFileError):
-            unpack_arrays(data[:-1])
+            unpack_arrays(data[:-1], Path("r.h5"))
 
 
 class TestTruncated:

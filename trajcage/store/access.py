@@ -236,7 +236,7 @@ def read_commit(file: Any, path: Path) -> Commit:
     if item.size > _MAX_OBJECTS:
         raise ResultFileError(f"{path}: the commit record has an unexpected shape")
     columns = tuple(read_text(item.attrs, "columns").split("\n"))
-    return latest_commit(item[()], columns)
+    return latest_commit(item[()], columns, path)
 
 
 def read_checked(file: Any, path: Path, *, whole: bool = True) -> Commit:

@@ -8,6 +8,7 @@ generation counts; a row torn by a crash is seen and the earlier one is used.
 import zlib
 from collections.abc import Mapping
 from dataclasses import dataclass
+from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -81,7 +82,9 @@ class Commit:
         return np.append(body, zlib.crc32(body.tobytes())).astype("<i8")
 
 
-def latest_commit(table: NDArray[np.int64], columns: tuple[str, ...]) -> Commit:
+def latest_commit(
+    table: NDArray[np.int64], columns: tuple[str, ...], path: Path
+) -> Commit:
     """Pick the valid row of the later generation.
 
     Raises
@@ -91,12 +94,12 @@ def latest_commit(table: NDArray[np.int64], columns: tuple[str, ...]) -> Commit:
     """
     table = np.asarray(table, dtype="<i8")
     if table.ndim != 2 or table.shape[1] != len(columns):
-        raise ResultFileError("the commit record has an unexpected shape")
+        raise ResultFileError(f"{path}: the commit record has an unexpected shape")
     if columns[: len(COLUMNS)] != COLUMNS or columns[-1] != _CHECKSUM:
-        raise ResultFileError("the commit record has unexpected columns")
+        raise ResultFileError(f"{path}: the commit record has unexpected columns")
     valid = [row for row in table if zlib.crc32(row[:-1].tobytes()) == row[-1]]
     if not valid:
-        raise ResultFileError("the commit record is damaged")
+        raise ResultFileError(f"{path}: the commit record is damaged")
     row = [int(x) for x in max(valid, key=lambda row: int(row[0]))]
     n = len(COLUMNS)
     rows = dict(zip(columns[n:-1], row[n:-1], strict=True))
@@ -105,7 +108,7 @@ def latest_commit(table: NDArray[np.int64], columns: tuple[str, ...]) -> Commit:
         or min(row[3], row[6]) < -1
         or row[5] > 1
     ):
-        raise ResultFileError("the commit record has negative counts")
+        raise ResultFileError(f"{path}: the commit record has negative counts")
     return Commit(
         row[0], row[1], bool(row[2]), row[3], row[4], row[5], row[6], rows=rows
     )

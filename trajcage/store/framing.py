@@ -8,6 +8,7 @@ import io
 import struct
 import zlib
 from collections.abc import Mapping
+from pathlib import Path
 
 import numpy as np
 from numpy.typing import NDArray
@@ -46,7 +47,7 @@ def pack_arrays(arrays: Mapping[str, NDArray[np.generic]]) -> bytes:
     return bytes(data)
 
 
-def unpack_arrays(data: bytes) -> dict[str, NDArray[np.generic]]:
+def unpack_arrays(data: bytes, path: Path) -> dict[str, NDArray[np.generic]]:
     """Read back what :func:`pack_arrays` wrote.
 
     Raises
@@ -57,7 +58,7 @@ def unpack_arrays(data: bytes) -> dict[str, NDArray[np.generic]]:
     try:
         magic, checksum, count = _HEAD.unpack_from(data)
         if magic != _MAGIC or zlib.crc32(data[_HEAD.size :]) != checksum:
-            raise ResultFileError("the saved state of the run is damaged")
+            raise ResultFileError(f"{path}: the saved state of the run is damaged")
         arrays: dict[str, NDArray[np.generic]] = {}
         start = _HEAD.size
         for _ in range(count):
@@ -69,5 +70,7 @@ def unpack_arrays(data: bytes) -> dict[str, NDArray[np.generic]]:
             arrays[name] = np.lib.format.read_array(stream, allow_pickle=False)
             start += body
     except (struct.error, ValueError) as error:
-        raise ResultFileError("the saved state of the run is damaged") from error
+        raise ResultFileError(
+            f"{path}: the saved state of the run is damaged"
+        ) from error
     return arrays

@@ -504,7 +504,7 @@ class ResultWriter:
         if size < 0:
             return None
         data = root["state"]["ab"[self._commit.state_slot]][:size]
-        return unpack_arrays(data.tobytes())
+        return unpack_arrays(data.tobytes(), self.path)
 
 
 def _summary_text(summary: Mapping[str, object]) -> bytes:
