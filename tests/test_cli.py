@@ -15,9 +15,9 @@ from click.testing import CliRunner
 
 import trajcage
 from trajcage.cli import main
-from trajcage.cli.common import with_error
 from trajcage.cli.measure import _SKIPPABLE
 from trajcage.run import FAMILIES
+from trajcage.wording import MISSING, near_miss, with_error
 
 
 def call(*words, code=0):
@@ -196,7 +196,7 @@ def test_lattice_prints_the_reference_of_the_library():
 @pytest.mark.parametrize(
     ("words", "code", "message"),
     [
-        (["mesure"], 2, "Did you mean measure?"),
+        (["mesure"], 2, "did you mean measure?"),
         (["measure", "--outptu", "a"], 2, "Did you mean '--output'?"),
         (["measure", "a.gsd"], 2, "Missing option '-o'"),
         (["measure", "nothing.gsd", "-o", "r.h5"], 1, "nothing at nothing.gsd"),
@@ -204,7 +204,7 @@ def test_lattice_prints_the_reference_of_the_library():
         (["inspect", scenario.FLUID[0]], 1, "--diameter"),
         (["summary", "nothing.h5"], 1, "nothing.h5"),
         (["breaks", scenario.CRYSTAL], 1, "not an HDF5 file"),
-        (["lattice", "fc", "--packing-fraction", "0.5"], 2, "did you mean 'fcc'?"),
+        (["lattice", "fc", "--packing-fraction", "0.5"], 2, "did you mean fcc?"),
         (["lattice", "fcc", "--packing-fraction", "0.8"], 2, "close packing"),
         (
             ["measure", scenario.CRYSTAL, "-o", "r.h5", "--diameter", "x"],
@@ -264,8 +264,24 @@ def test_ctrl_c_exits_with_130_and_leaves_a_good_file(tmp_path):
         (0.0005970, 0.000035, "0.000597 ± 0.000035"),
         (123.4, 12.0, "123 ± 12"),
         (0.45, 0.0, "0.45"),
-        (None, None, "-"),
+        (None, None, MISSING),
     ],
 )
 def test_means_are_written_to_two_digits_of_their_error(mean, error, text):
     assert with_error(mean, error) == text
+
+
+@pytest.mark.parametrize(
+    ("name", "found"),
+    [
+        ("free_volum", "free_volume"),
+        ("Free-Volume", "free_volume"),
+        ("volume", "free_volume"),
+        ("zzz", None),
+        ("", None),
+    ],
+)
+def test_a_near_miss_is_suggested(name, found):
+    known = ("free_volume", "cage_status")
+    expected = f" (did you mean {found}?)" if found else ""
+    assert near_miss(name, known) == expected

@@ -518,7 +518,7 @@ def test_unknown_lattice(name, suggestion):
         message = str(caught.value)
         assert repr(name) in message
         assert all(known in message for known in LATTICES)
-        assert (f"did you mean {suggestion!r}" in message) == bool(suggestion)
+        assert (f"did you mean {suggestion}?" in message) == bool(suggestion)
 
 
 def test_names_in_upper_case_are_understood():

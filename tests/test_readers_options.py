@@ -88,7 +88,9 @@ def test_diameters_must_be_positive(xyz, diameter):
 
 
 def test_near_miss_of_a_type_name(xyz):
-    with pytest.raises(InputError, match="types are big, small; did you mean small"):
+    with pytest.raises(
+        InputError, match=r"did you mean small\?\), but the types are big, small"
+    ):
         radii(xyz, "big=1,smal=1")
     with pytest.raises(InputError, match="did you mean big"):
         radii(xyz, "BIG=1,small=1")

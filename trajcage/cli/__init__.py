@@ -4,13 +4,13 @@ Commands are modules of the same name with a command ``command``, imported when 
 are called, and they import the rest of the package when they run.
 """
 
-import difflib
 from importlib import import_module
 
 import click
 
 import trajcage
 from trajcage.errors import InterruptedRunError, TrajcageError, UsageError
+from trajcage.wording import near_miss
 
 __all__ = ["main"]
 
@@ -79,9 +79,7 @@ class _Program(click.Group):
     ) -> tuple[str | None, click.Command | None, list[str]]:
         name = args[0]
         if name not in _COMMANDS and not name.startswith("-"):
-            near = difflib.get_close_matches(name, _COMMANDS, n=1)
-            hint = f" Did you mean {near[0]}?" if near else ""
-            ctx.fail(f"No such command {name!r}.{hint}")
+            ctx.fail(f"there is no command {name!r}{near_miss(name, _COMMANDS)}")
         return super().resolve_command(ctx, args)
 
     def invoke(self, ctx: click.Context) -> object:

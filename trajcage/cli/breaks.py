@@ -6,7 +6,8 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
-from trajcage.cli.common import number, print_json, result_argument, table
+from trajcage.cli.common import print_json, result_argument, table
+from trajcage.wording import MISSING, number
 
 if TYPE_CHECKING:
     from trajcage.store import Result
@@ -110,7 +111,7 @@ def _text(
             str(len(event["neighbors_gained"])),
             f"{event['region_before']} - {event['region_after']}",
             number(event["weakest_window_before"], 4),
-            {1: "yes", 0: "no"}.get(event["through_weakest_window"], "-"),
+            {1: "yes", 0: "no"}.get(event["through_weakest_window"], MISSING),
         )
         for event in events
     ]

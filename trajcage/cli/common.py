@@ -13,11 +13,9 @@ import click
 __all__ = [
     "input_options",
     "json_option",
-    "number",
     "print_json",
     "result_argument",
     "table",
-    "with_error",
 ]
 
 F = TypeVar("F", bound=Callable[..., Any])
@@ -104,20 +102,3 @@ def table(
         ]
         laid_out.append("  ".join(cells).rstrip())
     return "\n".join(laid_out)
-
-
-def number(value: float | None, digits: int = 6) -> str:
-    """Write a number, ``-`` for one that does not exist."""
-    if value is None or not math.isfinite(value):
-        return "-"
-    return f"{value:.{digits}g}"
-
-
-def with_error(mean: float | None, error: float | None) -> str:
-    """Write a mean with its error, to two digits of the error."""
-    if mean is None or error is None or error <= 0.0:
-        return number(mean)
-    decimals = max(0, 1 - math.floor(math.log10(error)))
-    if decimals > 9:
-        return f"{mean:.6g} ± {error:.1e}"
-    return f"{mean:.{decimals}f} ± {error:.{decimals}f}"

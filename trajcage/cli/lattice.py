@@ -4,7 +4,8 @@ from typing import TYPE_CHECKING
 
 import click
 
-from trajcage.cli.common import json_option, number, print_json, table
+from trajcage.cli.common import json_option, print_json, table
+from trajcage.wording import MISSING, number
 
 if TYPE_CHECKING:
     from trajcage.lattices import LatticeReference, LatticeThresholds
@@ -67,7 +68,7 @@ def _threshold_table(limits: "list[LatticeThresholds]") -> str:
                 str(entry.dimensions),
                 number(entry.close_packing.value, 10),
                 entry.close_packing.expression,
-                "-" if growth is None else number(growth.value, 10),
+                MISSING if growth is None else number(growth.value, 10),
                 "" if growth is None else growth.expression,
                 number(entry.escape.value, 10),
                 entry.escape.expression,

@@ -4,14 +4,8 @@ from typing import Any
 
 import click
 
-from trajcage.cli.common import (
-    json_option,
-    number,
-    print_json,
-    result_argument,
-    table,
-    with_error,
-)
+from trajcage.cli.common import json_option, print_json, result_argument, table
+from trajcage.wording import MISSING, number, with_error
 
 __all__ = ["command"]
 
@@ -91,7 +85,7 @@ def _observables(summary: dict[str, Any]) -> str:
         if found is None:
             continue
         if found["n_values"] == 0:
-            rows.append((name, "-"))
+            rows.append((name, MISSING))
             notes.append(f"{name}: missing, {_reason(name, summary)}")
             continue
         rows.append((name, with_error(found["mean"], found["error"])))
@@ -202,4 +196,4 @@ def _times(summary: dict[str, Any], time_unit: str) -> str:
 
 
 def _signed(value: float | None, digits: int = 3) -> str:
-    return "-" if value is None else f"{value:+.{digits}g}"
+    return MISSING if value is None else f"{value:+.{digits}g}"

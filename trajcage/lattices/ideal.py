@@ -10,12 +10,12 @@ circumradius of its corners. The one exception is the body-centered cage, which
 grows when its corners reach the exclusion spheres of the second shell.
 """
 
-import difflib
 import math
 from dataclasses import dataclass
 
 from trajcage.errors import UsageError
 from trajcage.lattices.exact import ExactNumber
+from trajcage.wording import near_miss
 
 __all__ = [
     "LATTICES",
@@ -327,7 +327,7 @@ def find_lattice(name: str) -> IdealLattice:
     key = str(name).lower()
     if key in LATTICES:
         return LATTICES[key]
-    close = difflib.get_close_matches(key, LATTICES, n=1)
-    hint = f"did you mean {close[0]!r}? " if close else ""
-    msg = f"unknown lattice {name!r}: {hint}choose one of {', '.join(LATTICES)}"
-    raise UsageError(msg)
+    raise UsageError(
+        f"there is no lattice {name!r}{near_miss(key, LATTICES)}; choose among "
+        f"{', '.join(LATTICES)}"
+    )

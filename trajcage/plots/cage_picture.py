@@ -8,7 +8,7 @@ from numpy.typing import NDArray
 
 from trajcage.analysis.cage_mesh import CageMesh
 from trajcage.plots.style import INK, PALETTE, Drawing, new_figure, settle
-from trajcage.plots.text import listed
+from trajcage.wording import listed
 
 __all__ = ["cage_drawing", "cage_facts"]
 

@@ -13,6 +13,7 @@ from trajcage.plots.rattlers import rattlers
 from trajcage.plots.slices import slices
 from trajcage.plots.style import Drawing, Missing, settle, styled
 from trajcage.store import Result
+from trajcage.wording import near_miss
 
 __all__ = ["FIGURES", "Figures", "draw_figures"]
 
@@ -69,7 +70,8 @@ def draw_figures(result: Result, names: Iterable[str] = ()) -> Figures:
     for name in chosen:
         if name not in FIGURES:
             raise UsageError(
-                f"there is no figure {name!r}; choose among {', '.join(FIGURES)}"
+                f"there is no figure {name!r}{near_miss(name, FIGURES)}; choose among "
+                f"{', '.join(FIGURES)}"
             )
     facts = Facts(result)
     drawn: dict[str, Drawing] = {}

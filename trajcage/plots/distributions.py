@@ -7,7 +7,7 @@ from numpy.typing import NDArray
 from trajcage.model import CageStatus
 from trajcage.plots.facts import Facts, number_of
 from trajcage.plots.style import INK, PALETTE, Drawing, Missing, legend, new_figure
-from trajcage.plots.text import with_error
+from trajcage.wording import with_error
 
 __all__ = ["free_volume", "lattice_groups", "quantiles", "windows"]
 

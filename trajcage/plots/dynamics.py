@@ -18,7 +18,7 @@ from trajcage.plots.style import (
     log_ticks,
     new_figure,
 )
-from trajcage.plots.text import with_error
+from trajcage.wording import with_error
 
 __all__ = ["correlations", "regions", "survival"]
 

@@ -8,8 +8,8 @@ from numpy.typing import NDArray
 
 from trajcage.errors import ResultFileError
 from trajcage.plots.style import Missing
-from trajcage.plots.text import with_error
 from trajcage.store import Result
+from trajcage.wording import with_error
 
 __all__ = ["Facts"]
 

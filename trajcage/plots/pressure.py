@@ -29,7 +29,7 @@ from trajcage.plots.style import (
     legend,
     new_figure,
 )
-from trajcage.plots.text import with_error
+from trajcage.wording import with_error
 
 __all__ = ["lattices", "pressure"]
 

@@ -4,7 +4,7 @@ import numpy as np
 
 from trajcage.plots.facts import Facts
 from trajcage.plots.style import INK, PALETTE, Drawing, Missing, legend, new_figure
-from trajcage.plots.text import with_error
+from trajcage.wording import with_error
 
 __all__ = ["rattlers"]
 

@@ -9,8 +9,8 @@ from trajcage.plots.facts import Facts
 from trajcage.plots.page import bullets, image, page, section, table
 from trajcage.plots.saving import figure_bytes
 from trajcage.plots.style import Drawing
-from trajcage.plots.text import number, with_error
 from trajcage.store import Result
+from trajcage.wording import MISSING, number, with_error
 
 __all__ = ["report_page", "write_report"]
 
@@ -251,7 +251,7 @@ def _origin(parameters: dict[str, Any]) -> list[tuple[str, str]]:
 
 
 def _signed(value: float | None, digits: int) -> str:
-    return "–" if value is None else f"{value:+.{digits}g}"
+    return MISSING if value is None else f"{value:+.{digits}g}"
 
 
 def _plain(value: object) -> str:

@@ -1,6 +1,5 @@
 """Where the hard-sphere radii come from: the user before the file, never a guess."""
 
-import difflib
 from collections.abc import Iterable
 from pathlib import Path
 
@@ -10,6 +9,7 @@ from numpy.typing import NDArray
 from trajcage.errors import FrameError, InputError
 from trajcage.readers.options import DIAMETER_FORMS
 from trajcage.readers.source import RawFrame
+from trajcage.wording import near_miss
 
 __all__ = ["Radii"]
 
@@ -110,12 +110,9 @@ def _table(
     """Radius of each type, NaN where not given."""
     for name in diameter:
         if name not in type_names:
-            near = difflib.get_close_matches(name, type_names, n=1, cutoff=0.4)
-            near = near or [t for t in type_names if t.lower() == name.lower()]
-            hint = f"; did you mean {near[0]}?" if near else ""
             raise InputError(
-                f"a diameter is given for type {name}, but the types are "
-                f"{', '.join(type_names)}{hint}"
+                f"a diameter is given for type {name}{near_miss(name, type_names)}, but "
+                f"the types are {', '.join(type_names)}"
             )
     missing = [name for name in used if name not in diameter]
     if missing:

@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 from trajcage.errors import UsageError
 from trajcage.model import Field
 from trajcage.store import Result
+from trajcage.wording import near_miss
 
 __all__ = ["write_csv", "write_extxyz", "write_npz"]
 
@@ -163,7 +164,7 @@ def write_npz(
 def _fields(
     result: Result, names: Sequence[str] | None, *, per_particle: bool | None = True
 ) -> list[Field]:
-    kinds = {True: "of particles", False: "of frames", None: ""}
+    kinds = {True: " of particles", False: " of frames", None: ""}
     known = {
         name: f
         for name, f in result.fields.items()
@@ -172,8 +173,8 @@ def _fields(
     for name in names or ():
         if name not in known:
             raise UsageError(
-                f"{result.path} has no field {name!r} {kinds[per_particle]}; it has "
-                + ", ".join(known)
+                f"{result.path} has no field {name!r}{kinds[per_particle]}"
+                f"{near_miss(name, known)}; it has {', '.join(known)}"
             )
     return [known[name] for name in names or known]
 

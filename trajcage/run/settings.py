@@ -22,6 +22,7 @@ from trajcage.analysis.time_options import TimeOptions
 from trajcage.errors import UsageError
 from trajcage.model import Field
 from trajcage.store import ArraySpec, TableSpec
+from trajcage.wording import near_miss
 
 __all__ = ["FAMILIES", "RunSettings"]
 
@@ -82,8 +83,8 @@ class RunSettings:
         for name in self.skip:
             if name not in FAMILIES:
                 raise UsageError(
-                    f"there is no family {name!r} to skip; choose among "
-                    + ", ".join(FAMILIES)
+                    f"there is no family {name!r} to skip{near_miss(name, FAMILIES)}; "
+                    f"choose among {', '.join(FAMILIES)}"
                 )
         for name, needed in FAMILIES.items():  # in an order that carries on
             if left_out.intersection(needed):

@@ -19,6 +19,7 @@ from trajcage.store.commit import read_text
 from trajcage.store.guard import guard
 from trajcage.store.series import Series
 from trajcage.store.superblock import is_truncated
+from trajcage.wording import near_miss
 
 __all__ = ["Result", "open_result"]
 
@@ -361,7 +362,10 @@ class Result:
         return self._series(f"{group.name}/{name}/value")
 
     def _unknown(self, kind: str, name: str, known: Any) -> UsageError:
-        return UsageError(f"{self.path} has no {kind} {name!r}; it has {sorted(known)}")
+        return UsageError(
+            f"{self.path} has no {kind} {name!r}{near_miss(name, known)}; it has "
+            f"{', '.join(sorted(known))}"
+        )
 
     def _named(self, kind: str) -> list[str]:
         names: list[str] = []
