@@ -86,7 +86,7 @@ def _observables(summary: dict[str, Any]) -> str:
             continue
         if found["n_values"] == 0:
             rows.append((name, MISSING))
-            notes.append(f"{name}: missing, {_reason(name, summary)}")
+            notes.append(f"{name}: missing, {found['reason']}")
             continue
         rows.append((name, with_error(found["mean"], found["error"])))
         if found["n_missing"]:
@@ -99,35 +99,6 @@ def _observables(summary: dict[str, Any]) -> str:
     if any(row[1].endswith("*") for row in rows):
         notes.append("* too few frames for an independent error: a lower bound")
     return "\n".join([text, *notes])
-
-
-def _reason(name: str, summary: dict[str, Any]) -> str:
-    """Why an observable has no value on any frame."""
-    if name == "cell_volume_shape":
-        if summary["equal_radii"]:
-            return "all cells are equal, or unknown"
-        return "particles of unequal size have no smallest cell"
-    if name == "rattler_plateau":
-        return (
-            "the rattler fraction depends on the contact tolerance at every tolerance, "
-            "as in thermal configurations"
-        )
-    if name == "persisting_fraction":
-        return "no particle has a bonded neighbor on the first frame"
-    if name in {"broken_fraction", "fluid_fraction", "glass_fraction"}:
-        return "the record is shorter than the mobility window (--mobility-window)"
-    if name in {"compressibility_factor", "reduced_pressure"}:
-        unresolved = summary["compressibility_status"]["unresolved"]
-        lattice = summary["compressibility_status"]["ideal_lattice"]
-        parts = []
-        if unresolved:
-            parts.append(
-                f"more than 1 in 1000 cages are not measured on {unresolved} frames"
-            )
-        if lattice:
-            parts.append(f"all cages are equal, an ideal lattice, on {lattice} frames")
-        return "; ".join(parts)
-    return "no particle has one on any frame"
 
 
 def _equations(summary: dict[str, Any]) -> str:
@@ -152,7 +123,9 @@ def _lattices(summary: dict[str, Any]) -> str:
             row["name"],
             row["cage_status"],
             number(row["free_volume"]),
-            number(row["free_volume_ratio"], 4),
+            with_error(row["free_volume_ratio"], row["free_volume_ratio_error"]),
+            number(row["free_surface"]),
+            with_error(row["free_surface_ratio"], row["free_surface_ratio_error"]),
             str(row["bounding_neighbors"]),
             number(row["weakest_window"], 4),
             number(row["compressibility_factor"]),
@@ -165,6 +138,8 @@ def _lattices(summary: dict[str, Any]) -> str:
         "ideal lattice",
         "cage",
         "free_volume",
+        "measured/lattice",
+        "free_surface",
         "measured/lattice",
         "bounding_neighbors",
         "weakest_window",

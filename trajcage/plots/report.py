@@ -162,7 +162,7 @@ def _observables(facts: Facts) -> str:
     fields, rows = facts.result.fields, []
     for name, entry in facts.summary["observables"].items():
         mean = with_error(entry["mean"], entry["error"])
-        note = entry["reason"] if entry["error"] else ""
+        note = entry["reason"]
         missing = str(entry["n_missing"]) if entry["n_missing"] else ""
         field = fields[name]
         unit = field.unit.replace("length", "D").replace("+1", "").replace("+", "^")

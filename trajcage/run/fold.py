@@ -7,6 +7,7 @@ from collections.abc import Mapping, Sequence
 import numpy as np
 from numpy.typing import NDArray
 
+from trajcage.analysis.absence import why_absent
 from trajcage.analysis.comparison import (
     compare_equations,
     compare_lattices,
@@ -19,7 +20,7 @@ from trajcage.analysis.fold import TimeFold
 from trajcage.analysis.regions import find_regions, measure_regions
 from trajcage.analysis.state import State, prefixed, under
 from trajcage.analysis.statistics import BlockMoments, MeanEstimate
-from trajcage.analysis.thermodynamics import CompressibilityStatus, equal_diameter
+from trajcage.analysis.thermodynamics import CompressibilityStatus
 from trajcage.analysis.tracking import RegionTracker
 from trajcage.model import CageStatus, Field, Frame, FrameRecord
 from trajcage.run.frames import MeasuredFrame
@@ -195,17 +196,22 @@ class RunFold:
     def _summary(self, time: Conclusion | None) -> dict[str, object]:
         first = self._first
         d = first.dimensions
+        factors = dict(
+            zip(
+                (code.name.lower() for code in CompressibilityStatus),
+                self._factors.tolist(),
+                strict=True,
+            )
+        )
         estimates = {name: self._estimate(row) for row, name in enumerate(self._names)}
+        for name, estimate in estimates.items():
+            if estimate.n_missing and not estimate.n_values:
+                why = why_absent(
+                    name, equal_radii=first.equal_radii, compressibility=factors
+                )
+                estimates[name] = dataclasses.replace(estimate, reason=why)
         phi = estimates["packing_fraction"].mean
         factor = estimates["compressibility_factor"]
-        if factor.n_missing and not factor.n_values:
-            counted = zip(CompressibilityStatus, self._factors.tolist(), strict=True)
-            why = ", ".join(
-                f"{code.name.lower()} on {n} frames" for code, n in counted if n
-            )
-            factor = dataclasses.replace(factor, reason=why)
-            for name in ("compressibility_factor", "reduced_pressure"):
-                estimates[name] = dataclasses.replace(estimates[name], reason=why)
         summary: dict[str, object] = {
             "n_frames": self._n_frames,
             "n_particles": first.n_particles,
@@ -221,13 +227,7 @@ class RunFold:
                     strict=True,
                 )
             ),
-            "compressibility_status": dict(
-                zip(
-                    (code.name.lower() for code in CompressibilityStatus),
-                    self._factors.tolist(),
-                    strict=True,
-                )
-            ),
+            "compressibility_status": factors,
             "observables": {
                 name: dataclasses.asdict(estimate)
                 for name, estimate in estimates.items()
@@ -237,12 +237,7 @@ class RunFold:
         if self._n_frames:
             summary |= {
                 "equations_of_state": compare_equations(d, first.radii, phi, factor),
-                "lattices": compare_lattices(
-                    d,
-                    phi,
-                    equal_diameter(first) / first.mean_diameter,
-                    estimates["free_volume_mean"].mean,
-                ),
+                "lattices": compare_lattices(d, phi, estimates),
                 "phase_marks": phase_table(d),
             }
         if time is not None:

@@ -5,7 +5,6 @@ together from parts: it is measured anew over all frames, whose positions come f
 trajectory, or from the parts if they hold them.
 """
 
-import math
 from collections.abc import Callable, Iterator, Mapping, Sequence
 from contextlib import ExitStack
 from dataclasses import replace
@@ -18,11 +17,7 @@ from numpy.typing import NDArray
 
 from trajcage.analysis import fold as time_fold
 from trajcage.analysis import regions
-from trajcage.analysis.cages import CageOptions
-from trajcage.analysis.contacts import ContactOptions
-from trajcage.analysis.order import OrderOptions, order_neighbors
-from trajcage.analysis.regions import RegionOptions
-from trajcage.analysis.time_options import TimeOptions
+from trajcage.analysis.order import order_neighbors
 from trajcage.errors import InputError, ResultFileError, UsageError
 from trajcage.model import CageTable, CageWalls, Frame
 from trajcage.neighborhood import tessellate
@@ -32,7 +27,7 @@ from trajcage.run.frames import MeasuredFrame, MeasuredFrames, bare
 from trajcage.run.interruption import StopRequest
 from trajcage.run.loop import Progress, fold_frames
 from trajcage.run.output import create_writer
-from trajcage.run.provenance import describe_inputs
+from trajcage.run.provenance import describe_inputs, under
 from trajcage.run.settings import RunSettings
 from trajcage.store import Result, open_result
 
@@ -113,7 +108,7 @@ def merge(
         )
         _check_parts(opened)
         options = _merged_options(opened)
-        settings = _settings(options)
+        settings = RunSettings.recorded(options)
         source = _open_source(opened[0], options, topology, trajectory)
         if source is not None:
             stack.callback(source.close)
@@ -208,36 +203,10 @@ def _merged_options(parts: Sequence[Result]) -> dict[str, Any]:
     return options
 
 
-def _settings(options: Mapping[str, Any]) -> RunSettings:
-    def family(name: str) -> dict[str, Any]:
-        return {
-            k: tuple(v) if isinstance(v, list) else math.inf if v == "inf" else v
-            for k, v in _under(name, options).items()
-        }
-
-    return RunSettings(
-        skip=tuple(options["skip"]),
-        varying_radii=options["varying_radii"],
-        store_positions=options["store_positions"],
-        store_walls=options["store_walls"],
-        cages=CageOptions(**family("cages")),
-        order=OrderOptions(**family("order")),
-        contacts=ContactOptions(**family("contacts")),
-        regions=RegionOptions(**family("regions")),
-        time=TimeOptions(**family("time")),
-    )
-
-
-def _under(name: str, options: Mapping[str, Any]) -> dict[str, Any]:
-    """Options of one part of the settings, see :func:`trajcage.run.provenance.flat`."""
-    start = f"{name}."
-    return {k.removeprefix(start): v for k, v in options.items() if k.startswith(start)}
-
-
 def _inputs(options: Mapping[str, Any]) -> list[dict[str, str | int]]:
     """Size and sha256 of each input file."""
     count = sum(name.endswith(".sha256") for name in options)
-    return [_under(f"inputs.{k}", options) for k in range(count)]
+    return [under(f"inputs.{k}", options) for k in range(count)]
 
 
 def _open_source(
@@ -252,7 +221,7 @@ def _open_source(
         files = [Path(name) for name in (topology, trajectory) if name is not None]
     elif not all(path.exists() for path in files):
         return None
-    diameter = _under("diameter", options) or options.get("effective_diameter")
+    diameter = under("diameter", options) or options.get("effective_diameter")
     source = InputOptions(
         files[0],
         files[1] if len(files) > 1 else None,

@@ -6,12 +6,13 @@ from collections.abc import Mapping
 from dataclasses import asdict
 from importlib import metadata
 from pathlib import Path
+from typing import Any
 
 import trajcage
 from trajcage.readers import InputDescription, InputOptions
 from trajcage.store import describe_file
 
-__all__ = ["describe_inputs", "flat", "parameters"]
+__all__ = ["describe_inputs", "flat", "parameters", "under"]
 
 _LIBRARIES = ("MDAnalysis", "freud-analysis", "gsd", "h5py", "numba", "numpy", "scipy")
 
@@ -39,6 +40,12 @@ def flat(options: Mapping[str, object], prefix: str = "") -> dict[str, object]:
         else:
             found[f"{prefix}{name}"] = value
     return found
+
+
+def under(name: str, options: Mapping[str, Any]) -> dict[str, Any]:
+    """Options of one part, by their names within it; the reverse of :func:`flat`."""
+    start = f"{name}."
+    return {k.removeprefix(start): v for k, v in options.items() if k.startswith(start)}
 
 
 def parameters(

@@ -1,7 +1,9 @@
 """What a run measures: families of quantities and what they store."""
 
-from collections.abc import Collection
+import math
+from collections.abc import Collection, Mapping
 from dataclasses import dataclass, field
+from typing import Any
 
 from trajcage.analysis import (
     cages,
@@ -21,6 +23,7 @@ from trajcage.analysis.regions import Region, RegionOptions
 from trajcage.analysis.time_options import TimeOptions
 from trajcage.errors import UsageError
 from trajcage.model import Field
+from trajcage.run.provenance import under
 from trajcage.store import ArraySpec, TableSpec
 from trajcage.wording import near_miss
 
@@ -90,6 +93,34 @@ class RunSettings:
             if left_out.intersection(needed):
                 left_out.add(name)
         object.__setattr__(self, "skip", tuple(sorted(left_out)))
+
+    @classmethod
+    def recorded(cls, options: Mapping[str, Any]) -> "RunSettings":
+        """Return the settings of the run that recorded these options.
+
+        Parameters
+        ----------
+        options : dict
+            From a result file, flat.
+        """
+
+        def family(name: str) -> dict[str, Any]:
+            return {
+                k: tuple(v) if isinstance(v, list) else math.inf if v == "inf" else v
+                for k, v in under(name, options).items()
+            }
+
+        return cls(
+            skip=tuple(options["skip"]),
+            varying_radii=options["varying_radii"],
+            store_positions=options["store_positions"],
+            store_walls=options["store_walls"],
+            cages=CageOptions(**family("cages")),
+            order=OrderOptions(**family("order")),
+            contacts=ContactOptions(**family("contacts")),
+            regions=RegionOptions(**family("regions")),
+            time=TimeOptions(**family("time")),
+        )
 
     def has(self, family: str) -> bool:
         """Whether a family is measured."""
