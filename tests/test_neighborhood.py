@@ -1,6 +1,7 @@
 import subprocess
 import sys
 
+import freud
 import numpy as np
 import pytest
 from MDAnalysis.lib.distances import self_capped_distance
@@ -8,7 +9,12 @@ from scipy.spatial import Voronoi
 
 from trajcage.errors import FrameError, UsageError
 from trajcage.model import Box, Frame
-from trajcage.neighborhood import check_distinct, neighbor_list, voronoi
+from trajcage.neighborhood import (
+    check_distinct,
+    connected_groups,
+    neighbor_list,
+    voronoi,
+)
 
 TRICLINIC = Box.from_any([10, 12, 14, 80, 75, 60])
 # The same shape, turned out of the axes and mirrored: any row vectors will do.
@@ -295,3 +301,27 @@ def test_a_single_particle_neighbors_its_own_images():
     assert neighbors.weights.sum() == pytest.approx(24.0)  # faces of a cube of side 2
     assert len(neighbor_list(frame, 2.0).neighbors) == 0
     assert len(neighbor_list(frame, 2.0, self_images=True).neighbors) == 6
+
+
+@pytest.mark.parametrize("name", ["triclinic", "plane"])
+def test_groups_are_those_of_a_general_library(name):
+    # freud.cluster on the same bonds; groups of one size come by their first particle
+    frame = random_frame(BOXES[name])
+    near = neighbor_list(frame, 1.1)
+    chosen = np.random.default_rng(8).random((150, 150)) < 0.4
+    linked = (chosen | chosen.T)[near.particles, near.neighbors]
+    ends = (near.particles[linked], near.neighbors[linked])
+    bonds = freud.locality.NeighborList.from_arrays(
+        150, 150, *(end.astype(np.uint32) for end in ends), np.ones((linked.sum(), 3))
+    )
+    cluster = freud.cluster.Cluster()
+    cluster.compute((freud.box.Box.cube(9), np.zeros((150, 3))), neighbors=bonds)
+    group, other = connected_groups(near, linked), cluster.cluster_idx
+    n_groups = group.max() + 1
+    assert 10 < n_groups < 140
+    assert len(set(zip(group, other, strict=True))) == n_groups == other.max() + 1
+    size = np.bincount(group)
+    first = np.unique(group, return_index=True)[1]
+    ranks = list(zip(-size, first, strict=True))
+    assert ranks == sorted(ranks)
+    assert size[0] > 1

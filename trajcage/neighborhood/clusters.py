@@ -1,8 +1,9 @@
-"""Connected groups of particles, by freud."""
+"""Connected groups of particles."""
 
-import freud
 import numpy as np
 from numpy.typing import NDArray
+from scipy.sparse import csr_array
+from scipy.sparse.csgraph import connected_components
 
 from trajcage.model import NeighborList
 
@@ -24,19 +25,19 @@ def connected_groups(
     Returns
     -------
     (n,) int64
-        Group of each particle, 0 for the largest; single particles are groups.
+        Group of each particle, 0 for the largest, equal ones in the order of their
+        first particles; single particles are groups.
     """
     n = neighbors.n_particles
-    i, j = neighbors.particles[linked], neighbors.neighbors[linked]
-    bonds = freud.locality.NeighborList.from_arrays(
-        n,
-        n,
-        i.astype(np.uint32),
-        j.astype(np.uint32),
-        np.ones((len(i), 3), dtype=np.float32),
+    ends = np.concatenate(([0], np.cumsum(linked)))[neighbors.offsets]
+    graph = csr_array(
+        (np.ones(ends[-1], dtype=np.int8), neighbors.neighbors[linked], ends),
+        shape=(n, n),
     )
-    # Only the bonds matter: freud asks for a box and points, but does not use them.
-    points = np.zeros((n, 3), dtype=np.float32)
-    cluster = freud.cluster.Cluster()
-    cluster.compute((freud.box.Box.cube(1.0), points), neighbors=bonds)
-    return np.asarray(cluster.cluster_idx, dtype=np.int64)
+    n_groups, found = connected_components(graph, directed=False)
+    label = np.asarray(found, dtype=np.int64)
+    first = np.empty(n_groups, dtype=np.int64)
+    first[label[::-1]] = np.arange(n)[::-1]
+    rank = np.empty(n_groups, dtype=np.int64)
+    rank[np.lexsort((first, -np.bincount(label)))] = np.arange(n_groups)
+    return rank[label]
