@@ -108,16 +108,27 @@ def test_stored_numbers_agree_with_each_other(glass):
 def test_lattice_references_stand_beside_every_frame(glass):
     with trajcage.open_result(glass) as result:
         phi = float(result["packing_fraction"][0])
-        radii = np.asarray(result.radii)
-        unit = (2.0 * np.mean(radii**3) ** (1 / 3)) ** 3
-        expected = trajcage.lattice("fcc", phi).free_volume * unit
-        assert np.allclose(result["lattice_fcc_free_volume"], expected)
-        assert np.isnan(
-            result["lattice_diamond_free_volume"]
-        ).all()  # cannot be so dense
-        row = next(r for r in result.summary["lattices"] if r["name"] == "fcc")
-        ratio = float(np.mean(result["free_volume_mean"])) / expected
-        assert row["free_volume_ratio"] == pytest.approx(ratio)
+        # equal particles that fill as much at the same number density
+        diameter = 2.0 * np.mean(np.asarray(result.radii) ** 3) ** (1 / 3)
+        for name in ("fcc", "hcp", "bcc"):
+            expected = trajcage.lattice(name, phi)
+            row = next(r for r in result.summary["lattices"] if r["name"] == name)
+            for part, power in (("free_volume", 3), ("free_surface", 2)):
+                reference = getattr(expected, part) * diameter**power
+                stored = np.asarray(result[f"lattice_{name}_{part}"])
+                np.testing.assert_allclose(stored, reference, rtol=1e-12)
+                ratio = np.asarray(result[part]).mean(axis=1) / reference
+                stored = np.asarray(result[f"lattice_{name}_{part}_ratio"])
+                np.testing.assert_allclose(stored, ratio, rtol=1e-12)
+                assert row[f"{part}_ratio"] == pytest.approx(ratio.mean())
+                assert 0 < row[f"{part}_ratio_error"] < 0.1 * row[f"{part}_ratio"]
+        for part in ("free_volume", "free_surface"):  # diamond cannot be so dense
+            assert np.isnan(result[f"lattice_diamond_{part}"]).all()
+            assert np.isnan(result[f"lattice_diamond_{part}_ratio"]).all()
+            absent = result.summary["observables"][f"lattice_diamond_{part}_ratio"]
+            assert "cannot be so dense" in absent["reason"]
+        told = {row["name"] for row in result.summary["lattices"]}
+        assert told == {"fcc", "hcp", "bcc"}
 
 
 def test_the_record_says_what_was_measured_and_how(glass):

@@ -43,4 +43,6 @@ def why_absent(
         if equal_radii:
             return "all cells are equal, or unknown"
         return "particles of unequal size have no smallest cell"
+    if name.startswith("lattice_"):
+        return "the lattice cannot be so dense, or its cages are open"
     return _WHY.get(name, "no particle has one on any frame")

@@ -1,6 +1,7 @@
 """Measured means beside equations of state, ideal lattices and phase marks."""
 
 import math
+from collections.abc import Mapping
 from dataclasses import asdict
 
 import numpy as np
@@ -62,10 +63,7 @@ def compare_equations(
 
 
 def compare_lattices(
-    dimensions: int,
-    packing_fraction: float,
-    equal_diameter: float,
-    free_volume_mean: float,
+    dimensions: int, packing_fraction: float, estimates: Mapping[str, MeanEstimate]
 ) -> list[_Row]:
     """Ideal lattices that exist at a packing fraction.
 
@@ -75,35 +73,36 @@ def compare_lattices(
         2 or 3.
     packing_fraction : float
         Mean packing fraction.
-    equal_diameter : float, length
-        Diameter of equal particles of the same packing fraction and number density,
-        in any unit.
-    free_volume_mean : float, length^d
-        Measured mean free volume, in powers of that unit.
+    estimates : mapping of str to MeanEstimate
+        Means over the frames of what :mod:`trajcage.analysis.thermodynamics` measures
+        beside the lattices.
 
     Returns
     -------
     list of dict
-        One for each lattice: `name`, `cage_status`, `free_volume`, `free_surface`
-        (in powers of that unit), `bounding_neighbors`, `weakest_window`,
-        `compressibility_factor` of the cell theory, and `free_volume_ratio` of the
-        measured mean to it.
+        One for each lattice. From the frames: `free_volume`, `free_surface`, and the
+        measured means over them, `free_volume_ratio`, `free_surface_ratio`, with the
+        errors of these. At the mean packing fraction: `name`, `cage_status`,
+        `bounding_neighbors`, `weakest_window`, `compressibility_factor` of the cell
+        theory.
     """
-    d, rows = dimensions, []
-    for name in lattice_names(d):
+    rows: list[_Row] = []
+    for name in lattice_names(dimensions):
         found = lattice_reference(name, packing_fraction)
         if found is None:
             continue
-        volume = found.free_volume * equal_diameter**d
-        row: _Row = {
-            "name": name,
-            "cage_status": found.status.name.lower(),
-            "free_volume": volume,
-            "free_surface": found.free_surface * equal_diameter ** (d - 1),
+        row: _Row = {"name": name, "cage_status": found.status.name.lower()}
+        for part in ("free_volume", "free_surface"):
+            ratio = estimates[f"lattice_{name}_{part}_ratio"]
+            row |= {
+                part: estimates[f"lattice_{name}_{part}"].mean,
+                f"{part}_ratio": ratio.mean,
+                f"{part}_ratio_error": ratio.error,
+            }
+        row |= {
             "bounding_neighbors": found.bounding_neighbors,
             "weakest_window": found.weakest_window,
             "compressibility_factor": found.compressibility_factor,
-            "free_volume_ratio": free_volume_mean / volume if volume else math.nan,
         }
         rows.append(row)
     return rows

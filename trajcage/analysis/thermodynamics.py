@@ -107,15 +107,24 @@ def fields(dimensions: int) -> tuple[Field, ...]:
             shape=(2,),
         ),
         *(
-            scalar(
-                f"lattice_{name}_free_volume",
-                f"Free volume on the ideal {name} lattice of equal particles at this "
-                "packing fraction and number density; NaN where it does not exist or "
-                "its cages are open",
-                f"length+{d}",
-            )
+            scalar(f"lattice_{name}_{part}", description, unit)
             for name in lattice_names(d)
+            for part, description, unit in _lattice_parts(name, d)
         ),
+    )
+
+
+def _lattice_parts(name: str, d: int) -> tuple[tuple[str, str, str], ...]:
+    """Name, description and unit of what stands beside an ideal lattice."""
+    where = (
+        f"on the ideal {name} lattice of equal particles at this packing fraction and "
+        "number density; NaN where it does not exist or its cages are open"
+    )
+    return (
+        ("free_volume", f"Free volume {where}", f"length+{d}"),
+        ("free_surface", f"Free surface {where}", f"length+{d - 1}"),
+        ("free_volume_ratio", f"free_volume_mean over the free volume {where}", "1"),
+        ("free_surface_ratio", f"free_surface_mean over the free surface {where}", "1"),
     )
 
 
@@ -143,17 +152,17 @@ def measure_thermodynamics(
     d, phi, counts = frame.dimensions, frame.packing_fraction, table.counts
     closed = table.closed
     factor, status = compressibility_factor(frame, table)
-    unit, sigma = equal_diameter(frame) ** d, frame.mean_diameter
-    references = {name: lattice_reference(name, phi) for name in lattice_names(d)}
+    sigma = frame.mean_diameter
+    volume, surface = table.mean_free_volume, _mean(table.free_surface[closed])
     with np.errstate(divide="ignore"):  # jammed particles have no free volume
         logarithm = _mean(np.log(table.free_volume[closed]))
     return {
         "packing_fraction": phi,
         "closed_fraction": counts["closed"] / len(table),
         **{f"cages_{name}": n for name, n in counts.items() if name != "closed"},
-        "free_volume_mean": table.mean_free_volume,
+        "free_volume_mean": volume,
         "free_volume_geometric_mean": math.exp(logarithm),
-        "free_surface_mean": _mean(table.free_surface[closed]),
+        "free_surface_mean": surface,
         "bounding_neighbors_mean": _mean(table.bounding_neighbors[closed]),
         "weakest_window_mean": _mean(table.weakest_window[closed]),
         "compressibility_factor": factor,
@@ -163,13 +172,29 @@ def measure_thermodynamics(
         "overlap_tolerance": tolerance,
         "deepest_overlap": overlaps.deepest,
         "deepest_overlap_ids": np.array(overlaps.pair, dtype=np.int64),
-        **{
-            f"lattice_{name}_free_volume": (
-                math.nan if found is None else found.free_volume * unit
-            )
-            for name, found in references.items()
-        },
+        **_beside_lattices(phi, equal_diameter(frame), volume, surface, d),
     }
+
+
+def _beside_lattices(
+    phi: float, diameter: float, volume: float, surface: float, d: int
+) -> dict[str, float]:
+    """Cages of the ideal lattices of equal particles, and the measured means over them."""
+    values: dict[str, float] = {}
+    for name in lattice_names(d):
+        found = lattice_reference(name, phi)
+        size = area = math.nan
+        if found is not None:
+            size = found.free_volume * diameter**d
+            area = found.free_surface * diameter ** (d - 1)
+        values |= {
+            f"lattice_{name}_free_volume": size,
+            f"lattice_{name}_free_surface": area,
+            # close packing leaves nothing to compare with
+            f"lattice_{name}_free_volume_ratio": volume / size if size else math.nan,
+            f"lattice_{name}_free_surface_ratio": surface / area if area else math.nan,
+        }
+    return values
 
 
 def compressibility_factor(
