@@ -30,21 +30,22 @@ def pack_arrays(arrays: Mapping[str, NDArray[np.generic]]) -> bytes:
     UsageError
         If an array holds Python objects.
     """
-    out = io.BytesIO()
-    out.write(b"\0" * _HEAD.size)
+    parts: list[bytes | memoryview] = []
     for name, array in arrays.items():
-        values = np.asarray(array)
+        values = np.asarray(array, order="C")
         if values.dtype.hasobject:
             raise UsageError(f"state {name!r} holds Python objects, expected numbers")
-        body = io.BytesIO()
-        np.lib.format.write_array(body, values, allow_pickle=False)
-        key = name.encode()
-        out.write(_ITEM.pack(len(key), body.tell()))
-        out.write(key)
-        out.write(body.getbuffer())
-    data = out.getbuffer()
-    _HEAD.pack_into(data, 0, _MAGIC, zlib.crc32(data[_HEAD.size :]), len(arrays))
-    return bytes(data)
+        header = io.BytesIO()
+        np.lib.format.write_array_header_1_0(
+            header, np.lib.format.header_data_from_array_1_0(values)
+        )
+        key, start = name.encode(), header.getvalue()
+        parts += [_ITEM.pack(len(key), len(start) + values.nbytes), key, start]
+        parts.append(values.reshape(-1).view(np.uint8).data)
+    checksum = 0
+    for part in parts:
+        checksum = zlib.crc32(part, checksum)
+    return b"".join((_HEAD.pack(_MAGIC, checksum, len(arrays)), *parts))
 
 
 def unpack_arrays(data: bytes, path: Path) -> dict[str, NDArray[np.generic]]:

@@ -2,6 +2,7 @@
 
 import json
 from collections.abc import Iterator, Sequence
+from functools import cached_property
 from pathlib import Path
 from types import TracebackType
 from typing import Any, Self
@@ -81,7 +82,8 @@ class Result:
             (self._observables, False),
         ):
             for name, item in group.items():
-                if "value" not in item or not hasattr(item, "keys"):
+                # of a dataset, "in" would look through all values
+                if not hasattr(item, "keys") or "value" not in item:
                     continue
                 series = Series(item["value"], 0, self.path)
                 yield (
@@ -258,7 +260,7 @@ class Result:
             raise self._unknown("array", name, self.arrays)
         with guard(self.path, f"reading array {name}"):
             dataset = self._file["trajcage"][name]
-            if read_text(dataset.attrs, "kind") == "array":
+            if self._kinds[name] == "array":
                 valid = self._commit.arrays_frames >= 0
                 rows = self._commit.rows[name] if valid else 0
                 return np.asarray(Series(dataset, rows, self.path))
@@ -367,16 +369,20 @@ class Result:
             f"{', '.join(sorted(known))}"
         )
 
-    def _named(self, kind: str) -> list[str]:
-        names: list[str] = []
+    @cached_property
+    def _kinds(self) -> dict[str, str]:
+        """What each object below /trajcage is; nothing is added to a file later."""
+        kinds: dict[str, str] = {}
 
         def visit(name: str, item: Any) -> None:
-            if read_text(item.attrs, "kind") == kind:
-                names.append(name)
+            kinds[name] = read_text(item.attrs, "kind")
 
         with guard(self.path, "reading"):
             self._file["trajcage"].visititems(visit)
-        return names
+        return kinds
+
+    def _named(self, kind: str) -> list[str]:
+        return [name for name, found in self._kinds.items() if found == kind]
 
 
 def _split(values: NDArray[np.generic], offsets: NDArray[np.int64]) -> Any:
