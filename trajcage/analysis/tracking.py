@@ -9,6 +9,8 @@ from trajcage.analysis.regions import RegionTable
 
 __all__ = ["RegionTracker"]
 
+_UNLISTED = 255  # in place of a kind, of particles in no region of the table
+
 
 class RegionTracker:
     """Give regions lasting ids: a fold over frames in order.
@@ -42,30 +44,41 @@ class RegionTracker:
         (k,) int64
             Id of each row of the table.
         """
+        label = table.label
+        listed = label >= 0
+        kinds = np.full(len(label), _UNLISTED, dtype=np.uint8)
+        kinds[listed] = table.kind[label[listed]]
+        if np.array_equal(particle_ids, self._particle_ids):  # no need to look them up
+            same = listed & (kinds == self._kinds)
+            now, known = label[same], self._region_ids[same]
+        else:
+            _, here, before = np.intersect1d(
+                particle_ids,
+                self._particle_ids,
+                assume_unique=True,
+                return_indices=True,
+            )
+            same = listed[here] & (kinds[here] == self._kinds[before])
+            now, known = label[here[same]], self._region_ids[before[same]]
+        # Row and id in one number are sorted faster than pairs are.
+        n_ids = max(self._next, 1)
+        packed, overlap = np.unique(now * n_ids + known, return_counts=True)
+        rows, olds = packed // n_ids, packed % n_ids
         ids = np.full(len(table.kind), -1, dtype=np.int64)
-        member = table.label >= 0
-        particles, label = particle_ids[member], table.label[member]
-        _, now, before = np.intersect1d(
-            particles, self._particle_ids, assume_unique=True, return_indices=True
-        )
-        same = table.kind[label[now]] == self._kinds[before]
-        now, before = now[same], before[same]
-        pairs, overlap = np.unique(
-            np.stack([label[now], self._region_ids[before]]), axis=1, return_counts=True
-        )
         taken: set[int] = set()
         # Ties go to the older id and the larger region, so the outcome is unique.
-        for k in np.lexsort((pairs[0], pairs[1], -overlap)):
-            row, known = int(pairs[0, k]), int(pairs[1, k])
-            if ids[row] < 0 and known not in taken:
-                ids[row] = known
-                taken.add(known)
+        for k in np.lexsort((rows, olds, -overlap)):
+            row, old = int(rows[k]), int(olds[k])
+            if ids[row] < 0 and old not in taken:
+                ids[row] = old
+                taken.add(old)
         new = np.flatnonzero(ids < 0)
         ids[new] = self._next + np.arange(len(new))
         self._next += len(new)
-        self._particle_ids = particles.copy()
-        self._region_ids = ids[label]
-        self._kinds = table.kind[label]
+        self._particle_ids = particle_ids.copy()
+        self._region_ids = np.full(len(label), -1, dtype=np.int64)
+        self._region_ids[listed] = ids[label[listed]]
+        self._kinds = kinds
         return ids
 
     def state(self) -> dict[str, NDArray[np.generic]]:

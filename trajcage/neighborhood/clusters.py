@@ -29,12 +29,12 @@ def connected_groups(
         first particles; single particles are groups.
     """
     n = neighbors.n_particles
-    ends = np.concatenate(([0], np.cumsum(linked)))[neighbors.offsets]
-    graph = csr_array(
-        (np.ones(ends[-1], dtype=np.int8), neighbors.neighbors[linked], ends),
-        shape=(n, n),
-    )
-    n_groups, found = connected_components(graph, directed=False)
+    ends = np.concatenate(([0], np.cumsum(linked, dtype=np.int32)))[neighbors.offsets]
+    others = neighbors.neighbors[linked].astype(np.int32)
+    graph = csr_array((np.ones(len(others)), others, ends), shape=(n, n))
+    # With bonds both ways, connected is strongly connected, which is found without
+    # the transposed graph.
+    n_groups, found = connected_components(graph, connection="strong")
     label = np.asarray(found, dtype=np.int64)
     first = np.empty(n_groups, dtype=np.int64)
     first[label[::-1]] = np.arange(n)[::-1]
