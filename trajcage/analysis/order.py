@@ -8,7 +8,6 @@ from numpy.typing import NDArray
 
 from trajcage.analysis.structure import Structure, classify_plane, classify_space
 from trajcage.errors import UsageError
-from trajcage.kernel.harmonics import aligned_bonds
 from trajcage.model import Field, Frame, NeighborList
 from trajcage.neighborhood import hexatic, neighbor_list, steinhardt
 
@@ -130,11 +129,14 @@ def measure_order(
         open edge.
     """
     neighbors, certain, cutoff = order_neighbors(frame, cells, options)
-    if not certain.all():  # averages reach one shell further
-        unsettled = neighbors.particles[~certain[neighbors.neighbors]]
-        certain = certain & (np.bincount(unsettled, minlength=len(certain)) == 0)
+    unsettled = np.bincount(
+        neighbors.particles,
+        weights=~certain[neighbors.neighbors],
+        minlength=frame.n_particles,
+    )
+    certain = certain & (unsettled == 0)  # averages reach one shell further
     plane = frame.dimensions == 2
-    measured = (_plane if plane else _space)(neighbors, options)
+    measured = (_plane if plane else _space)(frame, neighbors, options)
     bonds, structure = measured["solid_bonds"], measured["structure"]
     result: dict[str, NDArray[np.generic] | float] = {
         name: np.where(certain, value, np.nan) for name, value in measured.items()
@@ -209,12 +211,18 @@ def first_shell_cutoff(frame: Frame) -> float:
 
 
 def _space(
-    neighbors: NeighborList, options: OrderOptions
+    frame: Frame, neighbors: NeighborList, options: OrderOptions
 ) -> dict[str, NDArray[np.generic]]:
-    q, w, harmonics = steinhardt(neighbors)
-    bonds = aligned_bonds(
-        neighbors.offsets, neighbors.neighbors, harmonics[1], options.bond_threshold
-    )
+    q, w, harmonics = steinhardt(frame, neighbors)
+    sixth = harmonics[1]
+    with np.errstate(invalid="ignore"):  # particles without neighbors
+        unit = sixth / np.linalg.norm(sixth, axis=1, keepdims=True)
+    # q_lm of -m is the conjugate of that of m up to a sign: m >= 0 is enough.
+    half = np.concatenate([unit[:, :1], np.sqrt(2.0) * unit[:, 1:7]], axis=1)
+    parts = np.concatenate([half.real, half.imag], axis=1)
+    i, j = neighbors.particles, neighbors.neighbors
+    product = np.einsum("ij,ij->i", parts[i], parts[j])
+    bonds = np.bincount(i[product > options.bond_threshold], minlength=len(q))
     structure = classify_space(
         np.column_stack([q, w]),
         bonds >= options.solid_bonds,
@@ -233,12 +241,12 @@ def _space(
 
 
 def _plane(
-    neighbors: NeighborList, options: OrderOptions
+    frame: Frame, neighbors: NeighborList, options: OrderOptions
 ) -> dict[str, NDArray[np.generic]]:
     i, j = neighbors.particles, neighbors.neighbors
-    moduli, bonds = [], np.zeros(neighbors.n_particles, dtype=np.int64)
+    moduli, bonds = [], np.zeros(frame.n_particles, dtype=np.int64)
     for k in (6, 4):
-        psi = hexatic(neighbors, k)
+        psi = hexatic(frame, neighbors, k)
         solid = (psi[i] * psi[j].conj()).real > options.bond_threshold_plane
         bonds = np.maximum(bonds, np.bincount(i[solid], minlength=len(bonds)))
         moduli.append(np.abs(psi))

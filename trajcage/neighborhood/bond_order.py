@@ -1,28 +1,35 @@
-"""Orientational order of neighbor bonds."""
+"""Orientational order of neighbor bonds: harmonics by freud."""
 
+from dataclasses import dataclass
+from typing import Any
+
+import freud
 import numpy as np
 from numpy.typing import NDArray
 
-from trajcage.kernel.harmonics import average_over_bonds, bond_harmonics, invariants
-from trajcage.model import NeighborList
+from trajcage.model import Frame, NeighborList
+from trajcage.neighborhood.boxes import freud_box, lower_triangle
 
 __all__ = ["hexatic", "steinhardt"]
 
 
 def steinhardt(
+    frame: Frame,
     neighbors: NeighborList,
     degrees: tuple[int, ...] = (4, 6),
     *,
     average: bool = True,
-) -> tuple[NDArray[np.float64], NDArray[np.float64], list[NDArray[np.complex128]]]:
+) -> tuple[NDArray[np.float64], NDArray[np.float64], list[NDArray[np.complex64]]]:
     """Rotation-invariant bond-order parameters in 3D.
 
     Parameters
     ----------
+    frame : Frame
+        The configuration.
     neighbors : NeighborList
         Neighbors with weights; a bond counts in proportion to its weight.
     degrees : tuple of int
-        Degrees l of the spherical harmonics, even.
+        Degrees l of the spherical harmonics.
     average : bool
         Whether the harmonics are first averaged over the particle and its
         neighbors.
@@ -31,38 +38,36 @@ def steinhardt(
     -------
     q, w : (n, len(degrees)) float64
         q_l, and w_l divided by (sum_m |q_lm|^2)^(3/2). NaN without neighbors.
-    harmonics : list of (n, l + 1) complex128
-        q_lm of each particle before averaging, m = 0, 1, ..., l.
+    harmonics : list of (n, 2 l + 1) complex64
+        q_lm of each particle before averaging, in the order of freud: m = 0,
+        1, ..., l, -1, ..., -l.
 
     Notes
     -----
     Steinhardt, Nelson & Ronchetti, Phys. Rev. B 28, 784 (1983); averages:
     Lechner & Dellago, J. Chem. Phys. 129, 114707 (2008); facet weights:
-    Mickel et al., J. Chem. Phys. 138, 044501 (2013).
+    Mickel et al., J. Chem. Phys. 138, 044501 (2013). Single precision.
     """
-    offsets = neighbors.offsets
-    harmonics = [
-        bond_harmonics(offsets, neighbors.vectors, neighbors.weights, degree)
-        for degree in degrees
-    ]
-    found = [
-        invariants(
-            average_over_bonds(offsets, neighbors.neighbors, q) if average else q
-        )
-        for q in harmonics
-    ]
+    order = freud.order.Steinhardt(
+        list(degrees), average=average, wl=True, weighted=True, wl_normalize=True
+    )
+    bonds = _bonds(frame, neighbors)
+    order.compute(bonds.system, neighbors=bonds.neighbors)
+    n, kinds = frame.n_particles, len(degrees)
     return (
-        np.column_stack([q for q, _ in found]),
-        np.column_stack([w for _, w in found]),
-        harmonics,
+        np.asarray(order.ql, dtype=np.float64).reshape(-1, kinds)[:n],
+        np.asarray(order.particle_order, dtype=np.float64).reshape(-1, kinds)[:n],
+        [np.asarray(harmonics)[:n] for harmonics in order.particle_harmonics],
     )
 
 
-def hexatic(neighbors: NeighborList, k: int) -> NDArray[np.complex128]:
+def hexatic(frame: Frame, neighbors: NeighborList, k: int) -> NDArray[np.complex128]:
     """Bond-orientational order psi_k of each particle in 2D, (n,) complex128.
 
     Parameters
     ----------
+    frame : Frame
+        The configuration.
     neighbors : NeighborList
         Neighbors with weights; a bond counts in proportion to its weight.
     k : int
@@ -72,15 +77,56 @@ def hexatic(neighbors: NeighborList, k: int) -> NDArray[np.complex128]:
     -----
     Weights by facet length as in Mickel et al. (2013). NaN without neighbors.
     """
-    x, y = neighbors.vectors.T
-    turned = np.exp(1j * k * np.arctan2(y, x))
-    sums = [
-        np.bincount(neighbors.particles, values, neighbors.n_particles)
-        for values in (
-            neighbors.weights * turned.real,
-            neighbors.weights * turned.imag,
-            neighbors.weights,
-        )
-    ]
-    with np.errstate(invalid="ignore"):  # particles without neighbors
-        return np.asarray((sums[0] + 1j * sums[1]) / sums[2], dtype=np.complex128)
+    order = freud.order.Hexatic(k=k, weighted=True)
+    bonds = _bonds(frame, neighbors)
+    order.compute(bonds.system, neighbors=bonds.neighbors)
+    return np.asarray(order.particle_order, dtype=np.complex128)[: frame.n_particles]
+
+
+@dataclass(frozen=True)
+class _Bonds:
+    """Points and bonds as freud takes them; the first n points are the frame's."""
+
+    system: tuple[Any, NDArray[np.float32]]
+    neighbors: Any
+
+
+def _bonds(frame: Frame, neighbors: NeighborList) -> _Bonds:
+    """Hand bonds to freud, which takes their vectors from the wrapped points.
+
+    It sees the nearest image only. So the box is repeated, and stretched along
+    open edges, until every bond is shorter than half of it.
+    """
+    d, n = frame.dimensions, frame.n_particles
+    lengths = neighbors.distances
+    longest = float(lengths.max()) if len(lengths) else 0.0
+    vectors = frame.box.vectors
+    needed = 2.0 * longest * (1.0 + 1e-6) / frame.box.heights
+    is_open = np.logical_not(frame.box.periodic)
+    vectors = vectors * np.where(is_open, np.maximum(needed, 1.0), 1.0)[:, None]
+    repeats = np.where(is_open, 1, np.maximum(np.ceil(needed), 1)).astype(np.int64)
+    cells = np.indices(tuple(repeats.tolist())).reshape(d, -1).T
+    fractional = frame.box.wrap(frame.positions) @ np.linalg.inv(vectors)
+    i, j = neighbors.particles, neighbors.neighbors
+    turns = neighbors.vectors @ np.linalg.inv(vectors) + fractional[i] - fractional[j]
+    ends = np.round(turns).astype(np.int64) + cells[:, None]
+    cell = np.ravel_multi_index(tuple(np.moveaxis(ends % repeats, -1, 0)), repeats)
+    start = (i + n * np.arange(len(cells))[:, None]).ravel()
+    points = np.zeros((n * len(cells), 3))
+    unit = float(lengths.mean()) if longest > 0.0 else 1.0
+    one_cell = lower_triangle(vectors) / unit
+    triangular = one_cell * repeats[:, None]
+    spread = (fractional + cells[:, None]).reshape(-1, d) / repeats
+    points[:, :d] = (spread - np.floor(spread) - 0.5) @ triangular
+    bonds = np.zeros((len(i), 3), dtype=np.float32)
+    bonds[:, :d] = neighbors.vectors @ np.linalg.inv(vectors) @ one_cell
+    weights = neighbors.weights / neighbors.weights.mean() if len(i) else np.ones(0)
+    listed = freud.locality.NeighborList.from_arrays(
+        len(points),
+        len(points),
+        start.astype(np.uint32),
+        (j + n * cell).ravel().astype(np.uint32),
+        np.tile(bonds, (len(cells), 1)),
+        np.tile(weights.astype(np.float32), len(cells)),
+    )
+    return _Bonds((freud_box(triangular), points.astype(np.float32)), listed)

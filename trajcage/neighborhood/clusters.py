@@ -1,9 +1,8 @@
-"""Connected groups of particles."""
+"""Connected groups of particles, by freud."""
 
+import freud
 import numpy as np
 from numpy.typing import NDArray
-from scipy.sparse import csr_array
-from scipy.sparse.csgraph import connected_components
 
 from trajcage.model import NeighborList
 
@@ -25,19 +24,19 @@ def connected_groups(
     Returns
     -------
     (n,) int64
-        Group of each particle, 0 for the largest, equal ones in the order of their
-        first particles; single particles are groups.
+        Group of each particle, 0 for the largest; single particles are groups.
     """
     n = neighbors.n_particles
-    ends = np.concatenate(([0], np.cumsum(linked, dtype=np.int32)))[neighbors.offsets]
-    others = neighbors.neighbors[linked].astype(np.int32)
-    graph = csr_array((np.ones(len(others)), others, ends), shape=(n, n))
-    # With bonds both ways, connected is strongly connected, which is found without
-    # the transposed graph.
-    n_groups, found = connected_components(graph, connection="strong")
-    label = np.asarray(found, dtype=np.int64)
-    first = np.empty(n_groups, dtype=np.int64)
-    first[label[::-1]] = np.arange(n)[::-1]
-    rank = np.empty(n_groups, dtype=np.int64)
-    rank[np.lexsort((first, -np.bincount(label)))] = np.arange(n_groups)
-    return rank[label]
+    i, j = neighbors.particles[linked], neighbors.neighbors[linked]
+    bonds = freud.locality.NeighborList.from_arrays(
+        n,
+        n,
+        i.astype(np.uint32),
+        j.astype(np.uint32),
+        np.ones((len(i), 3), dtype=np.float32),
+    )
+    # Only the bonds matter: freud asks for a box and points, but does not use them.
+    points = np.zeros((n, 3), dtype=np.float32)
+    cluster = freud.cluster.Cluster()
+    cluster.compute((freud.box.Box.cube(1.0), points), neighbors=bonds)
+    return np.asarray(cluster.cluster_idx, dtype=np.int64)

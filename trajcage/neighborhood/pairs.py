@@ -2,9 +2,9 @@
 
 from collections.abc import Callable
 
+import freud
 import numpy as np
 from numpy.typing import NDArray
-from scipy.spatial import cKDTree
 
 from trajcage.errors import UsageError
 from trajcage.model import Box, Frame, NeighborList
@@ -41,8 +41,8 @@ def neighbor_list(
     Returns
     -------
     NeighborList
-        Both i-j and j-i, with exactly opposite vectors; weights are 1. In each
-        row the particles inside the box come first, by index, then images.
+        Both i-j and j-i, with exactly opposite vectors; weights are 1. The
+        order inside a row is reproducible but not sorted.
 
     Raises
     ------
@@ -52,7 +52,8 @@ def neighbor_list(
     Notes
     -----
     Images within the cut-off of the box are laid out explicitly around it and
-    searched together with it, which serves small, tilted and open boxes alike.
+    freud searches them in an open, padded box. This serves small, tilted and
+    open boxes alike, which freud's own pair queries refuse or get wrong.
     """
     radii = frame.radii
     if callable(r_max):
@@ -65,14 +66,13 @@ def neighbor_list(
     positions = frame.box.wrap(frame.positions)
     source, turns = _images(frame.box, positions, reach)
     shifts = turns @ frame.box.vectors
-    i, k = _propose(positions[source] + shifts, len(positions), reach)
+    i, k = _propose(positions, positions[source] + shifts, reach)
     j = source[k]
     # This order of operations makes the vectors of i-j and j-i exact opposites.
     vectors = (positions[j] - positions[i]) + shifts[k]
     limit = r_max(radii[i], radii[j]) if callable(r_max) else reach
     keep = np.einsum("ij,ij->i", vectors, vectors) <= np.square(limit)
-    if not self_images:
-        keep &= j != i
+    keep &= (k != i) if self_images else (j != i)
     counts = np.bincount(i[keep], minlength=frame.n_particles)
     return NeighborList(
         offsets=np.concatenate(([0], np.cumsum(counts))),
@@ -142,19 +142,23 @@ def _images(
 
 
 def _propose(
-    points: NDArray[np.float64], n: int, reach: float
+    queries: NDArray[np.float64], points: NDArray[np.float64], reach: float
 ) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
-    """Find all pairs of one of the first `n` points and any other, by index.
-
-    Sorted; a few are beyond the reach by the rounding of distances.
-    """
-    tree = cKDTree(points, balanced_tree=False, compact_nodes=False)
-    pairs = tree.query_pairs(reach * (1.0 + 1e-9), output_type="ndarray")
-    low, high = pairs[:, 0], pairs[:, 1]
-    one, both = low < n, high < n
-    # Sorting packed pairs costs less than sorting by two keys.
-    packed = np.concatenate(
-        (low[one] * len(points) + high[one], high[both] * len(points) + low[both])
+    """Find all query-point pairs within reach, and a few beyond it, by index."""
+    low, high = points.min(axis=0), points.max(axis=0)
+    center = 0.5 * (low + high)
+    side = float((high - low).max()) / reach  # in units of the reach from here on
+    r_max = 1.0 + _SINGLE * (side + 2.0)
+    box = freud.box.Box.cube(side + 3.0 * r_max)
+    search = freud.locality.AABBQuery(box, _in_space((points - center) / reach))
+    found = search.query(_in_space((queries - center) / reach), {"r_max": r_max})
+    pairs = found.toNeighborList()
+    return (
+        np.asarray(pairs.query_point_indices, dtype=np.int64),
+        np.asarray(pairs.point_indices, dtype=np.int64),
     )
-    packed.sort()
-    return packed // len(points), packed % len(points)
+
+
+def _in_space(points: NDArray[np.float64]) -> NDArray[np.float32]:
+    """Points as freud takes them: single precision, three coordinates."""
+    return np.pad(points, ((0, 0), (0, 3 - points.shape[1]))).astype(np.float32)
