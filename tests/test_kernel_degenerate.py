@@ -161,24 +161,37 @@ def test_volume_is_continuous_in_noise(name):
 
 
 @pytest.mark.parametrize(
-    ("name", "ratio"),
-    [("fcc", 1 / math.sqrt(2)), ("sc", math.sqrt(2 / 3)), ("square", 1 / math.sqrt(2))],
-)
-def test_growth_threshold_by_bisection(name, ratio):
-    """Windows open at the circumradius of their corners (closed form)."""
-    positions, vectors = lattice_sites(name, 5, 1.0)
-    first = measure(positions, vectors, ratio / 2 * 1.01, subset=np.array([0]))
+    ("name", "ratio", "before", "after"),
+    [
+        ("square", 1 / math.sqrt(2), 4, 8), ("honeycomb", math.sqrt(3) / 2, 3, 12),
+        ("sc", math.sqrt(2 / 3), 6, 26), ("bcc", math.sqrt(3) / 2, 8, 14),
+        ("fcc", 1 / math.sqrt(2), 12, 18), ("hcp", 1 / math.sqrt(2), 12, 18),
+    ],
+)  # fmt: skip
+def test_growth_threshold_by_bisection(name, ratio, before, after):
+    """Where the windows get other corners; closed form, and as the catalog has it.
 
-    def shut(diameter):
-        found = measure(positions, vectors, diameter / 2, subset=np.array([0]))
-        same = found.bounding_neighbors[0] == first.bounding_neighbors[0]
-        return 1.0 if same and found.status[0] == CLOSED else -1.0
+    Most pockets start at no size and with no wall, so the particles at the corners of
+    the windows tell of them first.
+    """
+    repeats = tuple(math.ceil(5.0 / edge) for edge in LATTICES[name].cell)
+    positions, vectors = lattice_sites(name, repeats, 1.0)
 
-    # a pocket of next to no size has no wall that counts: FCC and square grow slowly
-    close = 1e-9 if name == "sc" else 2e-4
-    assert brentq(shut, 0.99 * ratio, 1.01 * ratio, xtol=1e-12) == pytest.approx(
-        ratio, abs=close
+    def corners(diameter):
+        found = measure(
+            positions, vectors, diameter / 2, subset=np.array([0]), windows=True
+        )
+        assert found.status[0] == CLOSED
+        return len(np.unique(found.windows.neighbors))
+
+    assert corners(0.99 * ratio) == after
+    # within the shifts that break ties, 1e-10, the pockets open one after another
+    found = brentq(
+        lambda s: 0.5 - (corners(s) > before), 0.99 * ratio, 1.01 * ratio, xtol=1e-12
     )
+    assert found == pytest.approx(ratio, abs=1e-9)
+    packing_fraction = LATTICES[name].close_packing.value * found ** len(vectors)
+    assert packing_fraction == pytest.approx(thresholds(name).growth.value, abs=1e-9)
 
 
 @pytest.mark.parametrize(
@@ -190,6 +203,7 @@ def test_growth_threshold_by_bisection(name, ratio):
     ],
 )  # fmt: skip
 def test_escape_threshold_by_bisection(name, ratio):
+    """Windows open at the circumradius of their corners (closed form)."""
     repeats = tuple(math.ceil(6.0 / edge) for edge in LATTICES[name].cell)
     positions, vectors = lattice_sites(name, repeats, 1.0)
 
@@ -200,9 +214,10 @@ def test_escape_threshold_by_bisection(name, ratio):
         assert found.status[0] in (OPEN, CLOSED)
         return 1.0 if found.status[0] == CLOSED else -1.0
 
-    assert brentq(shut, 0.98 * ratio, 1.02 * ratio, xtol=1e-12) == pytest.approx(
-        ratio, abs=1e-9
-    )
+    found = brentq(shut, 0.98 * ratio, 1.02 * ratio, xtol=1e-12)
+    assert found == pytest.approx(ratio, abs=1e-9)
+    packing_fraction = LATTICES[name].close_packing.value * found ** len(vectors)
+    assert packing_fraction == pytest.approx(thresholds(name).escape.value, abs=1e-9)
 
 
 # Islands: a wide closed shell of many large spheres with small ones inside.
