@@ -3,6 +3,7 @@
 import csv
 import io
 import json
+import platform
 import signal
 import subprocess
 import sys
@@ -15,7 +16,11 @@ from click.testing import CliRunner
 
 import trajcage
 from trajcage.cli import main
+from trajcage.cli.lattice import LATTICE_NAMES
 from trajcage.cli.measure import _SKIPPABLE
+from trajcage.cli.plot import FIGURES as FIGURE_NAMES
+from trajcage.lattices import LATTICES
+from trajcage.plots import FIGURES
 from trajcage.run import FAMILIES
 from trajcage.wording import MISSING, near_miss, with_error
 
@@ -65,11 +70,17 @@ def test_the_module_is_a_program():
         text=True,
         check=True,
     )
-    assert done.stdout == f"trajcage, version {trajcage.__version__}\n"
+    told = dict(line.split(" ") for line in done.stdout.splitlines())
+    assert told["trajcage"] == trajcage.__version__
+    assert told["python"] == platform.python_version()
+    assert told["numpy"] == np.__version__
+    assert set(told) > {"numba", "MDAnalysis", "freud-analysis", "gsd", "h5py"}
 
 
-def test_skippable_families_are_those_of_the_library():
+def test_names_told_without_loading_are_those_of_the_library():
     assert set(_SKIPPABLE) == set(FAMILIES)
+    assert tuple(LATTICES) == LATTICE_NAMES
+    assert tuple(FIGURES) == FIGURE_NAMES
 
 
 def test_inspect_shows_text_and_json():
@@ -88,8 +99,13 @@ def test_measure_talks_to_stderr_only(tmp_path):
     done = call("measure", source, "-o", tmp_path / "r.h5")
     assert done.stdout == ""
     assert "1 frames of 27 particles" in done.stderr
-    quiet = call("measure", source, "-o", tmp_path / "r.h5", "--overwrite", "-q")
-    assert quiet.output == ""
+    again = ("measure", source, "-o", tmp_path / "r.h5", "--overwrite")
+    assert call(*again, "-q").output == ""
+    log = call(*again, "-v").stderr
+    assert call(*again).stderr.count("\n") == 1  # the log has ended
+    for words in (str(source), "27 particles", "overlap tolerance", "cages", " s"):
+        assert words in log
+    assert "exclude each other" in call(*again, "-q", "-v", code=2).stderr
 
 
 def test_summary_in_json_uses_the_words_of_the_file(monolayer):

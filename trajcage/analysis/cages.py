@@ -357,8 +357,9 @@ def cages(
     Notes
     -----
     The cage is the connected region, outside the exclusion spheres of all other
-    particles, that contains the center; it is found by flooding the power diagram
-    of the neighbors, and integrated in closed form.
+    particles, that contains the center (as in Sastry et al., Mol. Phys. 95, 289
+    (1998), from memory); it is found by flooding the power diagram of the neighbors,
+    and integrated in closed form.
     """
     points = np.array(positions, dtype=np.float64, order="C", ndmin=2)
     if points.ndim != 2 or points.shape[1] not in {2, 3}:

@@ -8,7 +8,6 @@ from importlib import import_module
 
 import click
 
-import trajcage
 from trajcage.errors import InterruptedRunError, TrajcageError, UsageError
 from trajcage.wording import near_miss
 
@@ -26,8 +25,10 @@ _COMMANDS = {
     "plot": "Draw the figures of a result file.",
     "report": "Write a result file as one page with figures.",
     "cage": "Draw the cage of one particle.",
-    "export": "Write a result file as CSV, extended XYZ or NPZ.",
+    "export": "Write a result file as CSV, Parquet, extended XYZ or NPZ.",
     "lattice": "Show the cages of ideal lattices.",
+    "cite": "Print what to cite.",
+    "completion": "Print the completion script of a shell.",
 }
 
 
@@ -95,12 +96,29 @@ class _Program(click.Group):
             raise _Failure(str(error)) from error
 
 
+def _print_versions(ctx: click.Context, _: click.Parameter, value: bool) -> None:
+    if not value or ctx.resilient_parsing:
+        return
+    from trajcage.versions import versions
+
+    for name, version in versions().items():
+        click.echo(f"{name} {version}")
+    ctx.exit()
+
+
 @click.group(
     cls=_Program,
     context_settings={"help_option_names": ["-h", "--help"]},
     epilog="Each command explains itself: trajcage measure --help.",
 )
-@click.version_option(trajcage.__version__, prog_name="trajcage")
+@click.option(
+    "--version",
+    is_flag=True,
+    is_eager=True,
+    expose_value=False,
+    callback=_print_versions,
+    help="Show the versions of trajcage and of what it stands on.",
+)
 def main() -> None:
     """Exact cages, free volumes and cage breaking of hard spheres and colloids.
 

@@ -6,6 +6,7 @@ from typing import Any
 import click
 
 from trajcage.cli.common import input_options
+from trajcage.cli.talk import say, talk_options
 
 __all__ = ["command"]
 
@@ -44,6 +45,7 @@ __all__ = ["command"]
     help="As for trajcage measure; that of the run for a result file.",
 )
 @click.option("--overwrite", is_flag=True, help="Replace the output if it exists.")
+@talk_options
 def command(
     *,
     particle: int,
@@ -71,8 +73,7 @@ def command(
     mesh = mesh_cage(found, particle, options, fineness=fineness)
     source = f"{(trajectory or topology).name}, frame {frame}, time {found.time:.6g}"
     write_cage(mesh, output, source, overwrite=overwrite)
-    click.echo(
+    say(
         f"wrote {output}: free volume {mesh.free_volume:.6g}, "
-        f"{len(mesh.neighbors)} bounding neighbors",
-        err=True,
+        f"{len(mesh.neighbors)} bounding neighbors"
     )

@@ -10,13 +10,37 @@ from typing import Any, TypeVar
 
 import click
 
+from trajcage.wording import near_miss
+
 __all__ = [
+    "NearChoice",
     "input_options",
     "json_option",
     "print_json",
     "result_argument",
     "table",
 ]
+
+
+class NearChoice(click.Choice[str]):
+    """One of several words; a misspelled one gets a suggestion."""
+
+    def convert(
+        self,
+        value: Any,
+        param: click.Parameter | None,
+        ctx: click.Context | None,
+    ) -> str:
+        """Return the word."""
+        if value not in self.choices:
+            self.fail(
+                f"there is no {value!r}{near_miss(str(value), self.choices)}; choose "
+                f"among {', '.join(self.choices)}",
+                param,
+                ctx,
+            )
+        return str(value)
+
 
 F = TypeVar("F", bound=Callable[..., Any])
 

@@ -2,11 +2,12 @@
 
 import sys
 from pathlib import Path
-from typing import Any
+from typing import Any, TextIO
 
 import click
 
-from trajcage.cli.common import result_argument
+from trajcage.cli.common import NearChoice, result_argument
+from trajcage.cli.talk import say, talk_options
 
 __all__ = ["command"]
 
@@ -16,9 +17,10 @@ __all__ = ["command"]
 @click.option(
     "--to",
     "form",
-    type=click.Choice(["csv", "extxyz", "npz"]),
+    type=NearChoice(["csv", "parquet", "extxyz", "npz"]),
     required=True,
-    help="CSV, extended XYZ for viewers (needs stored positions), or numpy arrays.",
+    help="CSV; Parquet for data frames (needs pyarrow, the extra trajcage[parquet]); "
+    "extended XYZ for viewers (needs stored positions); numpy arrays.",
 )
 @click.option(
     "-o",
@@ -36,12 +38,14 @@ __all__ = ["command"]
 @click.option(
     "--observables",
     is_flag=True,
-    help="CSV: one line a frame with its means, instead of one for each particle.",
+    help="CSV, Parquet: one line a frame with its means, instead of one for each "
+    "particle.",
 )
 @click.option("--start", type=int, help="First stored frame, counted from 0.")
 @click.option("--stop", type=int, help="Stored frame to stop before.")
 @click.option("--step", type=int, help="Take every so many stored frames.")
 @click.option("--overwrite", is_flag=True, help="Replace the output if it exists.")
+@talk_options
 def command(
     *,
     result: Any,
@@ -54,38 +58,47 @@ def command(
     step: int | None,
     overwrite: bool,
 ) -> None:
-    """Write a result file as CSV, extended XYZ or NPZ.
+    """Write a result file as CSV, Parquet, extended XYZ or NPZ.
 
     \b
       trajcage export cages.h5 --to csv --observables
+      trajcage export cages.h5 --to parquet --field free_volume -o cages.parquet
       trajcage export cages.h5 --to extxyz -o cages.xyz
     """
-    from trajcage.errors import ResultFileError, UsageError
-    from trajcage.run.exporting import write_csv, write_extxyz, write_npz
+    from trajcage.errors import UsageError
+    from trajcage.run.exporting import new_file, write_csv, write_extxyz, write_npz
     from trajcage.run.inputs import FrameSelection
+    from trajcage.run.parquet import write_parquet
     from trajcage.store import open_result
 
-    if observables and form != "csv":
-        raise UsageError("--observables goes with --to csv; npz holds them anyway")
-    if form == "npz" and output is None:
-        raise UsageError("--to npz writes a binary file: name it with -o")
-    if output is not None and output.exists() and not overwrite:
-        raise ResultFileError(
-            f"{output} exists; replace it with --overwrite, or choose another name"
+    if observables and form not in {"csv", "parquet"}:
+        raise UsageError(
+            "--observables goes with --to csv and --to parquet; npz holds them anyway"
         )
+    if form in {"npz", "parquet"} and output is None:
+        raise UsageError(f"--to {form} writes a binary file: name it with -o")
+    wanted = names or None
     with open_result(result) as opened:
         frames = FrameSelection(start, stop, step).of(opened.frames_complete)
-        wanted = names or None
-        if form == "npz":
-            assert output is not None
-            write_npz(opened, output, frames, wanted)
-            return
-        stream = sys.stdout if output is None else output.open("w", encoding="utf-8")
-        try:
+
+        def write_text(stream: TextIO) -> None:
             if form == "csv":
                 write_csv(opened, stream, frames, wanted, per_particle=not observables)
             else:
                 write_extxyz(opened, stream, frames, wanted)
-        finally:
-            if output is not None:
-                stream.close()
+
+        if output is None:
+            write_text(sys.stdout)
+            return
+        with new_file(output, overwrite=overwrite) as path:
+            if form == "parquet":
+                write_parquet(
+                    opened, path, frames, wanted, per_particle=not observables
+                )
+            elif form == "npz":
+                with path.open("wb") as binary:
+                    write_npz(opened, binary, frames, wanted)
+            else:
+                with path.open("w", encoding="utf-8") as text:
+                    write_text(text)
+    say(f"wrote {output}: {len(frames)} frames of {opened.n_particles} particles")

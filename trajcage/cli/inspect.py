@@ -5,6 +5,7 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from trajcage.cli.common import input_options, json_option, print_json, table
+from trajcage.cli.talk import note, talk_options
 
 if TYPE_CHECKING:
     from trajcage.run import Inspection
@@ -22,6 +23,7 @@ __all__ = ["command"]
     "coordinates unless given.",
 )
 @json_option
+@talk_options
 def command(*, as_json: bool, **given: Any) -> None:
     """Tell what is understood of an input, and refuse what makes no sense.
 
@@ -36,8 +38,8 @@ def command(*, as_json: bool, **given: Any) -> None:
         print_json(found.record())
         return
     click.echo(table(_rows(found), align="left"))
-    for note in found.notes:
-        click.echo(f"Note: {note}", err=True)
+    for text in found.notes:
+        note(text)
 
 
 def _rows(found: "Inspection") -> list[tuple[str, ...]]:

@@ -5,16 +5,36 @@ from typing import TYPE_CHECKING
 import click
 
 from trajcage.cli.common import json_option, print_json, table
+from trajcage.cli.talk import talk_options
 from trajcage.wording import MISSING, number
 
 if TYPE_CHECKING:
     from trajcage.lattices import LatticeReference, LatticeThresholds
 
-__all__ = ["command"]
+__all__ = ["LATTICE_NAMES", "command"]
+
+#: Told without loading the lattices.
+LATTICE_NAMES = (
+    "square",
+    "triangular",
+    "honeycomb",
+    "sc",
+    "bcc",
+    "fcc",
+    "hcp",
+    "diamond",
+)
 
 
 @click.command(name="lattice")
-@click.argument("names", nargs=-1, metavar="[NAME]...")
+@click.argument(
+    "names",
+    nargs=-1,
+    metavar="[NAME]...",
+    shell_complete=lambda _ctx, _param, begun: [
+        name for name in LATTICE_NAMES if name.startswith(begun)
+    ],
+)
 @click.option(
     "--packing-fraction",
     "packing_fractions",
@@ -24,6 +44,7 @@ __all__ = ["command"]
     help="Show the cage at this packing fraction; may be repeated.",
 )
 @json_option
+@talk_options
 def command(
     *, names: tuple[str, ...], packing_fractions: tuple[float, ...], as_json: bool
 ) -> None:

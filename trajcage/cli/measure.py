@@ -9,9 +9,12 @@ from pathlib import Path
 from typing import Any
 
 import click
+from click.core import ParameterSource
 
-from trajcage.cli.common import input_options
+from trajcage.cli.common import NearChoice, input_options
+from trajcage.cli.configured import configuration_options, recorded_inputs, settings
 from trajcage.cli.progress import progress_bar
+from trajcage.cli.talk import note, say, talk_options
 
 __all__ = ["command"]
 
@@ -40,6 +43,7 @@ class _Reach(click.ParamType[float]):
 
 @click.command(name="measure", short_help="Measure a trajectory.")
 @input_options
+@configuration_options
 @click.option(
     "-o",
     "--output",
@@ -68,7 +72,7 @@ class _Reach(click.ParamType[float]):
 @click.option(
     "--skip",
     multiple=True,
-    type=click.Choice(_SKIPPABLE),
+    type=NearChoice(_SKIPPABLE),
     help="Leave out a family of quantities and what builds on it; may be repeated.",
 )
 @click.option(
@@ -130,8 +134,11 @@ class _Reach(click.ParamType[float]):
 )
 @click.option("--resume", is_flag=True, help="Continue the result file if it exists.")
 @click.option("--overwrite", is_flag=True, help="Replace the result file if it exists.")
-@click.option("-q", "--quiet", is_flag=True, help="Print errors only.")
+@talk_options
+@click.pass_context
 def command(
+    context: click.Context,
+    /,
     *,
     bonded: float,
     broken: float,
@@ -139,7 +146,6 @@ def command(
     mobility_window: float | None,
     remove_drift: bool,
     contact_tolerance: float | None,
-    quiet: bool,
     output: Path,
     **given: Any,
 ) -> None:
@@ -147,17 +153,29 @@ def command(
 
     TOPOLOGY and TRAJECTORY are any files that MDAnalysis reads; a single file can be
     both. The run can be stopped at any time with Ctrl-C and continued with --resume.
+    Options can come from a TOML file or from an earlier result file; those given here
+    go first.
 
     \b
       trajcage measure melt.gsd -o cages.h5
       trajcage measure start.data run.xtc --diameter A=1.0,B=1.4 -o cages.h5
+      trajcage measure --config run.toml
+      trajcage measure longer.gsd --like cages.h5 -o longer.h5
     """
     from trajcage.analysis.contacts import ContactOptions
+    from trajcage.analysis.order import OrderOptions
+    from trajcage.analysis.regions import RegionOptions
     from trajcage.analysis.time_options import TimeOptions
     from trajcage.run import measure
 
     started = time.monotonic()
+    elsewhere = context.get_parameter_source("topology") == ParameterSource.COMMANDLINE
+    if elsewhere and context.get_parameter_source("trajectory") != (
+        ParameterSource.COMMANDLINE
+    ):
+        given["trajectory"] = None  # the configured one goes with another topology
     time_analysis = TimeOptions(
+        **settings(context, "time"),
         bonded=bonded,
         broken=broken,
         fraction_lost=fraction_lost,
@@ -168,21 +186,26 @@ def command(
         result = measure(
             output=output,
             time_analysis=time_analysis,
-            contacts=ContactOptions(tolerance=contact_tolerance),
-            progress=None if quiet else progress_bar(stack),
-            notify=None if quiet else _note,
+            contacts=ContactOptions(
+                **settings(context, "contacts"), tolerance=contact_tolerance
+            ),
+            order=OrderOptions(**settings(context, "order")),
+            regions=RegionOptions(**settings(context, "regions")),
+            progress=progress_bar(stack),
+            notify=note,
             command_line=shlex.join(["trajcage", *sys.argv[1:]]),
             **given,
         )
     with result:
         done, n = result.frames_complete, result.n_particles
-    if not quiet:
-        click.echo(
-            f"{done} frames of {n} particles in {output} "
-            f"({time.monotonic() - started:.1f} s); next: trajcage summary {output}",
-            err=True,
-        )
-
-
-def _note(text: str) -> None:
-    click.echo(f"Note: {text}", err=True)
+        inputs = result.parameters["inputs"]
+    before = {} if elsewhere else {f["name"]: f for f in recorded_inputs(context)}
+    for file in inputs:
+        if file["sha256"] != before.get(file["name"], file)["sha256"]:
+            note(
+                f"{file['name']} is not what it was when the file given with --like was measured"
+            )
+    say(
+        f"{done} frames of {n} particles in {output} "
+        f"({time.monotonic() - started:.1f} s); next: trajcage summary {output}"
+    )

@@ -8,6 +8,7 @@ from pathlib import Path
 import click
 
 from trajcage.cli.progress import progress_bar
+from trajcage.cli.talk import note, say, talk_options
 
 __all__ = ["command"]
 
@@ -28,7 +29,7 @@ _FILE = click.Path(path_type=Path)
 )
 @click.option("--trajectory", type=_FILE, help="The trajectory that goes with it.")
 @click.option("--overwrite", is_flag=True, help="Replace the output if it exists.")
-@click.option("-q", "--quiet", is_flag=True, help="Print errors only.")
+@talk_options
 def command(
     *,
     parts: tuple[Path, ...],
@@ -36,7 +37,6 @@ def command(
     topology: Path | None,
     trajectory: Path | None,
     overwrite: bool,
-    quiet: bool,
 ) -> None:
     """Put parts of one trajectory, measured apart, into one result file.
 
@@ -55,9 +55,6 @@ def command(
     if trajectory is not None and topology is None:
         raise UsageError("--trajectory goes with --topology")
 
-    def note(text: str) -> None:
-        click.echo(f"Note: {text}", err=True)
-
     with ExitStack() as stack:
         result = merge(
             parts,
@@ -65,15 +62,13 @@ def command(
             topology=topology,
             trajectory=trajectory,
             overwrite=overwrite,
-            progress=None if quiet else progress_bar(stack),
-            notify=None if quiet else note,
+            progress=progress_bar(stack),
+            notify=note,
             command_line=shlex.join(["trajcage", *sys.argv[1:]]),
         )
     with result:
         done, n = result.frames_complete, result.n_particles
-    if not quiet:
-        click.echo(
-            f"{done} frames of {n} particles from {len(parts)} parts in {output}; "
-            f"next: trajcage summary {output}",
-            err=True,
-        )
+    say(
+        f"{done} frames of {n} particles from {len(parts)} parts in {output}; "
+        f"next: trajcage summary {output}"
+    )

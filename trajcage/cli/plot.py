@@ -5,9 +5,23 @@ from typing import Any
 
 import click
 
-from trajcage.cli.common import result_argument
+from trajcage.cli.common import NearChoice, result_argument
+from trajcage.cli.talk import say, talk_options
 
-__all__ = ["command"]
+__all__ = ["FIGURES", "command"]
+
+#: Names of the figures, told without loading what draws them.
+FIGURES = (
+    "free-volume",
+    "lattices",
+    "pressure",
+    "windows",
+    "slice",
+    "regions",
+    "survival",
+    "correlations",
+    "rattlers",
+)
 
 
 @click.command(name="plot")
@@ -23,6 +37,7 @@ __all__ = ["command"]
 @click.option(
     "--only",
     "names",
+    type=NearChoice(FIGURES),
     multiple=True,
     metavar="NAME",
     help="Draw only this figure; may be repeated.",
@@ -30,12 +45,13 @@ __all__ = ["command"]
 @click.option(
     "--format",
     "form",
-    type=click.Choice(["png", "svg", "pdf"]),
+    type=NearChoice(["png", "svg", "pdf"]),
     default="png",
     show_default=True,
     help="File format.",
 )
 @click.option("--overwrite", is_flag=True, help="Replace figures that are there.")
+@talk_options
 def command(
     *, result: Any, output: Path, names: tuple[str, ...], form: str, overwrite: bool
 ) -> None:
@@ -58,9 +74,9 @@ def command(
             opened, output, names, form=form, overwrite=overwrite
         )
     for path in paths.values():
-        click.echo(f"wrote {path}", err=True)
+        say(f"wrote {path}")
     left_out = [f"{name}: {reason}" for name, reason in figures.missing.items()]
     if not paths:
         raise ResultFileError(f"no figure can be drawn. {'. '.join(left_out)}")
     for line in left_out:
-        click.echo(f"left out {line}", err=True)
+        say(f"left out {line}")

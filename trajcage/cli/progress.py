@@ -8,11 +8,15 @@ from typing import Any
 
 import click
 
+from trajcage.cli.talk import is_quiet, is_verbose
+
 __all__ = ["progress_bar"]
 
 
 def progress_bar(stack: ExitStack) -> Callable[[int, int], None] | None:
-    """Return a function of frames done and of all frames; None without a terminal.
+    """Return a function of frames done and of all frames, if there is a bar.
+
+    There is none without a terminal, and none if the user wants no talk or a log.
 
     The rate and the time left are those of this run, also when it goes on with a file
     that holds most of the frames already.
@@ -22,7 +26,7 @@ def progress_bar(stack: ExitStack) -> Callable[[int, int], None] | None:
     stack : ExitStack
         Ends the bar.
     """
-    if not sys.stderr.isatty():
+    if is_quiet() or is_verbose() or not sys.stderr.isatty():
         return None
     bars: list[Any] = []
     since: list[tuple[int, float]] = []  # frames done and time at the first call

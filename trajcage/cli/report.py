@@ -6,6 +6,7 @@ from typing import Any
 import click
 
 from trajcage.cli.common import result_argument
+from trajcage.cli.talk import say, talk_options
 
 __all__ = ["command"]
 
@@ -20,6 +21,7 @@ __all__ = ["command"]
     help="HTML file to write.",
 )
 @click.option("--overwrite", is_flag=True, help="Replace the page if it exists.")
+@talk_options
 def command(*, result: Any, output: Path, overwrite: bool) -> None:
     """Write a result file as one HTML page: warnings, numbers, figures, options.
 
@@ -33,6 +35,6 @@ def command(*, result: Any, output: Path, overwrite: bool) -> None:
 
     with open_result(result) as opened:
         figures = write_report(opened, output, overwrite=overwrite)
-    click.echo(f"wrote {output} with {len(figures.drawn)} figures", err=True)
+    say(f"wrote {output} with {len(figures.drawn)} figures")
     for name, reason in figures.missing.items():
-        click.echo(f"left out {name}: {reason}", err=True)
+        say(f"left out {name}: {reason}")

@@ -5,6 +5,7 @@ from pathlib import Path
 import click
 
 from trajcage.cli.common import result_argument
+from trajcage.cli.talk import say, talk_options
 
 __all__ = ["command"]
 
@@ -12,6 +13,7 @@ __all__ = ["command"]
 @click.command(name="salvage")
 @result_argument
 @click.argument("target", type=click.Path(path_type=Path), metavar="TARGET")
+@talk_options
 def command(*, result: Path, target: Path) -> None:
     """Copy the complete frames of a damaged file to TARGET, a new file.
 
@@ -29,4 +31,4 @@ def command(*, result: Path, target: Path) -> None:
             f"the state of the time analysis is lost: trajcage merge {target} -o NEW "
             "makes a file from these frames that can be resumed"
         )
-    click.echo(f"{frames} complete frames in {target}; {told}", err=True)
+    say(f"{frames} complete frames in {target}; {told}")

@@ -5,6 +5,7 @@ from typing import Any
 import click
 
 from trajcage.cli.common import json_option, print_json, result_argument, table
+from trajcage.cli.talk import talk_options
 from trajcage.wording import MISSING, number, with_error
 
 __all__ = ["command"]
@@ -34,16 +35,30 @@ _SHOWN = (
 @click.command(name="summary")
 @result_argument
 @json_option
-def command(*, result: Any, as_json: bool) -> None:
+@click.option(
+    "--toml",
+    "as_toml",
+    is_flag=True,
+    help="Print the options of the run instead, for trajcage measure --config.",
+)
+@talk_options
+def command(*, result: Any, as_json: bool, as_toml: bool) -> None:
     """Show means with errors beside equations of state and ideal lattices.
 
     Lengths are in mean diameters. Errors are those of the mean over frames, from
     blocking. FILE may be complete, interrupted, or just being written.
     """
-    from trajcage.errors import ResultFileError
+    from trajcage.errors import ResultFileError, UsageError
     from trajcage.store import open_result
 
+    if as_json and as_toml:
+        raise UsageError("--json prints the numbers and --toml the options: give one")
     with open_result(result) as opened:
+        if as_toml:
+            from trajcage.run.configuration import recorded_configuration, to_toml
+
+            click.echo(to_toml(recorded_configuration(opened)))
+            return
         summary = opened.summary
         frames, complete = opened.frames_complete, opened.complete
         time_unit = str(opened.parameters["time_unit"])

@@ -1,21 +1,62 @@
 """Result files as CSV, extended XYZ and NPZ for other programs."""
 
 import csv
+import os
 from collections.abc import Iterator, Sequence
+from contextlib import contextmanager
 from pathlib import Path
 from typing import IO, TextIO
 
 import numpy as np
 from numpy.typing import NDArray
 
-from trajcage.errors import UsageError
+from trajcage.errors import ResultFileError, TrajcageError, UsageError
 from trajcage.model import Field
 from trajcage.store import Result
 from trajcage.wording import near_miss
 
-__all__ = ["write_csv", "write_extxyz", "write_npz"]
+__all__ = [
+    "columns_of",
+    "export_fields",
+    "new_file",
+    "write_csv",
+    "write_extxyz",
+    "write_npz",
+]
 
 _AXES = "xyz"
+
+
+@contextmanager
+def new_file(path: Path, *, overwrite: bool) -> Iterator[Path]:
+    """Give a name to write to; the file gets its own name when all is written.
+
+    Parameters
+    ----------
+    path : path
+        The file.
+    overwrite : bool
+        Whether to replace a file that is there.
+
+    Raises
+    ------
+    ResultFileError
+        If the file is in the way or cannot be written.
+    """
+    if path.exists() and not overwrite:
+        raise ResultFileError(
+            f"{path} exists; replace it with --overwrite, or choose another name"
+        )
+    unfinished = path.with_name(f".{path.name}.{os.getpid()}")
+    try:
+        yield unfinished
+        unfinished.replace(path)
+    except OSError as error:
+        if isinstance(error, TrajcageError):
+            raise
+        raise ResultFileError(f"cannot write {path}: {error.strerror}") from error
+    finally:
+        unfinished.unlink(missing_ok=True)
 
 
 def write_csv(
@@ -46,10 +87,10 @@ def write_csv(
     UsageError
         If a field does not exist or is of the other kind.
     """
-    fields = _fields(result, names, per_particle=per_particle)
+    fields = export_fields(result, names, per_particle=per_particle)
     writer = csv.writer(stream, lineterminator="\n")
     header = ["frame", "step", "time", *(["id", "type"] if per_particle else [])]
-    writer.writerow(header + [column for f in fields for column in _columns(f)])
+    writer.writerow(header + [column for f in fields for column in columns_of(f)])
     types = np.array(result.type_names)[result.species] if per_particle else None
     steps, times, source = result.steps, result.times, result.source_frames
     for row in frames:
@@ -86,7 +127,7 @@ def write_extxyz(
             f"{result.path} holds no positions, which extended XYZ needs; measure again "
             "with --store-positions"
         )
-    fields = [f for f in _fields(result, names) if f.name != "position"]
+    fields = [f for f in export_fields(result, names) if f.name != "position"]
     d = result.dimensions
     properties = ["species:S:1", "pos:R:3", "id:I:1", "radius:R:1"] + [
         f"{f.name}:{'R' if np.dtype(f.dtype).kind == 'f' else 'I'}:{_width(f)}"
@@ -126,7 +167,7 @@ def write_extxyz(
 
 def write_npz(
     result: Result,
-    file: str | Path | IO[bytes],
+    file: IO[bytes],
     frames: Sequence[int],
     names: Sequence[str] | None = None,
 ) -> None:
@@ -136,7 +177,7 @@ def write_npz(
     ----------
     result, frames, names
         As in :func:`write_csv`; fields of both kinds.
-    file : path or binary stream
+    file : binary stream
         Where to.
 
     Raises
@@ -144,7 +185,7 @@ def write_npz(
     UsageError
         If a field does not exist.
     """
-    chosen = [f.name for f in _fields(result, names, per_particle=None)]
+    chosen = [f.name for f in export_fields(result, names, per_particle=None)]
     rows = list(frames)
     arrays: dict[str, NDArray[np.generic]] = {
         name: np.asarray(result[name])[rows] for name in chosen
@@ -161,9 +202,25 @@ def write_npz(
     np.savez_compressed(file, **arrays)  # type: ignore[arg-type]  # stubs: bool flag
 
 
-def _fields(
+def export_fields(
     result: Result, names: Sequence[str] | None, *, per_particle: bool | None = True
 ) -> list[Field]:
+    """Return the fields to write.
+
+    Parameters
+    ----------
+    result : Result
+        Open result file.
+    names : sequence of str or None
+        Fields; all of that kind if None.
+    per_particle : bool or None
+        Kind: fields of particles, of frames, or both.
+
+    Raises
+    ------
+    UsageError
+        If a field does not exist or is of the other kind.
+    """
     kinds = {True: " of particles", False: " of frames", None: ""}
     known = {
         name: f
@@ -183,8 +240,8 @@ def _width(field: Field) -> int:
     return int(np.prod(field.shape, dtype=np.int64))
 
 
-def _columns(field: Field) -> Iterator[str]:
-    """Names of the columns of one field."""
+def columns_of(field: Field) -> Iterator[str]:
+    """Return the names of the columns of one field."""
     if not field.shape:
         yield field.name
         return

@@ -1,7 +1,7 @@
 """All that can be measured on one frame alone: a pure function for any process."""
 
-from collections.abc import Generator
-from dataclasses import dataclass, replace
+from collections.abc import Generator, Mapping
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -18,6 +18,7 @@ from trajcage.analysis.thermodynamics import measure_thermodynamics
 from trajcage.model import CageTable, Frame, NeighborList
 from trajcage.neighborhood import tessellate
 from trajcage.run.settings import RunSettings
+from trajcage.run.timing import Stages
 
 __all__ = ["MeasuredFrame", "MeasuredFrames", "bare", "measure_frame"]
 
@@ -37,12 +38,15 @@ class MeasuredFrame:
     bonds : NeighborList or None
         Neighbors of the bond order, without vectors and weights, if regions
         are wanted.
+    seconds : dict of str to float
+        How long each stage took.
     """
 
     frame: Frame
     cages: CageTable
     values: dict[str, NDArray[np.generic] | float | int]
     bonds: NeighborList | None
+    seconds: Mapping[str, float] = field(default_factory=dict)
 
 
 #: Measured frames in order; to be closed, which ends the processes behind it.
@@ -67,25 +71,33 @@ def measure_frame(frame: Frame, settings: RunSettings) -> MeasuredFrame:
     tolerance = settings.cages.overlap_tolerance
     if tolerance is None:
         tolerance = default_overlap_tolerance(frame)
-    table, overlaps = frame_cages(frame, settings.cages, windows=settings.store_walls)
-    values: dict[str, NDArray[np.generic] | float | int] = {**stored_values(table)}
-    values |= measure_thermodynamics(frame, table, overlaps, tolerance)
+    stages = Stages()
+    with stages.timed("cages"):
+        table, overlaps = frame_cages(
+            frame, settings.cages, windows=settings.store_walls
+        )
+        values: dict[str, NDArray[np.generic] | float | int] = {**stored_values(table)}
+        values |= measure_thermodynamics(frame, table, overlaps, tolerance)
     if settings.varying_radii:
         values["radius"] = frame.radii
     if settings.store_positions:
         values["position"] = frame.positions
     bonds = None
     if settings.has("cells"):
-        cells = tessellate(frame)
-        values |= measure_cells(frame, cells[0])
-        if settings.has("order"):
-            values |= measure_order(frame, cells, settings.order)
-        if settings.has("regions"):
-            bonds = bare(order_neighbors(frame, cells, settings.order)[0])
+        with stages.timed("cells"):
+            cells = tessellate(frame)
+            values |= measure_cells(frame, cells[0])
+        with stages.timed("order"):
+            if settings.has("order"):
+                values |= measure_order(frame, cells, settings.order)
+            if settings.has("regions"):
+                bonds = bare(order_neighbors(frame, cells, settings.order)[0])
     if settings.has("rattlers"):
-        values |= measure_contacts(frame, settings.contacts)
+        with stages.timed("rattlers"):
+            values |= measure_contacts(frame, settings.contacts)
     # the windows take more room than all the rest, and nothing stores them
-    return MeasuredFrame(frame, replace(table, windows=None), values, bonds)
+    table = replace(table, windows=None)
+    return MeasuredFrame(frame, table, values, bonds, stages.seconds)
 
 
 def bare(neighbors: NeighborList) -> NeighborList:

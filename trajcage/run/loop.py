@@ -1,5 +1,6 @@
 """The ordered loop of a run: fold, append, commit, and stop in good order."""
 
+import logging
 import time
 from collections.abc import Callable
 
@@ -9,9 +10,12 @@ from trajcage.errors import InterruptedRunError, TrajcageError
 from trajcage.run.fold import RunFold
 from trajcage.run.frames import MeasuredFrame, MeasuredFrames
 from trajcage.run.interruption import StopRequest
+from trajcage.run.timing import Stages
 from trajcage.store import ResultWriter
 
 __all__ = ["Progress", "fold_frames"]
+
+_LOGGER = logging.getLogger(__name__)
 
 #: Called with the frames done and the frames of the whole run.
 Progress = Callable[[int, int], None]
@@ -59,12 +63,15 @@ def fold_frames(
     InterruptedRunError
         If a signal asked to stop.
     """
-    overlapping = 0
+    overlapping, stages = 0, Stages()
     last, interval = time.monotonic(), _COMMIT_EVERY
     try:
         for frame in measured:
-            record, rows = fold.update(frame)
-            writer.append(record, rows)
+            stages.add(frame.seconds)
+            with stages.timed("fold"):
+                record, rows = fold.update(frame)
+            with stages.timed("writing"):
+                writer.append(record, rows)
             if frame.values["overlaps"]:
                 overlapping += 1
                 if overlapping == 1:
@@ -73,7 +80,8 @@ def fold_frames(
                 progress(writer.frames_complete + writer.n_pending, n_frames)
             now = time.monotonic()
             if now - last >= interval:
-                _commit(fold, writer)
+                with stages.timed("writing"):
+                    _commit(fold, writer)
                 last = time.monotonic()
                 interval = max(_COMMIT_EVERY, _COMMIT_SHARE * (last - now))
             if stop.signal is not None:
@@ -92,8 +100,10 @@ def fold_frames(
             f"stopped by {stop.signal} after {writer.frames_complete} of {n_frames} "
             f"frames, which are in {writer.path}; continue with --resume"
         )
-    arrays, summary = fold.conclude()
-    writer.finish(arrays=arrays, summary=summary, state=fold.state())
+    with stages.timed("writing"):
+        arrays, summary = fold.conclude()
+        writer.finish(arrays=arrays, summary=summary, state=fold.state())
+    _LOGGER.info("time by stage, summed over workers: %s", stages)
 
 
 def _commit(fold: RunFold, writer: ResultWriter) -> None:

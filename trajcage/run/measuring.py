@@ -1,6 +1,7 @@
 """The main job: from a trajectory to one result file."""
 
 import contextlib
+import logging
 import os
 from collections.abc import Callable, Collection, Sequence
 from dataclasses import asdict, replace
@@ -15,7 +16,7 @@ from trajcage.analysis.regions import RegionOptions
 from trajcage.analysis.time_options import TimeOptions
 from trajcage.errors import FrameError, ResultFileError, UsageError
 from trajcage.model import Frame
-from trajcage.readers import Trajectory, open_trajectory
+from trajcage.readers import InputDescription, Trajectory, open_trajectory
 from trajcage.run.fold import RunFold
 from trajcage.run.frames import MeasuredFrame, MeasuredFrames
 from trajcage.run.growth import accept_growth, check_same_frames
@@ -29,6 +30,8 @@ from trajcage.run.workers import measured_frames
 from trajcage.store import Result, open_result
 
 __all__ = ["measure"]
+
+_LOGGER = logging.getLogger(__name__)
 
 
 def measure(
@@ -192,10 +195,12 @@ def measure(
         if _radii_vary(opened, first, frames[-1]):
             settings = replace(settings, varying_radii=True)
         description = opened.describe()
+        _log_input(description, frames)
         for text in (*description.notes, check_packing(first)):
             if text:
                 note(text)
         inputs = describe_inputs(source)
+        _LOGGER.info("sha256 of the input taken")
         options = flat(
             {
                 "inputs": [{k: file[k] for k in ("size", "sha256")} for file in inputs],
@@ -206,10 +211,13 @@ def measure(
         record = parameters(options, inputs, description, notes, command_line)
         fold = RunFold(settings, first, inputs)
         n_workers = workers or len(os.sched_getaffinity(0))
+        _LOGGER.info("measuring with %d processes", n_workers)
         measured = measured_frames(opened, frames, settings, n_workers, note, dask)
         if not resume:
             # a first frame that fails leaves no file, and an old one alone
-            measured = _put_back(next(measured), measured)
+            head = next(measured)
+            _log_first(head)
+            measured = _put_back(head, measured)
         with StopRequest() as stopping:
             if resume:
                 trajectory_name = str(source.trajectory or source.topology)
@@ -243,6 +251,32 @@ def measure(
 def _put_back(first: MeasuredFrame, rest: MeasuredFrames) -> MeasuredFrames:
     yield first
     yield from rest
+
+
+def _log_input(told: InputDescription, frames: range) -> None:
+    _LOGGER.info("read %s as %s", ", ".join(told.files), told.format)
+    _LOGGER.info("%d particles, %d dimensions", told.n_particles, told.dimensions)
+    for source in (
+        told.dimensions_source,
+        told.box_source,
+        told.periodic_source,
+        told.radii_source,
+        told.time_source,
+    ):
+        _LOGGER.info("%s", source)
+    _LOGGER.info("%d of %d frames chosen: %s", len(frames), told.n_frames, frames)
+
+
+def _log_first(measured: MeasuredFrame) -> None:
+    """Tell what was chosen for the first frame, and how long it took."""
+    told = {
+        name.replace("_", " "): measured.values[name]
+        for name in ("overlap_tolerance", "contact_tolerance")
+        if name in measured.values
+    }
+    _LOGGER.info("%s", ", ".join(f"{name} {x:.3g}" for name, x in told.items()))
+    took = sum(measured.seconds.values())
+    _LOGGER.info("first frame measured in %.3g s, compiling or loading included", took)
 
 
 def _radii_vary(trajectory: Trajectory, first: Frame, last: int) -> bool:

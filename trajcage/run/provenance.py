@@ -4,17 +4,14 @@ import math
 import platform
 from collections.abc import Mapping
 from dataclasses import asdict
-from importlib import metadata
 from pathlib import Path
 from typing import Any
 
-import trajcage
 from trajcage.readers import InputDescription, InputOptions
 from trajcage.store import describe_file
+from trajcage.versions import versions
 
 __all__ = ["describe_inputs", "flat", "parameters", "under"]
-
-_LIBRARIES = ("MDAnalysis", "freud-analysis", "gsd", "h5py", "numba", "numpy", "scipy")
 
 
 def describe_inputs(options: InputOptions) -> list[dict[str, str | int]]:
@@ -70,14 +67,12 @@ def parameters(
     command_line : str or None
         The command, if there was one.
     """
-    versions = {"trajcage": trajcage.__version__, "python": platform.python_version()}
-    versions |= {name: metadata.version(name) for name in _LIBRARIES}
     return {
         "options": options,
         "inputs": inputs,
         "input": asdict(description),
         "notes": notes,
-        "versions": versions,
+        "versions": versions(),
         "platform": platform.platform(),
         "command_line": command_line or "library call",
     }
