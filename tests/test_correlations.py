@@ -57,17 +57,22 @@ def test_independent_brownian_walkers(dimensions):
             assert error < (0.5 if name == "chi_4" else 0.05), (name, lag)
 
 
-def test_against_direct_sums_over_the_same_origins():
+@pytest.mark.parametrize(
+    ("longest", "interval"), [(3, 3), (4, 4), (16, 8), (12, 6), (1024, 256)]
+)
+def test_against_direct_sums_over_the_same_origins(longest, interval):
+    # origins stand a quarter of the longest interval apart until sixteen such intervals
+    # have passed, then a half, and are evenly spaced over the record all the same
     rng = np.random.default_rng(3)
     sites, box = triangular(4, 1.2)
     paths = sites + np.cumsum(rng.normal(0.0, 0.05, (70, *sites.shape)), axis=0)
-    options = TimeOptions(origin_interval=3, max_lag=40, bonded=1.3, broken=1.5)
+    options = TimeOptions(origin_interval=longest, max_lag=40, bonded=1.3, broken=1.5)
     table = table_of(paths, box, options)
     plan = options.plan(1.0)
     assert table["lag_frames"].tolist() == plan.lags()
     n = len(sites)
     for row, lag in enumerate(plan.lags()):
-        origins = np.arange(0, len(paths) - lag, plan.spacing(lag))
+        origins = np.arange(0, len(paths) - lag, plan.spacing(lag, interval))
         assert table["n_origins"][row] == len(origins)
         assert table["lag"][row] == lag
         sums = np.zeros(8)
@@ -184,7 +189,8 @@ def test_columns_are_as_declared():
 def test_lags_and_origins_of_a_plan():
     plan = CorrelationPlan(100, 5, 1, 0.3, 6.0, 1.35, 1.6, 0.5)
     assert plan.lags() == [1, 2, 4, 8, 16, 32, 64]
-    assert [plan.spacing(lag) for lag in plan.lags()] == [5, 5, 5, 5, 5, 10, 20]
+    spacings = [plan.spacing(lag, 5) for lag in plan.lags()]
+    assert spacings == [5, 5, 5, 5, 5, 10, 20]
     with pytest.raises(UsageError, match="max_lag of 1 or more, got 0"):
         TimeOptions(max_lag=0)
     with pytest.raises(UsageError, match="positive wave_number, got -1"):
@@ -206,3 +212,10 @@ def test_a_variance_needs_four_origins():
     assert result.summary["chi_4_peak_lag"] == table["lag"][peak]
     fold, *_ = run(paths[:4], box, EVERY)
     assert "four or more" in fold.conclude().reasons["chi_4_peak"]
+    # Unless told otherwise, fourteen frames have a lag with four origins.
+    for n_frames, known in ((13, False), (14, True)):
+        longer = np.concatenate((paths, paths))[:n_frames]
+        fold, *_ = run(longer, box, TimeOptions())
+        reasons = fold.conclude().reasons
+        assert ("chi_4_peak" not in reasons) == known
+        assert known or "too few frames" in reasons["chi_4_peak"]

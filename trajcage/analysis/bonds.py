@@ -26,14 +26,36 @@ class Bonds:
     ----------
     first, second : (m,) int64
         Particle indices.
-    shifts : (d, m) int32
-        Box vectors to add to the continuous positions of `second` for that
-        image. It stays the same image when particles cross boundaries.
+    crossing : (k,) int64
+        Bonds, ascending, to other images of `second` than the one at its continuous
+        position.
+    shifts : (d, k) int32
+        Box vectors to add to that position for them. It stays the same image when
+        particles cross boundaries.
     """
 
     first: NDArray[np.int64]
     second: NDArray[np.int64]
+    crossing: NDArray[np.int64]
     shifts: NDArray[np.int32]
+
+    @classmethod
+    def none(cls, dimensions: int) -> Self:
+        """No bonds at all."""
+        empty = np.zeros(0, dtype=np.int64)
+        return cls(empty, empty, empty, np.zeros((dimensions, 0), dtype=np.int32))
+
+    @classmethod
+    def build(
+        cls,
+        first: NDArray[np.int64],
+        second: NDArray[np.int64],
+        turns: NDArray[np.float64],
+    ) -> Self:
+        """Make bonds from whole turns (m, d) around the box."""
+        crossing = np.flatnonzero(turns.any(axis=1))
+        shifts = np.ascontiguousarray(turns[crossing].T, dtype=np.int32)
+        return cls(first, second, crossing, shifts)
 
     def __len__(self) -> int:
         return len(self.first)
@@ -46,17 +68,21 @@ class Bonds:
             delta = along.take(self.second)
             delta -= along.take(self.first)
             for edge in np.flatnonzero(box.vectors[:, axis]):
-                delta += self.shifts[edge] * box.vectors[edge, axis]
+                delta[self.crossing] += self.shifts[edge] * box.vectors[edge, axis]
             delta *= delta
             total += delta
         return total
 
     def select(self, which: NDArray[np.int64]) -> Self:
-        """Keep the bonds at these places of the arrays."""
+        """Keep the bonds at these places of the arrays, ascending."""
+        kept = np.zeros(len(self), dtype=np.bool_)
+        kept[which] = True
+        still = np.flatnonzero(kept[self.crossing])
         return type(self)(
             self.first.take(which),
             self.second.take(which),
-            self.shifts.take(which, axis=1),
+            np.searchsorted(which, self.crossing[still]),
+            self.shifts.take(still, axis=1),
         )
 
     def join(self, other: Self) -> Self:
@@ -64,6 +90,7 @@ class Bonds:
         return type(self)(
             np.concatenate((self.first, other.first)),
             np.concatenate((self.second, other.second)),
+            np.concatenate((self.crossing, other.crossing + len(self))),
             np.concatenate((self.shifts, other.shifts), axis=1),
         )
 
@@ -72,6 +99,7 @@ class Bonds:
         return {
             "first": self.first.astype(np.int32),
             "second": self.second.astype(np.int32),
+            "crossing": self.crossing.astype(np.int32),
             "shifts": self.shifts.copy(),
         }
 
@@ -81,6 +109,7 @@ class Bonds:
         return cls(
             np.array(state["first"], dtype=np.int64),
             np.array(state["second"], dtype=np.int64),
+            np.array(state["crossing"], dtype=np.int64),
             np.array(state["shifts"], dtype=np.int32),
         )
 
@@ -101,7 +130,7 @@ def all_bonds(frame: Frame, motion: Motion, factor: float) -> Bonds:
     first, second = pairs.particles, pairs.neighbors
     apart = motion.positions[second] - motion.positions[first]
     turns = along_edges(pairs.vectors - apart, np.linalg.inv(frame.box.vectors))
-    return Bonds(first, second, _columns(np.rint(turns)))
+    return Bonds.build(first, second, np.rint(turns))
 
 
 def bonds_of(
@@ -146,7 +175,7 @@ def bonds_of(
     contact = frame.radii[first] + frame.radii[second]
     bonded = np.einsum("ij,ij->i", vectors, vectors) <= np.square(factor * contact)
     bonded &= first != second
-    return Bonds(first[bonded], second[bonded], _columns(turns[bonded]))
+    return Bonds.build(first[bonded], second[bonded], turns[bonded])
 
 
 def _close_along(
@@ -169,7 +198,3 @@ def _close_along(
         first.append(np.repeat(particles, counts))
         second.append(order[np.repeat(start, counts) + rank])
     return np.concatenate(first), np.concatenate(second)
-
-
-def _columns(turns: NDArray[np.float64]) -> NDArray[np.int32]:
-    return np.ascontiguousarray(turns.T, dtype=np.int32)

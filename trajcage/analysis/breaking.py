@@ -111,13 +111,15 @@ class CageTracker:
         self._rule = rule
         self._n = n
         self._first_frame = -1
-        empty = np.zeros(0, dtype=np.int64)
-        self._bonds = Bonds(empty, empty, np.zeros((d, 0), dtype=np.int32))
+        self._bonds = Bonds.none(d)
         self._gone = np.zeros(0, dtype=np.bool_)
         self._size = np.zeros(n, dtype=np.int64)
-        self._start = Moment(n, d)  # the cage begins
-        self._before = Moment(n, d)  # still mostly whole
-        self._end = Moment(n, d)  # the loss began that has lasted until now
+        when, measured = ("frame", "step", "time"), ("region", "free_volume")
+        window = ("weakest_window", "corners")
+        # the cage begins; it is still mostly whole; the loss begins that still lasts
+        self._start = Moment(n, d, *when, "path")
+        self._before = Moment(n, d, "path", *measured, *window)
+        self._end = Moment(n, d, *when, "path", *measured)
         self._lost = np.zeros(n, dtype=np.bool_)
         self._whole = np.zeros(n, dtype=np.bool_)
         self._corners = np.full((n, d, d), np.nan)
@@ -248,7 +250,7 @@ class CageTracker:
         if everyone:
             return all_bonds(frame, motion, self._rule.bonded)
         if len(restart) == 0:
-            return self._bonds.select(restart)
+            return Bonds.none(frame.dimensions)
         return bonds_of(restart, frame, motion, self._rule.bonded)
 
     def _begin(

@@ -155,7 +155,9 @@ class ConclusionBuilder:
             peak = int(np.nanargmax(chi_4))
             self.add(chi_4_peak=float(chi_4[peak]), chi_4_peak_lag=float(lag[peak]))
         else:
-            reason = "no lag was measured from four or more time origins"
+            reason = (
+                "no lag was measured from four or more time origins: too few frames"
+            )
             self.leave_out(reason, "chi_4_peak", "chi_4_peak_lag")
 
     def leave_out_correlations(self, reason: str) -> None:

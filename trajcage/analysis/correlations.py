@@ -1,9 +1,14 @@
 """Time correlations over logarithmic lags and many time origins.
 
+Time origins lie an interval apart that is short at first and doubles, as the
+record grows, up to the one that was asked for; what was measured from origins
+that drop out is dropped too. So the origins are evenly spaced over the whole
+record, and a short record has as many of them as a variance needs.
+
 Origins are kept only as long as a lag needs them: a lag l is measured from
 origins that lie about l / 2 apart, since closer ones bring next to nothing new.
-So the number of origins in memory grows with the logarithm of the longest lag,
-and does not depend on the number of frames.
+So the number of origins in memory is some three for each octave of lags, or
+seventeen at the start, and does not depend on the number of frames.
 """
 
 from collections.abc import Mapping
@@ -91,8 +96,14 @@ CORRELATION_FIELDS = (
 # A variance over fewer origins, and even more so its error, is noise.
 _FEWEST_FOR_VARIANCE = 4
 
+# The interval starts at a quarter of its final length. Half the origins are dropped
+# after so many intervals.
+_HALVINGS = 2
+_MANY_INTERVALS = 16
+
 # Components of the value averaged over origins.
-_R2, _R4, _RELATIVE, _Q, _Q2, _SCATTERING, _BONDS, _CAGES = range(8)
+_R2, _R4, _RELATIVE, _Q, _Q2, _SCATTERING, _BONDS, _CAGES, _LAG, _LEFT_OUT = range(10)
+_N_VALUES = 10
 _MEANS = {
     "msd": _R2,
     "cage_relative_msd": _RELATIVE,
@@ -112,7 +123,8 @@ class CorrelationPlan:
     max_lag : int
         Longest lag in frames.
     origin_interval : int
-        Every so many frames a time origin.
+        Frames between time origins in a long record; in a short one half or a quarter
+        of that, if it is divisible by them.
     lags_per_octave : int
         Lags between a lag and its double, as far as whole frames allow.
     overlap_length : float, length
@@ -153,9 +165,18 @@ class CorrelationPlan:
             octave += 1
         return sorted(lag for lag in lags if lag <= self.max_lag)
 
-    def spacing(self, lag: int) -> int:
-        """Frames between the origins that are used for a lag."""
-        spacing = self.origin_interval
+    @property
+    def first_interval(self) -> int:
+        """Frames between time origins at the start of a record."""
+        interval = self.origin_interval
+        for _ in range(_HALVINGS):
+            interval = interval if interval % 2 else interval // 2
+        return interval
+
+    @staticmethod
+    def spacing(lag: int, interval: int) -> int:
+        """Frames between the origins that are used for a lag, out of all origins."""
+        spacing = interval
         while 2 * spacing <= lag / 2:
             spacing *= 2
         return spacing
@@ -202,12 +223,17 @@ class Correlations:
         self._d = dimensions
         self._plan = plan
         self._lags = plan.lags()
-        self._spacings = [plan.spacing(lag) for lag in self._lags]
-        self._moments = BlockMoments(len(self._lags), 8)
         self._rows = {lag: row for row, lag in enumerate(self._lags)}
-        self._lag_times = np.zeros(len(self._lags))
-        self._left_out = np.zeros(len(self._lags), dtype=np.int64)
+        self._space(plan.first_interval)
+        self._moments = BlockMoments(len(self._lags), _N_VALUES)
+        # What has been measured, row and count of its origin beside it, as long as
+        # some of the origins may drop out again.
+        self._early: list[tuple[int, int, NDArray[np.float64]]] = []
         self._origins: list[_Origin] = []
+
+    def _space(self, interval: int) -> None:
+        self._interval = interval
+        self._spacings = [self._plan.spacing(lag, interval) for lag in self._lags]
 
     def advance(self, count: int, frame: Frame, motion: Motion) -> None:
         """Take the next frame.
@@ -221,19 +247,33 @@ class Correlations:
         motion : Motion
             Its continuous positions and displacements.
         """
+        spaced = self._interval == self._plan.origin_interval
         for origin in self._origins:
             row = self._rows.get(count - origin.count)
             if row is not None and origin.count % self._spacings[row] == 0:
-                self._moments.add(row, self._compare(origin, frame, motion))
-                self._lag_times[row] += frame.time - origin.time
-                self._left_out[row] += np.count_nonzero(origin.n_neighbors == 0)
+                value = self._compare(origin, frame, motion)
+                self._moments.add(row, value)
+                if not spaced:
+                    self._early.append((row, origin.count, value))
+        if not spaced and count == _MANY_INTERVALS * self._interval:
+            self._thin_out()
         self._origins = [o for o in self._origins if self._needed(o.count, count)]
-        if count % self._plan.origin_interval == 0:
+        if count % self._interval == 0:
             bonds = all_bonds(frame, motion, self._plan.bonded)
             once = bonds.select(np.flatnonzero(bonds.first < bonds.second))
             self._origins.append(
                 _Origin.build(count, frame.time, motion.path.copy(), once)
             )
+
+    def _thin_out(self) -> None:
+        """Double the interval, as if it had been that from the start."""
+        self._space(2 * self._interval)
+        self._moments = BlockMoments(len(self._lags), _N_VALUES)
+        self._early = [e for e in self._early if e[1] % self._spacings[e[0]] == 0]
+        for row, _, value in self._early:
+            self._moments.add(row, value)
+        if self._interval == self._plan.origin_interval:
+            self._early = []
 
     def _needed(self, origin: int, count: int) -> bool:
         """Whether a lag is still to be measured from an origin after this frame."""
@@ -264,11 +304,13 @@ class Correlations:
         n_lost += np.bincount(second[lost], minlength=self._n)
         whole = n_lost < plan.fraction_lost * origin.n_neighbors - 1e-9
         n_caged = np.count_nonzero(caged)
-        value = np.full(8, np.nan)
+        value = np.full(_N_VALUES, np.nan)
         value[_R2] = r2.mean()
         value[_R4] = np.mean(r2 * r2)
         value[_Q], value[_Q2] = overlap, overlap * overlap
         value[_SCATTERING] = wave.mean()
+        value[_LAG] = frame.time - origin.time
+        value[_LEFT_OUT] = self._n - n_caged
         if n_caged:
             value[_RELATIVE] = np.einsum("ij,ij->", relative, relative) / n_caged
             value[_BONDS] = 1.0 - np.count_nonzero(lost) / len(bonds)
@@ -287,9 +329,9 @@ class Correlations:
         for k, row in enumerate(rows):
             n_origins = self._moments.count(row)
             table["lag_frames"][k] = self._lags[row]
-            table["lag"][k] = self._lag_times[row] / n_origins
+            table["lag"][k] = self._moments.mean(row)[_LAG]
             table["n_origins"][k] = n_origins
-            table["without_neighbors"][k] = self._left_out[row] / n_origins
+            table["without_neighbors"][k] = self._moments.mean(row)[_LEFT_OUT]
             converged = True
             for name, (value, gradient) in self._functions(row).items():
                 estimate = self._moments.estimate(row, value, gradient)
@@ -301,7 +343,7 @@ class Correlations:
 
     def _functions(self, row: int) -> dict[str, tuple[float, NDArray[np.float64]]]:
         """Value and gradient, by the means over origins, of each column."""
-        mean, unit = self._moments.mean(row), np.eye(8)
+        mean, unit = self._moments.mean(row), np.eye(_N_VALUES)
         functions = {name: (float(mean[k]), unit[k]) for name, k in _MEANS.items()}
         ratio = self._d / (self._d + 2.0)
         if mean[_R2] > 0.0:
@@ -322,14 +364,17 @@ class Correlations:
 
     def state(self) -> State:
         """All that is needed to continue, as arrays."""
-        state: State = {
-            "lag_times": self._lag_times.copy(),
-            "left_out": self._left_out.copy(),
-        }
-        state["origin_counts"] = np.array(
-            [o.count for o in self._origins], dtype=np.int64
+        rows, counts, values = (
+            zip(*self._early, strict=True) if self._early else [[]] * 3
         )
-        state["origin_times"] = np.array([o.time for o in self._origins])
+        state: State = {
+            "interval": np.array(self._interval),
+            "early_rows": np.array(rows, dtype=np.int64),
+            "early_counts": np.array(counts, dtype=np.int64),
+            "early_values": np.array(values, dtype=np.float64).reshape(-1, _N_VALUES),
+            "origin_counts": np.array([o.count for o in self._origins], dtype=np.int64),
+            "origin_times": np.array([o.time for o in self._origins]),
+        }
         for k, origin in enumerate(self._origins):
             state[f"origin{k}.path"] = origin.path.copy()
             state.update(prefixed(f"origin{k}.bonds", origin.bonds.state()))
@@ -338,8 +383,16 @@ class Correlations:
 
     def restore(self, state: Mapping[str, NDArray[np.generic]]) -> None:
         """Continue from what :meth:`state` returned."""
-        self._lag_times = np.array(state["lag_times"], dtype=np.float64)
-        self._left_out = np.array(state["left_out"], dtype=np.int64)
+        self._space(int(state["interval"]))
+        self._early = [
+            (int(row), int(count), np.array(value, dtype=np.float64))
+            for row, count, value in zip(
+                state["early_rows"],
+                state["early_counts"],
+                state["early_values"],
+                strict=True,
+            )
+        ]
         self._moments.restore(under("moments", state))
         self._origins = [
             _Origin.build(

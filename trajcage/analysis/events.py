@@ -15,6 +15,8 @@ from trajcage.store import TableSpec
 
 __all__ = ["Moment", "Present", "event_table"]
 
+_WHEN = ("frame", "step", "time")
+
 
 def event_table(dimensions: int) -> TableSpec:
     """Declare the table of cage-breaking events.
@@ -118,7 +120,7 @@ class Present:
             "region": np.full(n, Region.UNKNOWN, dtype=np.uint8),
             "free_volume": np.full(n, np.nan),
             "weakest_window": np.full(n, np.nan),
-            "corners": np.full((n, d), -1, dtype=np.int64),
+            "corners": np.full((n, d), -1, dtype=np.int32),
         }
         names = {"corners": "weakest_window_neighbors"}
         for name in ("region", "free_volume", "weakest_window", "corners"):
@@ -128,13 +130,14 @@ class Present:
         return cls(frame.box, motion.positions, columns)
 
     def state(self) -> State:
-        """All that is needed to rebuild it, as arrays."""
+        """All that the next frame needs of this one, as arrays: not when it was."""
+        columns = {k: a for k, a in self.columns.items() if k not in _WHEN}
         return {
             "vectors": self.box.vectors.copy(),
             "origin": self.box.origin.copy(),
             "periodic": np.array(self.box.periodic),
             "positions": self.positions.copy(),
-            **prefixed("columns", self.columns),
+            **prefixed("columns", columns),
         }
 
     @classmethod
@@ -152,11 +155,19 @@ class Present:
 
 
 class Moment:
-    """One remembered instant for each particle, a column a quantity."""
+    """One remembered instant for each particle, a column a quantity.
 
-    def __init__(self, n_particles: int, dimensions: int) -> None:
+    Parameters
+    ----------
+    n_particles, dimensions : int
+        Shape of the frames to come.
+    names : str
+        Which columns of :class:`Present` are remembered.
+    """
+
+    def __init__(self, n_particles: int, dimensions: int, *names: str) -> None:
         n, d = n_particles, dimensions
-        self._columns: dict[str, NDArray[Any]] = {
+        columns: dict[str, NDArray[Any]] = {
             "frame": np.full(n, -1, dtype=np.int64),
             "step": np.zeros(n, dtype=np.int64),
             "time": np.zeros(n),
@@ -164,8 +175,9 @@ class Moment:
             "region": np.full(n, Region.UNKNOWN, dtype=np.uint8),
             "free_volume": np.full(n, np.nan),
             "weakest_window": np.full(n, np.nan),
-            "corners": np.full((n, d), -1, dtype=np.int64),
+            "corners": np.full((n, d), -1, dtype=np.int32),
         }
+        self._columns = {name: columns[name] for name in names}
 
     def __getitem__(self, name: str) -> NDArray[Any]:
         return self._columns[name]

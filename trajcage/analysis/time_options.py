@@ -29,7 +29,8 @@ class TimeOptions:
     max_lag : int
         Longest lag of the correlations, in frames.
     origin_interval : int
-        Every so many frames a time origin.
+        Frames between time origins; half or a quarter of that in short records, if it
+        is divisible by them.
     lags_per_octave : int
         Lags between one and its double.
     overlap_length : float or None, length
@@ -48,7 +49,7 @@ class TimeOptions:
     hop_half_window: int = 10
     caging_length: float | None = None
     max_lag: int = 1024
-    origin_interval: int = 20
+    origin_interval: int = 16
     lags_per_octave: int = 2
     overlap_length: float | None = None
     wave_number: float | None = None
