@@ -74,8 +74,8 @@ def _climb(grid, s, i, xi, yi, ri, n, known, limits, shift):
     """Walk up the power distance from the particle to the first vertex."""
     reach, largest, tolerance, halo = limits
     a = nearest(s, n)
-    b = -1
-    c = -1
+    none = np.int64(-1)
+    b, c = none, none
     px, py = 0.0, 0.0
     stage = 0
     while stage < 2:
@@ -112,7 +112,7 @@ def _climb(grid, s, i, xi, yi, ri, n, known, limits, shift):
             known = need
             # a new candidate may be nearer than the old two: start again
             a = nearest(s, n)
-            b, c = -1, -1
+            b, c = none, none
             px, py = 0.0, 0.0
             stage = 0
             continue
@@ -181,7 +181,8 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
     near = s.near
     s.clock[0] += 1
     known = min(known, halo)
-    none = np.int64(0)  # a literal would compile the helpers once more
+    # literals would compile the helpers once more
+    none, one, no_fourth = np.int64(0), np.int64(1), np.uint32(0)
     code, n = collect(grid, s, i, xi, yi, zi, ri, none, -1.0, known, tolerance, shift)
     if code != CLOSED:
         return code, n, 0, 0
@@ -191,7 +192,7 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
         )
         if code != CLOSED:
             return code, n, 0, 0
-        a, b, c = _sorted3(start_a, start_b, start_c)
+        a, b, c = _sorted3(np.uint32(start_a), np.uint32(start_b), np.uint32(start_c))
         px, py, power = _solve(s, a, b, c)
         ball = np.sqrt(max(power, 0.0) + largest * largest)
         need = np.sqrt(px * px + py * py) + ball
@@ -228,9 +229,9 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
         )
         px, py, power = _solve(s, a, b, c)
         torus.offset[0, :] = 0
-    _, slot = find_cell(s, a, b, c, 0)
-    _new_cell(s, 0, slot, a, b, c, px, py, power)
-    n_cells = 1
+    _, slot = find_cell(s, a, b, c, no_fourth)
+    _new_cell(s, none, slot, a, b, c, px, py, power)
+    n_cells = one
     n_corners = 0
     room = len(s.cell)
     s.stack[0] = 0
@@ -309,7 +310,7 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
                                 m3 = np.uint32(torus.image[2])
                         if ready:
                             a, b, c = _sorted3(m0, m1, m3)
-                            other, slot = find_cell(s, a, b, c, 0)
+                            other, slot = find_cell(s, a, b, c, no_fourth)
                             if other >= 0:
                                 break
                             qx, qy, q_power = _solve(s, a, b, c)

@@ -187,9 +187,8 @@ def _climb(grid, s, i, xi, yi, zi, ri, n, known, limits, shift):
     """
     reach, largest, tolerance, halo = limits
     a = nearest(s, n)
-    b = -1
-    c = -1
-    d = -1
+    none = np.int64(-1)
+    b, c, d = none, none, none
     px, py, pz = 0.0, 0.0, 0.0
     stage = 0
     while stage < 3:
@@ -246,7 +245,7 @@ def _climb(grid, s, i, xi, yi, zi, ri, n, known, limits, shift):
             known = need
             # a new candidate may be nearer than the old three: start again
             a = nearest(s, n)
-            b, c, d = -1, -1, -1
+            b, c, d = none, none, none
             px, py, pz = 0.0, 0.0, 0.0
             stage = 0
             continue
@@ -373,7 +372,8 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
     reach, largest, tolerance, halo = limits
     s.clock[0] += 1
     known = min(known, halo)
-    none = np.int64(0)  # a literal would compile the helpers once more
+    # literals would compile the helpers once more
+    none, one = np.int64(0), np.int64(1)
     code, n = collect(grid, s, i, xi, yi, zi, ri, none, -1.0, known, tolerance, shift)
     if code != CLOSED:
         return code, n, 0, 0
@@ -383,7 +383,12 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
         )
         if code != CLOSED:
             return code, n, 0, 0
-        a, b, c, d = _sorted4(start_a, start_b, start_c, start_d)
+        a, b, c, d = _sorted4(
+            np.uint32(start_a),
+            np.uint32(start_b),
+            np.uint32(start_c),
+            np.uint32(start_d),
+        )
         px, py, pz, power = _solve(s, a, b, c, d)
         ball = np.sqrt(max(power, 0.0) + largest * largest)
         need = np.sqrt(px * px + py * py + pz * pz) + ball
@@ -424,8 +429,8 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
         px, py, pz, power = _solve(s, a, b, c, d)
         torus.offset[0, :] = 0
     _, slot = find_cell(s, a, b, c, d)
-    _new_cell(s, 0, slot, a, b, c, d, px, py, pz, power)
-    n_cells = 1
+    _new_cell(s, none, slot, a, b, c, d, px, py, pz, power)
+    n_cells = one
     n_corners = 0
     room = len(s.cell)
     near = s.near

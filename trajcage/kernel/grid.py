@@ -80,62 +80,48 @@ def build_grid(
     side = max(cell_side, float(np.prod(extent) / (8.0 * len(home) + 64.0)) ** (1 / 3))
     shape = np.maximum(np.ceil(extent / side), 1.0).astype(np.int64)
     per_edge = shape / (high - low)
-    points, owner, start, order = _fill(
-        home, fractions, vectors, radii, periodic, width, low, per_edge, shape
+    # turns about the box that lead a particle's images into the halo
+    first = np.where(periodic, np.ceil(-width - fractions), 0.0).astype(np.int64)
+    last = np.where(periodic, np.floor(1.0 + width - fractions), 0.0).astype(np.int64)
+    beyond = last + 1
+    scaled = (fractions - low) * per_edge
+    place = (home, scaled, first, beyond, vectors, radii, per_edge, shape)
+    start = np.zeros(int(shape.prod()) + 1, np.int64)
+    points, owner, inside = np.empty((4, 0)), np.empty(0, np.int64), np.empty(0, bool)
+    _fill(place, start[1:], False, points, owner, inside)
+    np.cumsum(start, out=start)
+    n_points = int(start[-1])
+    points, owner, inside = (
+        np.empty((4, n_points)),
+        np.empty(n_points, np.int64),
+        np.empty(n_points, bool),
     )
+    _fill(place, start[:-1].copy(), True, points, owner, inside)
+    order = owner[inside]
     geometry = np.vstack([inverse, low, per_edge, 1.0 / heights, origin])
     grid_shape = np.vstack([shape, periodic]).astype(np.int64)
     return Grid(points, owner, start, geometry, grid_shape, home, order, float(halo))
 
 
 @compiled
-def _fill(home, fractions, vectors, radii, periodic, width, low, per_edge, shape):
-    """Count, then place, every particle and image (counting sort by cell)."""
-    n = len(home)
-    n_cells = shape[0] * shape[1] * shape[2]
-    start = np.zeros(n_cells + 1, np.int64)
-    first = np.zeros(3, np.int64)
-    last = np.zeros(3, np.int64)
-    cell = np.zeros(3, np.int64)
-    total = 0
-    points = np.zeros((4, 0))
-    owner = np.zeros(0, np.int64)
-    order = np.zeros(n, np.int64)
-    home_slot = np.zeros(0, np.int64)
-    for placing in range(2):
-        if placing == 1:
-            running = 0
-            for c in range(n_cells):
-                count = start[c]
-                start[c] = running
-                running += count
-            start[n_cells] = running
-            points = np.empty((4, total))
-            owner = np.empty(total, np.int64)
-            home_slot = np.zeros(total, np.int64)
-        for i in range(n):
-            for axis in range(3):
-                first[axis] = 0
-                last[axis] = 0
-                if periodic[axis]:
-                    f = fractions[i, axis]
-                    first[axis] = int(np.ceil(-width[axis] - f))
-                    last[axis] = int(np.floor(1.0 + width[axis] - f))
-            for u in range(first[0], last[0] + 1):
-                for v in range(first[1], last[1] + 1):
-                    for w in range(first[2], last[2] + 1):
-                        for axis in range(3):
-                            turn = u if axis == 0 else (v if axis == 1 else w)
-                            f = fractions[i, axis] + turn - low[axis]
-                            at = int(f * per_edge[axis])
-                            cell[axis] = min(max(at, 0), shape[axis] - 1)
-                        c = (cell[0] * shape[1] + cell[1]) * shape[2] + cell[2]
-                        if placing == 0:
-                            start[c] += 1
-                            total += 1
-                            continue
-                        slot = start[c]
-                        start[c] += 1
+def _fill(place, following, placing, points, owner, inside):
+    """Count the particles and images of each cell, or place them (counting sort).
+
+    ``following`` holds the counts, or the slot of each cell to fill next.
+    """
+    home, scaled, first, beyond, vectors, radii, per_edge, shape = place
+    for i in range(len(home)):
+        for u in range(first[i, 0], beyond[i, 0]):
+            c0 = min(max(int(scaled[i, 0] + u * per_edge[0]), 0), shape[0] - 1)
+            for v in range(first[i, 1], beyond[i, 1]):
+                c1 = min(max(int(scaled[i, 1] + v * per_edge[1]), 0), shape[1] - 1)
+                for w in range(first[i, 2], beyond[i, 2]):
+                    c2 = int(scaled[i, 2] + w * per_edge[2])
+                    c2 = min(max(c2, 0), shape[2] - 1)
+                    c = (c0 * shape[1] + c1) * shape[2] + c2
+                    slot = following[c]
+                    following[c] += 1
+                    if placing:
                         for axis in range(3):
                             points[axis, slot] = home[i, axis] + (
                                 u * vectors[0, axis]
@@ -144,18 +130,7 @@ def _fill(home, fractions, vectors, radii, periodic, width, low, per_edge, shape
                             )
                         points[3, slot] = radii[i]
                         owner[slot] = i
-                        if u == 0 and v == 0 and w == 0:
-                            home_slot[slot] = 1
-    # placing moved every start to the next cell's start
-    for c in range(n_cells, 0, -1):
-        start[c] = start[c - 1]
-    start[0] = 0
-    count = 0
-    for slot in range(total):
-        if home_slot[slot] == 1:
-            order[count] = owner[slot]
-            count += 1
-    return points, owner, start, order
+                        inside[slot] = u == 0 and v == 0 and w == 0
 
 
 @helper

@@ -8,6 +8,8 @@ from pathlib import Path
 from typing import Any, ParamSpec, TypeVar
 
 import numba
+from numba.core.codegen import JITCodeLibrary
+from numba.core.compiler import CompilerBase, DefaultPassBuilder
 
 __all__ = ["compiled", "helper"]
 
@@ -63,17 +65,54 @@ def compiled(function: Callable[P, R]) -> Callable[P, R]:
 def helper(function: Callable[P, R]) -> Callable[P, R]:
     """Compile a function that only kernels call.
 
-    It has no entry from Python, which halves the time it takes to compile, it
-    is cached as part of the kernels that use it, and it counts no references
-    to its arrays (so it cannot allocate any): the atomic counters would cost
-    more than the geometry.
+    It has no entry from Python, it is optimized and cached as part of the
+    kernels that use it, and it counts no references to its arrays (so it
+    cannot allocate any): the atomic counters would cost more than the geometry.
     """
     return _compile(
-        function, no_cpython_wrapper=True, no_cfunc_wrapper=True, _nrt=False
+        function,
+        no_cpython_wrapper=True,
+        no_cfunc_wrapper=True,
+        _nrt=False,
+        pipeline_class=_HelperCompiler,
     )
 
 
-def _compile(function: Callable[P, R], **options: bool) -> Callable[P, R]:
+class _Part(JITCodeLibrary):  # type: ignore[misc]
+    """Code that is linked into kernels and never runs by itself.
+
+    numba optimizes a function together with all that it calls and makes
+    machine code of it, then does the same again for its caller, and so on up:
+    a quarter of the time. Here only the kernel on top goes through that.
+    """
+
+    def _optimize_final_module(self) -> None:
+        pass
+
+    def _finalize_final_module(self) -> None:
+        self._finalized = True
+
+    def get_pointer_to_function(self, _name: str) -> int:
+        return 0
+
+    @property
+    def codegen(self) -> "_Part":
+        return self
+
+    def set_env(self, _name: str, _env: object) -> None:
+        """Set no environment: it is for exceptions, and helpers raise none."""
+
+
+class _HelperCompiler(CompilerBase):  # type: ignore[misc]
+    """numba's usual passes, with a library of our own for the code."""
+
+    def define_pipelines(self) -> list[Any]:
+        state = self.state
+        state.library = _Part(state.targetctx.codegen(), state.func_id.func_qualname)
+        return [DefaultPassBuilder.define_nopython_pipeline(state)]
+
+
+def _compile(function: Callable[P, R], **options: Any) -> Callable[P, R]:
     config: Any = numba.config
     njit: Any = numba.njit
     before = config.CACHE_DIR

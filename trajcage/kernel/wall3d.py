@@ -46,7 +46,7 @@ def _step(s, t, i, j, k, w):
     """
     code = s.join[t, w]
     i2, j2, w2 = code >> 2 * i & 3, code >> 2 * j & 3, code >> 2 * k & 3
-    return s.across[t, w], i2, j2, 6 - i2 - j2 - w2, w2
+    return np.int64(s.across[t, w]), i2, j2, 6 - i2 - j2 - w2, w2
 
 
 @helper
@@ -181,8 +181,8 @@ def _arcs(grid, s, n_cells, n_corners, torus):
         for f in range(4):
             s.mark[q, 2 + f] = 0
     for q in range(n_corners):
-        t = s.mark[q, 0]
-        k = s.mark[q, 1]
+        t = np.int64(s.mark[q, 0])
+        k = np.int64(s.mark[q, 1])
         for w in range(4):
             if w == k or s.mark[q, 2 + w] == 1:
                 continue
