@@ -74,8 +74,7 @@ def _climb(grid, s, i, xi, yi, ri, n, known, limits, shift):
     """Walk up the power distance from the particle to the first vertex."""
     reach, largest, tolerance, halo = limits
     a = nearest(s, n)
-    none = np.int64(-1)
-    b, c = none, none
+    b, c = a, a
     px, py = 0.0, 0.0
     stage = 0
     while stage < 2:
@@ -112,7 +111,7 @@ def _climb(grid, s, i, xi, yi, ri, n, known, limits, shift):
             known = need
             # a new candidate may be nearer than the old two: start again
             a = nearest(s, n)
-            b, c = none, none
+            b, c = a, a
             px, py = 0.0, 0.0
             stage = 0
             continue

@@ -187,8 +187,7 @@ def _climb(grid, s, i, xi, yi, zi, ri, n, known, limits, shift):
     """
     reach, largest, tolerance, halo = limits
     a = nearest(s, n)
-    none = np.int64(-1)
-    b, c, d = none, none, none
+    b, c, d = a, a, a
     px, py, pz = 0.0, 0.0, 0.0
     stage = 0
     while stage < 3:
@@ -245,7 +244,7 @@ def _climb(grid, s, i, xi, yi, zi, ri, n, known, limits, shift):
             known = need
             # a new candidate may be nearer than the old three: start again
             a = nearest(s, n)
-            b, c, d = none, none, none
+            b, c, d = a, a, a
             px, py, pz = 0.0, 0.0, 0.0
             stage = 0
             continue
