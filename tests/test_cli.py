@@ -133,6 +133,16 @@ def test_summary_as_text_stands_beside_references(monolayer):
         assert words in text
 
 
+def test_breaks_as_csv_has_a_header_without_events(tmp_path):
+    source = scenario.write_gsd(tmp_path / "a.gsd", [scenario.shaken()] * 2)
+    call("measure", source, "-o", tmp_path / "r.h5", "-q")
+    head, *rows = call("breaks", tmp_path / "r.h5", "--csv").stdout.splitlines()
+    assert rows == []
+    assert {"id", "displacement_z", "neighbors_lost"} < set(head.split(","))
+    both = call("breaks", tmp_path / "r.h5", "--csv", "--json", code=2)
+    assert "give one" in both.stderr
+
+
 def test_breaks_as_text_csv_and_json_agree(monolayer):
     text = call("breaks", monolayer, "--limit", 3).stdout
     rows = list(csv.DictReader(io.StringIO(call("breaks", monolayer, "--csv").stdout)))
@@ -222,6 +232,11 @@ def test_lattice_prints_the_reference_of_the_library():
         (["breaks", scenario.CRYSTAL], 1, "not an HDF5 file"),
         (["lattice", "fc", "--packing-fraction", "0.5"], 2, "did you mean fcc?"),
         (["lattice", "fcc", "--packing-fraction", "0.8"], 2, "close packing"),
+        (["lattice", "fcc", "0.5"], 2, "write --packing-fraction 0.5"),
+        (["measure", scenario.CRYSTAL, "-o", "r.h5", "--start", 50], 2, "0 to 19"),
+        (["measure", scenario.CRYSTAL, "-o", "r.h5", "--reach", "bx"], 2, "or 'box'"),
+        (["measure", scenario.CRYSTAL, "-o", "r.h5", "--skip", "ordr"], 2, "order?"),
+        (["plot", "r.h5", "-o", "d", "--only", "slise"], 2, "did you mean slice?"),
         (
             ["measure", scenario.CRYSTAL, "-o", "r.h5", "--diameter", "x"],
             2,

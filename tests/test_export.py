@@ -110,6 +110,13 @@ def test_an_export_replaces_a_file_only_if_told(cages, tmp_path):
     assert [found.name for found in tmp_path.iterdir()] == ["out.npz"]
 
 
+def test_a_field_of_the_other_kind_is_told(cages):
+    words = ("export", cages, "--to", "csv", "--field")
+    assert "add --observables" in call(*words, "packing_fraction", code=2).stderr
+    told = call(*words, "free_volume", "--observables", code=2).stderr
+    assert "leave out --observables" in told
+
+
 def test_a_misspelled_format_gets_a_suggestion(cages):
     told = call("export", cages, "--to", "parket", code=2).stderr
     assert "did you mean parquet?" in told

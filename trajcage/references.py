@@ -407,10 +407,11 @@ _SOFT = (
     ),
 )
 
-#: Articles behind the quantities of a result file: names of fields, tables and summary
-#: entries, and what they rest on. `wca` stands for a diameter given as ``wca:...``.
+#: Articles behind the quantities of a result file: names of fields, tables and
+#: arrays, and what they rest on. Two names are no fields: ``errors of
+#: means``, and ``wca diameter`` for one given as ``wca:...``.
 METHODS: tuple[tuple[tuple[str, ...], tuple[Article, ...]], ...] = (
-    (("wca",), _SOFT),
+    (("wca diameter",), _SOFT),
     (("free_volume", "free_surface"), (_FREE_VOLUME,)),
     (("compressibility_factor", "reduced_pressure"), _PRESSURE),
     (("cell_volume", "local_packing_fraction"), (_CELLS,)),
@@ -423,7 +424,7 @@ METHODS: tuple[tuple[tuple[str, ...], tuple[Article, ...]], ...] = (
     (("survival", "persistence"), _SURVIVAL),
     (("jumps",), _JUMPS),
     (("correlations",), (_PATHS,)),
-    (("summary",), _ERRORS),
+    (("errors of means",), _ERRORS),
 )
 
 #: Articles behind the equations of state that a summary may name.

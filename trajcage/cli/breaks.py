@@ -23,6 +23,7 @@ __all__ = ["command"]
 @click.option(
     "--limit",
     type=click.IntRange(min=0),
+    metavar="N",
     default=20,
     show_default=True,
     help="Events to show as text.",
@@ -35,20 +36,23 @@ def command(*, result: Any, as_csv: bool, as_json: bool, limit: int) -> None:
     those of the input; times are in the time unit of the file, lengths in its unit of
     length.
     """
-    from trajcage.errors import ResultFileError
+    from trajcage.errors import ResultFileError, UsageError
     from trajcage.store import open_result
 
+    if as_csv and as_json:
+        raise UsageError("--csv and --json are two forms of the same: give one")
     with open_result(result) as opened:
         if "events" not in opened.tables:
             raise ResultFileError(
                 f"{result} holds no cage breaking: it was measured with --skip time"
             )
         events = _events(opened)
+        header = _header(opened)
         n_particles, n_frames = opened.n_particles, opened.frames_complete
     if as_json:
         print_json(events)
     elif as_csv:
-        _write_csv(events)
+        _write_csv(events, header)
     else:
         click.echo(_text(events[:limit], len(events), n_particles, n_frames))
 
@@ -78,22 +82,30 @@ def _events(opened: "Result") -> list[dict[str, Any]]:
     return rows
 
 
-def _write_csv(events: list[dict[str, Any]]) -> None:
+def _header(opened: "Result") -> list[str]:
+    """Columns of the CSV, which are there without any event, too."""
+    header: list[str] = []
+    for name in opened.table("events"):
+        if name == "displacement":
+            header += [f"{name}_{axis}" for axis in "xyz"[: opened.dimensions]]
+        elif not name.endswith("_offsets"):
+            header.append("id" if name == "particle" else name)
+    return header
+
+
+def _write_csv(events: list[dict[str, Any]], header: list[str]) -> None:
     writer = csv.writer(sys.stdout, lineterminator="\n")
-    for k, event in enumerate(events):
-        flat: dict[str, object] = {}
+    writer.writerow(header)
+    for event in events:
+        cells: list[object] = []
         for name, value in event.items():
             if name == "displacement":
-                flat |= {
-                    f"{name}_{axis}": x for axis, x in zip("xyz", value, strict=False)
-                }
+                cells += value
             else:
-                flat[name] = (
+                cells.append(
                     " ".join(map(str, value)) if isinstance(value, list) else value
                 )
-        if k == 0:
-            writer.writerow(flat)
-        writer.writerow(flat.values())
+        writer.writerow(cells)
 
 
 def _text(

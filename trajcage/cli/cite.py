@@ -40,9 +40,9 @@ def command(*, result: Path | None, bibtex: bool) -> None:
             version = str(opened.parameters["versions"]["trajcage"])
             diameter = str(opened.parameters["options"]["diameter"])
         if summary:
-            names.add("summary")
+            names.add("errors of means")
         if diameter.startswith("wca:"):
-            names.add("wca")
+            names.add("wca diameter")
         equations = summary.get("equations_of_state", [])
         groups = cited_for(names, [str(row["source"]) for row in equations])
     if bibtex:

@@ -64,7 +64,7 @@ _INPUT = (
     ),
     click.option(
         "--dimensions",
-        type=click.IntRange(2, 3),
+        type=int,
         metavar="2|3",
         help="Number of dimensions. From the input unless given.",
     ),

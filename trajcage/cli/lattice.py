@@ -58,7 +58,12 @@ def command(
       trajcage lattice
       trajcage lattice fcc hcp --packing-fraction 0.545 --packing-fraction 0.6
     """
+    from trajcage.errors import UsageError
     from trajcage.lattices import LATTICES, lattice, thresholds
+
+    for name in names:
+        if name.replace(".", "", 1).isdecimal():
+            raise UsageError(f"{name} is no lattice; write --packing-fraction {name}")
 
     if not packing_fractions:
         limits = [thresholds(name) for name in names or LATTICES]

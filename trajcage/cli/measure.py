@@ -35,10 +35,13 @@ class _Reach(click.ParamType[float]):
         """Return the length, infinite for the whole box."""
         if value == "box":
             return math.inf
-        number: float = click.FLOAT.convert(value, param, ctx)
-        if not number > 0.0:
-            self.fail(f"expected a positive length or 'box', got {value}", param, ctx)
-        return number
+        try:
+            length = float(value)
+        except ValueError:
+            length = math.nan
+        if not length > 0.0:
+            self.fail(f"expected a positive length or 'box', got {value!r}", param, ctx)
+        return length
 
 
 @click.command(name="measure", short_help="Measure a trajectory.")
@@ -117,7 +120,8 @@ class _Reach(click.ParamType[float]):
 )
 @click.option(
     "--workers",
-    type=click.IntRange(min=0),
+    type=int,
+    metavar="N",
     default=1,
     show_default=True,
     help="Processes; 0 for one on every core. Results do not depend on it.",

@@ -6,6 +6,7 @@ standard output or to files whatever is chosen.
 
 import logging
 import sys
+import time
 from collections.abc import Callable
 from typing import Any, TypeVar
 
@@ -65,15 +66,16 @@ def _verbose(context: click.Context, _: click.Parameter, value: bool) -> None:
     logger = logging.getLogger("trajcage")
     handler = logging.StreamHandler(sys.stderr)
     handler.setFormatter(logging.Formatter(_FORMAT, "%H:%M:%S"))
-    before = logger.level
+    before, started = logger.level, time.monotonic()
     logger.addHandler(handler)
     logger.setLevel(logging.INFO)
 
-    def undo() -> None:
+    def end() -> None:
+        logger.info("ended after %.2f s", time.monotonic() - started)
         logger.removeHandler(handler)
         logger.setLevel(before)
 
-    context.call_on_close(undo)
+    context.call_on_close(end)
 
 
 def _refuse_both(context: click.Context) -> None:

@@ -63,7 +63,7 @@ def write_cage(
     try:
         target.write_bytes(data)
     except OSError as error:
-        raise ResultFileError(f"cannot write {target}: {error}") from error
+        raise ResultFileError(f"cannot write {target}: {error.strerror}") from error
 
 
 def _page(mesh: CageMesh, source: str) -> str:

@@ -51,7 +51,7 @@ def write_report(
     try:
         target.write_text(report_page(result, figures), encoding="utf-8")
     except OSError as error:
-        raise ResultFileError(f"cannot write {target}: {error}") from error
+        raise ResultFileError(f"cannot write {target}: {error.strerror}") from error
     return figures
 
 

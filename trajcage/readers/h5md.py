@@ -63,8 +63,15 @@ class H5mdSource(Source):
         groups = self._file.get("particles", {})
         names = [name for name in groups if "position" in groups[name]]
         if not names:
+            hint = ""
+            if "trajcage" in self._file:
+                hint = (
+                    ": it is a result file without positions; give the trajectory it "
+                    "was measured from, or measure that with --store-positions"
+                )
             raise InputError(
-                f"expected an H5MD file with /particles/NAME/position, {path} has none"
+                "expected an H5MD file with /particles/NAME/position, "
+                f"{path} has none{hint}"
             )
         if len(names) > 1:
             self.notes.append(

@@ -1,5 +1,6 @@
 """The one door: picks the reader that fits the files."""
 
+import logging
 from pathlib import Path
 
 from trajcage.errors import InputError
@@ -12,6 +13,8 @@ from trajcage.readers.trajectory import Trajectory
 from trajcage.readers.xyz import XyzSource
 
 __all__ = ["open_trajectory"]
+
+_LOGGER = logging.getLogger(__name__)
 
 # First bytes that settle the format whatever the file is called (dump.melt).
 _FIRST_BYTES = {
@@ -49,10 +52,18 @@ def open_trajectory(options: InputOptions) -> Trajectory:
         check_file(options.trajectory)
     source = _open_source(options.topology, options.trajectory)
     try:
-        return Trajectory(options, source)
+        trajectory = Trajectory(options, source)
     except Exception:
         source.close()
         raise
+    _LOGGER.info(
+        "read %s as %s: %d frames of %d particles",
+        options.trajectory or options.topology,
+        source.format,
+        trajectory.n_frames,
+        trajectory.n_particles,
+    )
+    return trajectory
 
 
 def _open_source(topology: Path, trajectory: Path | None) -> Source:

@@ -129,7 +129,8 @@ def _read_diameters(path: Path, ids: NDArray[np.int64]) -> NDArray[np.float64]:
     try:
         lines = path.read_text(encoding="utf-8").splitlines()
     except (OSError, UnicodeDecodeError) as error:
-        raise InputError(f"cannot read the diameters in {path}: {error}") from error
+        why = error.strerror if isinstance(error, OSError) else error
+        raise InputError(f"cannot read the diameters in {path}: {why}") from error
     for number, line in enumerate(lines, start=1):
         words = line.partition("#")[0].replace(",", " ").split()
         if not words:

@@ -228,6 +228,11 @@ def export_fields(
         if per_particle is None or f.per_particle == per_particle
     }
     for name in names or ():
+        if name in result.fields and name not in known:
+            raise UsageError(
+                f"{name} is a field{kinds[not per_particle]}, not{kinds[per_particle]}: "
+                f"{'leave out' if per_particle is False else 'add'} --observables"
+            )
         if name not in known:
             raise UsageError(
                 f"{result.path} has no field {name!r}{kinds[per_particle]}"

@@ -1,7 +1,7 @@
 """From the options of a run to an open trajectory and the frames wanted."""
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import asdict, dataclass
 from pathlib import Path
 
 from trajcage.errors import UsageError
@@ -94,8 +94,11 @@ class FrameSelection:
         """
         frames = range(*slice(self.start, self.stop, self.step).indices(n_frames))
         if len(frames) == 0:
+            given = ", ".join(
+                f"{k} {v}" for k, v in asdict(self).items() if v is not None
+            )
             raise UsageError(
-                f"no frames selected: the trajectory has frames 0 to {n_frames - 1}, "
-                f"and start {self.start}, stop {self.stop}, step {self.step} were given"
+                f"no frame is selected by {given or 'all frames'}: "
+                f"{f'frames go from 0 to {n_frames - 1}' if n_frames else 'there is none'}"
             )
         return frames

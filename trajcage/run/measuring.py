@@ -211,7 +211,7 @@ def measure(
         record = parameters(options, inputs, description, notes, command_line)
         fold = RunFold(settings, first, inputs)
         n_workers = workers or len(os.sched_getaffinity(0))
-        _LOGGER.info("measuring with %d processes", n_workers)
+        _LOGGER.info("processes: %d", n_workers)
         measured = measured_frames(opened, frames, settings, n_workers, note, dask)
         if not resume:
             # a first frame that fails leaves no file, and an old one alone
@@ -254,8 +254,6 @@ def _put_back(first: MeasuredFrame, rest: MeasuredFrames) -> MeasuredFrames:
 
 
 def _log_input(told: InputDescription, frames: range) -> None:
-    _LOGGER.info("read %s as %s", ", ".join(told.files), told.format)
-    _LOGGER.info("%d particles, %d dimensions", told.n_particles, told.dimensions)
     for source in (
         told.dimensions_source,
         told.box_source,

@@ -6,7 +6,7 @@ from collections import deque
 from collections.abc import Callable, Iterator, Sequence
 from concurrent.futures import Future, ProcessPoolExecutor
 from concurrent.futures.process import BrokenProcessPool
-from contextlib import contextmanager
+from contextlib import closing, contextmanager
 from multiprocessing import get_context
 
 from trajcage.errors import TrajcageError
@@ -70,17 +70,19 @@ def measured_frames(
         return
     # The first frame is measured here, so that mistakes show before processes
     # start, and the kernels are compiled once.
-    yield from _measure(trajectory, indices[:1], settings)
-    rest, n = indices[1:], trajectory.n_particles
+    first, rest, n = indices[:1], indices[1:], trajectory.n_particles
     if cluster is None:
+        yield from _measure(trajectory, first, settings)
         job = pack_job(trajectory.options, settings)
         n_workers = min(n_workers, len(rest))
         yield from in_order(_Pool(job, n_workers, note), cut(rest, n_workers, n))
         return
     from trajcage.run.cluster import Cluster  # dask is optional
 
-    crew = Cluster(cluster, trajectory.options, settings)
-    yield from in_order(crew, cut(rest, crew.n_threads, n))
+    crew = Cluster(cluster, trajectory.options, settings)  # a wrong address shows now
+    with closing(crew):
+        yield from _measure(trajectory, first, settings)
+        yield from in_order(crew, cut(rest, crew.n_threads, n))
 
 
 def _measure(

@@ -1,6 +1,7 @@
 """Reading result files: complete, unfinished, being written or killed."""
 
 import json
+import logging
 from collections.abc import Iterator, Sequence
 from functools import cached_property
 from pathlib import Path
@@ -24,6 +25,8 @@ from trajcage.wording import near_miss
 
 __all__ = ["Result", "open_result"]
 
+_LOGGER = logging.getLogger(__name__)
+
 
 def open_result(path: str | Path) -> "Result":
     """Open a result file for reading.
@@ -40,7 +43,7 @@ def open_result(path: str | Path) -> "Result":
     """
     target = Path(path)
     try:
-        return Result(open_for_reading(target), target)
+        result = Result(open_for_reading(target), target)
     except ResultFileError as error:
         if is_truncated(target):
             raise ResultFileError(
@@ -48,6 +51,8 @@ def open_result(path: str | Path) -> "Result":
                 "frames that are left, if any)"
             ) from error
         raise
+    _LOGGER.info("read %r", result)
+    return result
 
 
 class Result:
