@@ -6,15 +6,12 @@ from pathlib import Path
 
 import pytest
 from click.testing import CliRunner
+from readme_reference import commands, dataset_reference, options, with_options
 
 from trajcage.cli import main
 
 ROOT = Path(__file__).parents[1]
 TEXT = (ROOT / "README.md").read_text(encoding="utf-8")
-
-
-def blocks(language):
-    return re.findall(rf"^```{language}\n(.*?)^```$", TEXT, re.MULTILINE | re.DOTALL)
 
 
 @pytest.fixture
@@ -33,32 +30,52 @@ def same(shown, found):
         return False
 
 
-def test_commands_print_what_is_shown(here):
-    for block in blocks("console"):
-        steps = re.split(r"^\$ ", block, flags=re.MULTILINE)[1:]
-        for step in steps:
-            command, _, shown = step.partition("\n")
-            program, *words = shlex.split(command)
-            assert program == "trajcage"
-            done = CliRunner().invoke(main, words)
-            assert done.exit_code == 0, done.output
-            timeless = [re.sub(r"\(\d+\.\d s\)", "", t) for t in (shown, done.output)]
-            wanted, found = (text.split() for text in timeless)
-            if wanted[-1] == "...":  # the rest is left out
-                wanted = wanted[:-1]
-                found = found[: len(wanted)]
-            pairs = zip(wanted, found, strict=True)
-            assert [(a, b) for a, b in pairs if not same(a, b)] == [], command
+def check_session(block):
+    """Commands print what is shown; ``...`` stands for the rest of the output."""
+    for step in re.split(r"^\$ ", block, flags=re.MULTILINE)[1:]:
+        command, _, shown = step.partition("\n")
+        program, *words = shlex.split(command)
+        assert program == "trajcage"
+        done = CliRunner().invoke(main, words)
+        assert done.exit_code == 0, done.output
+        timeless = [re.sub(r"\(\d+\.\d s\)", "", t) for t in (shown, done.output)]
+        wanted, found = (text.split() for text in timeless)
+        if wanted[-1:] == ["..."]:
+            wanted = wanted[:-1]
+            found = found[: len(wanted)]
+        pairs = zip(wanted, found, strict=True)
+        assert [(a, b) for a, b in pairs if not same(a, b)] == [], command
 
 
-def test_python_works_as_written(here):
-    for block in blocks("python"):
-        exec(compile(block, "README.md", "exec"), {})
+def test_it_runs_from_top_to_bottom(here):
+    blocks = re.findall(r"^```(\w+)\n(.*?)^```$", TEXT, re.MULTILINE | re.DOTALL)
+    assert {language for language, _ in blocks} == {"console", "python"}
+    for language, block in blocks:
+        if language == "console":
+            check_session(block)
+        else:
+            exec(compile(block, "README.md", "exec"), {})
 
 
 def test_named_commands_exist():
-    context = main.make_context(
-        "trajcage", ["inspect", "--help"], resilient_parsing=True
-    )
-    known = set(main.list_commands(context))
-    assert set(re.findall(r"`trajcage (\w+)", TEXT)) - {"measure"} <= known
+    assert set(re.findall(r"`trajcage (\w+)", TEXT)) <= set(commands())
+
+
+def test_the_reference_is_fresh():
+    """Every command, option and dataset stands there; scripts/readme_reference.py does it."""
+    assert with_options(TEXT) == TEXT
+    assert (ROOT / "DATASETS.md").read_text(encoding="utf-8") == dataset_reference()
+
+
+def test_every_option_of_every_command_is_named_and_every_named_option_exists():
+    """Walked here by itself, so that the script above cannot leave one out."""
+    for name, command in commands().items():
+        part = TEXT.partition(f"### trajcage {name}\n")[2].partition("\n###")[0]
+        for option in options(command):
+            if option.name not in {"verbose", "quiet"}:
+                assert all(word in part for word in option.opts), (name, option.name)
+    known = {word for c in commands().values() for o in options(c) for word in o.opts}
+    known |= {"--help", "--version", "-h"}
+    elsewhere = TEXT.replace("dump_modify", "")
+    named = set(re.findall(r"(?<![\w-])--[a-z][a-z-]*", elsewhere))
+    assert named <= known, named - known
