@@ -3,6 +3,7 @@
 import csv
 import io
 import json
+import subprocess
 import sys
 
 import numpy as np
@@ -76,6 +77,16 @@ def test_row_groups_are_bounded(cages, tmp_path, monkeypatch, rows, groups):
         expected = np.asarray(result["free_volume"]).ravel()
     found = pd.read_parquet(path)
     assert np.array_equal(found["free_volume"], expected, equal_nan=True)
+
+
+def test_an_export_loads_no_geometry():
+    code = (
+        "import sys, trajcage.cli.export, trajcage.run.exporting, trajcage.run.inputs\n"
+        "print(sorted({'numba', 'MDAnalysis', 'freud', 'matplotlib'} & set(sys.modules)))"
+    )
+    words = [sys.executable, "-c", code]
+    done = subprocess.run(words, capture_output=True, text=True, check=True)
+    assert done.stdout == "[]\n"
 
 
 def test_without_pyarrow_the_extra_is_named(cages, tmp_path, monkeypatch):
