@@ -221,9 +221,8 @@ def main() -> None:
             jammed_packing(256, seed=seed, radii=radii, dimensions=dimensions).packing
             for seed in range(1, count + 1)
         ]
-        arrays[f"{name}_positions"] = np.array([one.positions for one in made])
-        arrays[f"{name}_lengths"] = np.array([one.lengths for one in made])
-        arrays[f"{name}_radii"] = radii
+        for part in Packing._fields:
+            arrays[f"{name}_{part}"] = np.array([getattr(one, part) for one in made])
     np.savez_compressed(target, **arrays)
 
 

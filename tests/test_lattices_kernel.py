@@ -1,16 +1,15 @@
-"""Lattice cages and the compiled kernel against each other and against grids."""
+"""Lattice cages and the compiled kernel against each other, grids and slices."""
 
 import math
 
 import numpy as np
 import pytest
+import shapely
+from scipy.integrate import quad
 
 import trajcage.kernel
 from trajcage.lattices import LATTICES, lattice, lattice_sites, thresholds
 from trajcage.model import CageStatus
-
-if not hasattr(trajcage.kernel, "measure_cages"):
-    pytest.skip("the kernel is not there yet", allow_module_level=True)
 
 PAST_FIRST_SHELL = ["sc", "bcc", "fcc", "hcp"]
 
@@ -53,6 +52,65 @@ def test_cages_of_several_shells_against_grids(name, phi, volume):
     found = lattice(name, phi)
     assert found.status is CageStatus.CLOSED
     assert found.free_volume / found.spacing**3 == pytest.approx(volume, rel=2.5e-3)
+
+
+def hull(name, z):
+    """Slice of the hull of all neighbors that bound a cage of the second stage.
+
+    Between them and inside it there is nothing but the cage: a cube (SC), a rhombic
+    dodecahedron (BCC), an octahedron (FCC).
+    """
+    if name == "sc":
+        return shapely.box(-1, -1, 1, 1)
+    edge = 2 / math.sqrt(3) if name == "bcc" else math.sqrt(2)
+    tip = edge if name == "bcc" else edge - abs(z)
+    diamond = shapely.Polygon([(tip, 0), (0, tip), (-tip, 0), (0, -tip)])
+    if name == "fcc":
+        return diamond
+    side = edge - abs(z)
+    return shapely.intersection(diamond, shapely.box(-side, -side, side, side))
+
+
+@pytest.mark.parametrize(
+    ("name", "phi"), [("sc", 0.20), ("sc", 0.27), ("bcc", 0.30), ("fcc", 0.20)]
+)
+def test_cages_of_several_shells_against_slices(name, phi):
+    """Adaptive quadrature over slices; areas by shapely, Richardson."""
+    found = lattice(name, phi)
+    s = 1 / found.spacing
+    repeats = tuple(math.ceil(5 / edge) for edge in LATTICES[name].cell)
+    sites, vectors = lattice_sites(name, repeats, 1.0)
+    sites -= np.diag(vectors) * np.rint(sites / np.diag(vectors))
+    distance = np.linalg.norm(sites, axis=1)
+    sites = sites[(distance > 0.5) & (distance < 2.5)]
+    points = shapely.points(sites[:, :2])
+
+    def area(z):
+        quarter = shapely.intersection(hull(name, z), shapely.box(0, 0, 2, 2))
+        height = np.minimum(np.abs(sites[:, 2] - z), s)
+        radii = np.sqrt(s * s - height**2)
+        near = shapely.distance(points, quarter) < radii
+        coarse, fine = (
+            quarter.difference(
+                shapely.union_all(
+                    shapely.buffer(points[near], radii[near], quad_segs=segments)
+                )
+            )
+            for segments in (12, 24)
+        )
+        return (4 * fine.area - coarse.area) / 3 * 4
+
+    top = {"sc": 1.0, "bcc": 2 / math.sqrt(3), "fcc": math.sqrt(2)}[name]
+    half = quad(area, 0.0, top, epsrel=1e-3, epsabs=0.0, limit=200)[0]
+    assert found.free_volume / found.spacing**3 == pytest.approx(2 * half, rel=1e-4)
+
+
+def test_hexagonal_cages_of_two_shells_have_the_size_of_face_centered_ones():
+    # the same halves, one mirrored, also with their pockets (derived)
+    for phi in (0.15, 0.2, 0.26):
+        one, two = lattice("hcp", phi), lattice("fcc", phi)
+        assert one.free_volume == pytest.approx(two.free_volume, rel=1e-8)
+        assert one.free_surface == pytest.approx(two.free_surface, rel=1e-7)
 
 
 @pytest.mark.parametrize(
