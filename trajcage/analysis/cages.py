@@ -18,6 +18,7 @@ from trajcage.model import (
     CageWindows,
     Field,
     Frame,
+    NeighborList,
 )
 from trajcage.neighborhood import check_distinct, neighbor_list
 
@@ -202,19 +203,30 @@ def check_packing(frame: Frame) -> str:
     return f"{told}: right only if small particles fill the gaps between large ones"
 
 
-def find_overlaps(frame: Frame, tolerance: float) -> Overlaps:
+def find_overlaps(
+    frame: Frame, tolerance: float, near: NeighborList | None = None
+) -> Overlaps:
     """Find the pairs that overlap, every periodic image counted.
+
+    Parameters
+    ----------
+    frame : Frame
+        The configuration.
+    tolerance : float, length
+        Overlaps up to this depth are not counted.
+    near : NeighborList, optional
+        All pairs that overlap, and maybe others; searched unless given.
 
     Raises
     ------
     FrameError
         If particles coincide; the message names them.
     """
-    pairs = neighbor_list(frame, lambda a, b: a + b)
+    pairs = neighbor_list(frame, lambda a, b: a + b) if near is None else near
     first, second = pairs.particles, pairs.neighbors
-    once = first < second
-    first, second = first[once], second[once]
-    depth = frame.radii[first] + frame.radii[second] - pairs.distances[once]
+    depth = frame.radii[first] + frame.radii[second] - pairs.distances
+    once = (first < second) & (depth >= 0.0)
+    first, second, depth = first[once], second[once], depth[once]
     if len(depth) == 0:
         return Overlaps(0, 0.0, (-1, -1))
     worst = int(np.argmax(depth))
@@ -228,7 +240,12 @@ def find_overlaps(frame: Frame, tolerance: float) -> Overlaps:
 
 
 def frame_cages(
-    frame: Frame, options: CageOptions, *, windows: bool = False, threads: int = 1
+    frame: Frame,
+    options: CageOptions,
+    *,
+    windows: bool = False,
+    threads: int = 1,
+    near: NeighborList | None = None,
 ) -> tuple[CageTable, Overlaps]:
     """Measure the cages of a frame.
 
@@ -242,6 +259,8 @@ def frame_cages(
         Whether to list every wall patch and every window.
     threads : int
         Threads to share the particles among; the result does not depend on it.
+    near : NeighborList, optional
+        As in :func:`find_overlaps`.
 
     Returns
     -------
@@ -257,7 +276,7 @@ def frame_cages(
     tolerance = options.overlap_tolerance
     if tolerance is None:
         tolerance = default_overlap_tolerance(frame)
-    overlaps = find_overlaps(frame, tolerance)
+    overlaps = find_overlaps(frame, tolerance, near)
     if options.strict and overlaps.count:
         raise frame.error(
             f"expected no overlap beyond {tolerance:.3g}, found overlapping pairs: "

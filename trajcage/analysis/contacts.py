@@ -10,7 +10,7 @@ from trajcage.kernel.halfspace import loose
 from trajcage.model import Field, Frame, NeighborList
 from trajcage.neighborhood import check_distinct, neighbor_list
 
-__all__ = ["ContactOptions", "fields", "measure_contacts"]
+__all__ = ["ContactOptions", "fields", "measure_contacts", "possible_contacts"]
 
 #: Value of `rattler` for particles that may touch others beyond an open edge.
 UNKNOWN = 2
@@ -120,8 +120,22 @@ def fields(options: ContactOptions) -> tuple[Field, ...]:
     )
 
 
+def possible_contacts(frame: Frame, options: ContactOptions) -> NeighborList:
+    """Find all pairs that touch at some tolerance.
+
+    Parameters
+    ----------
+    frame : Frame
+        The configuration; radii may differ.
+    options : ContactOptions
+        Tolerances.
+    """
+    reach = max(_tolerance(frame, options), *options.tolerances)
+    return neighbor_list(frame, lambda a, b: (1.0 + reach) * (a + b))
+
+
 def measure_contacts(
-    frame: Frame, options: ContactOptions
+    frame: Frame, options: ContactOptions, near: NeighborList | None = None
 ) -> dict[str, NDArray[np.generic] | float | int]:
     """Count contacts and find the particles that are not held by them.
 
@@ -131,6 +145,8 @@ def measure_contacts(
         The configuration; radii may differ.
     options : ContactOptions
         Tolerances.
+    near : NeighborList, optional
+        The pairs of :func:`possible_contacts`; searched unless given.
 
     Returns
     -------
@@ -150,8 +166,7 @@ def measure_contacts(
     """
     d = frame.dimensions
     tolerance = _tolerance(frame, options)
-    reach = max(tolerance, *options.tolerances)
-    near = neighbor_list(frame, lambda a, b: (1.0 + reach) * (a + b))
+    near = near or possible_contacts(frame, options)
     distances = near.distances
     if not distances.all():
         check_distinct(frame)  # names the coincident centers

@@ -218,11 +218,12 @@ def _space(
     with np.errstate(invalid="ignore"):  # particles without neighbors
         unit = sixth / np.linalg.norm(sixth, axis=1, keepdims=True)
     # q_lm of -m is the conjugate of that of m up to a sign: m >= 0 is enough.
-    half = np.concatenate([unit[:, :1], np.sqrt(2.0) * unit[:, 1:7]], axis=1)
-    parts = np.concatenate([half.real, half.imag], axis=1)
-    i, j = neighbors.particles, neighbors.neighbors
-    product = np.einsum("ij,ij->i", parts[i], parts[j])
-    bonds = np.bincount(i[product > options.bond_threshold], minlength=len(q))
+    half = unit[:, :7] * np.sqrt([1, 2, 2, 2, 2, 2, 2]).astype(np.float32)
+    parts = half.view(np.float32)  # real and imaginary
+    here = np.repeat(parts, neighbors.counts, axis=0)
+    product = np.einsum("ij,ij->i", here, parts[neighbors.neighbors])
+    solid = neighbors.particles[product > options.bond_threshold]
+    bonds = np.bincount(solid, minlength=len(q))
     structure = classify_space(
         np.column_stack([q, w]),
         bonds >= options.solid_bonds,

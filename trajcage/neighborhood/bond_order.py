@@ -106,11 +106,14 @@ def _bonds(frame: Frame, neighbors: NeighborList) -> _Bonds:
     vectors = vectors * np.where(is_open, np.maximum(needed, 1.0), 1.0)[:, None]
     repeats = np.where(is_open, 1, np.maximum(np.ceil(needed), 1)).astype(np.int64)
     cells = np.indices(tuple(repeats.tolist())).reshape(d, -1).T
-    fractional = frame.box.wrap(frame.positions) @ np.linalg.inv(vectors)
+    inverse = np.linalg.inv(vectors)
+    fractional = frame.box.wrap(frame.positions) @ inverse
     i, j = neighbors.particles, neighbors.neighbors
-    turns = neighbors.vectors @ np.linalg.inv(vectors) + fractional[i] - fractional[j]
-    ends = np.round(turns).astype(np.int64) + cells[:, None]
-    cell = np.ravel_multi_index(tuple(np.moveaxis(ends % repeats, -1, 0)), repeats)
+    cell = np.zeros((1, 1), dtype=np.int64)
+    if len(cells) > 1:
+        turns = neighbors.vectors @ inverse + fractional[i] - fractional[j]
+        ends = np.round(turns).astype(np.int64) + cells[:, None]
+        cell = np.ravel_multi_index(tuple(np.moveaxis(ends % repeats, -1, 0)), repeats)
     start = (i + n * np.arange(len(cells))[:, None]).ravel()
     points = np.zeros((n * len(cells), 3))
     unit = float(lengths.mean()) if longest > 0.0 else 1.0
@@ -119,7 +122,7 @@ def _bonds(frame: Frame, neighbors: NeighborList) -> _Bonds:
     spread = (fractional + cells[:, None]).reshape(-1, d) / repeats
     points[:, :d] = (spread - np.floor(spread) - 0.5) @ triangular
     bonds = np.zeros((len(i), 3), dtype=np.float32)
-    bonds[:, :d] = neighbors.vectors @ np.linalg.inv(vectors) @ one_cell
+    bonds[:, :d] = neighbors.vectors @ (inverse @ one_cell)
     weights = neighbors.weights / neighbors.weights.mean() if len(i) else np.ones(0)
     listed = freud.locality.NeighborList.from_arrays(
         len(points),

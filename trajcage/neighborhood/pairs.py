@@ -82,12 +82,19 @@ def neighbor_list(
     )
 
 
-def check_distinct(frame: Frame) -> None:
+def check_distinct(frame: Frame, near: NeighborList | None = None) -> None:
     """Refuse particles that sit on top of each other.
 
     Overlapping spheres are no matter; only centers closer than 1e-4 of the
     mean spacing, or than single precision can tell apart in this box, are
     duplicates. freud's tessellation ends the whole process on such a pair.
+
+    Parameters
+    ----------
+    frame : Frame
+        The configuration.
+    near : NeighborList, optional
+        All pairs that touch or overlap, and maybe others; searched if needed.
 
     Raises
     ------
@@ -97,6 +104,10 @@ def check_distinct(frame: Frame) -> None:
     spacing = (frame.box.volume / frame.n_particles) ** (1.0 / frame.dimensions)
     extent = np.append(frame.box.lengths, np.ptp(frame.box.wrap(frame.positions), 0))
     limit = max(1e-4 * spacing, _SINGLE * float(extent.max()))
+    if near is not None and limit <= 2.0 * frame.radii.min():
+        shortest = near.distances.min(initial=np.inf)
+        if shortest > limit:
+            return
     pairs = neighbor_list(frame, limit)
     if len(pairs.neighbors) == 0:
         return

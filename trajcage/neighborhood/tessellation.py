@@ -14,22 +14,28 @@ from trajcage.neighborhood.pairs import check_distinct
 __all__ = ["radical_voronoi", "tessellate", "voronoi"]
 
 
-def tessellate(frame: Frame) -> tuple[NDArray[np.float64], NeighborList]:
+def tessellate(
+    frame: Frame, near: NeighborList | None = None
+) -> tuple[NDArray[np.float64], NeighborList]:
     """Divide space among the particles: Voronoi for equal radii, radical for others.
 
     Parameters, results and errors are those of :func:`voronoi` and
     :func:`radical_voronoi`.
     """
-    return voronoi(frame) if frame.equal_radii else radical_voronoi(frame)
+    return (voronoi if frame.equal_radii else radical_voronoi)(frame, near)
 
 
-def voronoi(frame: Frame) -> tuple[NDArray[np.float64], NeighborList]:
+def voronoi(
+    frame: Frame, near: NeighborList | None = None
+) -> tuple[NDArray[np.float64], NeighborList]:
     """Tessellate space into the regions nearest to each particle center.
 
     Parameters
     ----------
     frame : Frame
         The configuration; radii are not used.
+    near : NeighborList, optional
+        As in :func:`trajcage.neighborhood.check_distinct`.
 
     Returns
     -------
@@ -54,7 +60,7 @@ def voronoi(frame: Frame) -> tuple[NDArray[np.float64], NeighborList]:
     for duplicates. So the box is built here, from its lower triangular form,
     in units of the mean particle spacing, and open edges are padded.
     """
-    check_distinct(frame)
+    check_distinct(frame, near)
     d, n = frame.dimensions, frame.n_particles
     positions = frame.box.wrap(frame.positions)
     scale = (frame.box.volume / n) ** (1.0 / d)
@@ -87,7 +93,9 @@ def voronoi(frame: Frame) -> tuple[NDArray[np.float64], NeighborList]:
     )
 
 
-def radical_voronoi(frame: Frame) -> tuple[NDArray[np.float64], NeighborList]:
+def radical_voronoi(
+    frame: Frame, near: NeighborList | None = None
+) -> tuple[NDArray[np.float64], NeighborList]:
     """Tessellate space by power distance, |x - x_i|^2 - r_i^2, from each particle.
 
     Facets lie in the planes of equal power, which pass between unequal spheres that
@@ -98,6 +106,8 @@ def radical_voronoi(frame: Frame) -> tuple[NDArray[np.float64], NeighborList]:
     ----------
     frame : Frame
         The configuration.
+    near : NeighborList, optional
+        As in :func:`trajcage.neighborhood.check_distinct`.
 
     Returns
     -------
@@ -120,7 +130,7 @@ def radical_voronoi(frame: Frame) -> tuple[NDArray[np.float64], NeighborList]:
     All in float64 by :func:`trajcage.kernel.radical_cells`; freud has no radical
     cells. Method: B. J. Gellatly & J. L. Finney, J. Non-Cryst. Solids 50, 313 (1982).
     """
-    check_distinct(frame)
+    check_distinct(frame, near)
     box = frame.box
     cells = radical_cells(
         box.wrap(frame.positions),

@@ -7,12 +7,13 @@ import numpy as np
 from numpy.typing import NDArray
 
 from trajcage.analysis.cages import (
+    check_packing,
     default_overlap_tolerance,
     frame_cages,
     stored_values,
 )
 from trajcage.analysis.cells import measure_cells
-from trajcage.analysis.contacts import measure_contacts
+from trajcage.analysis.contacts import measure_contacts, possible_contacts
 from trajcage.analysis.order import measure_order, order_neighbors
 from trajcage.analysis.thermodynamics import measure_thermodynamics
 from trajcage.model import CageTable, Frame, NeighborList
@@ -71,10 +72,13 @@ def measure_frame(frame: Frame, settings: RunSettings) -> MeasuredFrame:
     tolerance = settings.cages.overlap_tolerance
     if tolerance is None:
         tolerance = default_overlap_tolerance(frame)
+    check_packing(frame)  # before a wrong unit makes everybody a neighbor
     stages = Stages()
+    with stages.timed("pairs"):  # found once for all that asks for touching ones
+        near = possible_contacts(frame, settings.contacts)
     with stages.timed("cages"):
         table, overlaps = frame_cages(
-            frame, settings.cages, windows=settings.store_walls
+            frame, settings.cages, windows=settings.store_walls, near=near
         )
         values: dict[str, NDArray[np.generic] | float | int] = {**stored_values(table)}
         values |= measure_thermodynamics(frame, table, overlaps, tolerance)
@@ -85,7 +89,7 @@ def measure_frame(frame: Frame, settings: RunSettings) -> MeasuredFrame:
     bonds = None
     if settings.has("cells"):
         with stages.timed("cells"):
-            cells = tessellate(frame)
+            cells = tessellate(frame, near)
             values |= measure_cells(frame, cells[0])
         with stages.timed("order"):
             if settings.has("order"):
@@ -94,7 +98,7 @@ def measure_frame(frame: Frame, settings: RunSettings) -> MeasuredFrame:
                 bonds = bare(order_neighbors(frame, cells, settings.order)[0])
     if settings.has("rattlers"):
         with stages.timed("rattlers"):
-            values |= measure_contacts(frame, settings.contacts)
+            values |= measure_contacts(frame, settings.contacts, near)
     # the windows take more room than all the rest, and nothing stores them
     table = replace(table, windows=None)
     return MeasuredFrame(frame, table, values, bonds, stages.seconds)
