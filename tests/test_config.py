@@ -20,7 +20,6 @@ from trajcage.run.configuration import (
     to_toml,
 )
 
-
 #: Leaves out what these tests do not look at.
 FAST = ("--skip", "cells", "--skip", "rattlers", "--skip", "time")
 
@@ -97,6 +96,17 @@ def test_another_topology_replaces_the_recorded_input(tmp_path):
     call("measure", source, "--like", first, "--diameter", 1.3, "-o", other)
     with trajcage.open_result(other) as result:
         assert result.n_particles == 27
+
+
+def test_diameters_by_type_and_a_box_can_be_tables_and_lists(source, tmp_path):
+    config = tmp_path / "run.toml"
+    config.write_text(
+        f"[input]\ntopology = '{source}'\ndiameter = {{ A = 1.2 }}\n"
+        f"box = [5, 5, 5]\n[output]\noutput = '{tmp_path / 'r.h5'}'\n"
+    )
+    call("measure", "--config", config, *FAST, "--stop", 1)
+    with trajcage.open_result(tmp_path / "r.h5") as result:
+        assert set(2.0 * result.radii) == {1.2}
 
 
 def test_a_changed_input_is_told(source, tmp_path):

@@ -2,6 +2,7 @@
 
 import re
 import shlex
+import tomllib
 from pathlib import Path
 
 import pytest
@@ -9,6 +10,7 @@ from click.testing import CliRunner
 from readme_reference import commands, dataset_reference, options, with_options
 
 from trajcage.cli import main
+from trajcage.run.configuration import read_configuration
 
 ROOT = Path(__file__).parents[1]
 TEXT = (ROOT / "README.md").read_text(encoding="utf-8")
@@ -49,10 +51,13 @@ def check_session(block):
 
 def test_it_runs_from_top_to_bottom(here):
     blocks = re.findall(r"^```(\w+)\n(.*?)^```$", TEXT, re.MULTILINE | re.DOTALL)
-    assert {language for language, _ in blocks} == {"console", "python"}
+    assert {language for language, _ in blocks} == {"console", "python", "toml"}
     for language, block in blocks:
         if language == "console":
             check_session(block)
+        elif language == "toml":
+            Path("run.toml").write_text(block, encoding="utf-8")
+            assert read_configuration("run.toml") == tomllib.loads(block)
         else:
             exec(compile(block, "README.md", "exec"), {})
 

@@ -59,8 +59,7 @@ def command(*, result: Any, as_csv: bool, as_json: bool, limit: int) -> None:
 
 def _events(opened: "Result") -> list[dict[str, Any]]:
     """Events as rows with ids in place of indices and codes by name."""
-    from trajcage.analysis.regions import Region
-
+    regions = opened["region"].codes if "region" in opened else ()
     columns = opened.table("events")
     ids = opened.ids
     rows = []
@@ -75,7 +74,8 @@ def _events(opened: "Result") -> list[dict[str, Any]]:
             elif name == "particle":
                 row["id"] = int(ids[values[k]])
             elif name.startswith("region_"):
-                row[name] = Region(int(values[k])).name.lower()
+                code = int(values[k])
+                row[name] = regions[code] if code < len(regions) else "unknown"
             else:
                 row[name] = values[k].tolist()
         rows.append(row)
