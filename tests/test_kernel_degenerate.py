@@ -7,7 +7,7 @@ import numpy as np
 import pytest
 from cage_reference import cloud_around, reference_cage
 from kernel_cases import CLOSED, INVALID, OPEN, block, measure
-from scipy.optimize import brentq
+from scipy.optimize import brentq, linprog
 from scipy.spatial.transform import Rotation
 
 from trajcage.lattices import LATTICES, lattice_sites, thresholds
@@ -389,3 +389,42 @@ def test_walls_with_holes_and_clusters_against_sampling():
     assert len(deviations) > 200
     assert np.abs(deviations).max() < 5.0
     assert np.mean(np.square(deviations)) == pytest.approx(1.0, abs=0.3)
+
+
+@pytest.mark.parametrize("name", ["cuboctahedron", "dodecahedron", "icosahedron"])
+def test_a_particle_held_by_exact_contacts_is_closed_without_room(name):
+    """Contacts hold a particle if weights > 0 balance them in all directions.
+
+    That is the first-order condition for strict jamming of one particle (Torquato,
+    Donev & Stillinger, Int. J. Solids Struct. 40, 7143 (2003), from memory); whether
+    there are such weights a linear program decides. Without them there is a way out.
+    """
+    rng = np.random.default_rng(11)
+    directions = shell(name)[:-1]
+    n_held = 0
+    for _ in range(30):
+        n = int(rng.integers(6, 10))
+        contacts = directions[rng.choice(len(directions), n, replace=False)]
+        balance = linprog(
+            np.zeros(n), A_eq=contacts.T, b_eq=np.zeros(3), bounds=[(1.0, None)] * n
+        )
+        held = balance.status == 0 and np.linalg.matrix_rank(contacts) == 3
+        if not held:
+            # strictly out, away from every contact?
+            out = linprog(
+                [0.0, 0.0, 0.0, -1.0],
+                A_ub=np.column_stack([contacts, np.ones(n)]),
+                b_ub=np.zeros(n),
+                bounds=[(-1.0, 1.0)] * 3 + [(0.0, 1.0)],
+            )
+            if out.x[3] < 1e-6:
+                continue
+        points = np.vstack([contacts, np.zeros((1, 3))]) + rng.choice([0.0, 3.7])
+        cage = in_large_box(points, 0.5, reach=1.5, overlap_tolerance=1e-12)
+        n_held += held
+        assert cage["status"] == (CLOSED if held else OPEN)
+        if held:
+            # rounded contacts leave gaps of 1e-15, a flat one its square root
+            assert 0.0 <= cage["volume"] < 1e-20
+            assert cage["bounding"] >= 4
+    assert 5 < n_held < 30

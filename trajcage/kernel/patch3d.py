@@ -21,6 +21,7 @@ __all__ = [
     "STAMP",
     "TURN",
     "add_arc",
+    "held_fast",
     "opening_ratio",
     "patch_area",
     "polish_corners",
@@ -84,6 +85,21 @@ def polish_corners(s, n_corners):
             s.corner[q, 0] = px + scale * (fa * ux + fb * vx + fc * wx)
             s.corner[q, 1] = py + scale * (fa * uy + fb * vy + fc * wy)
             s.corner[q, 2] = pz + scale * (fa * uz + fb * vz + fc * wz)
+
+
+@helper
+def held_fast(s, n_corners):
+    """Tell whether contacts hold the particle to within the rounding of its input.
+
+    The corners of the true spheres then lie in a point, so far as anybody can
+    tell, and the sums over the wall are rounding: there is no room. Lengths
+    are of the order of one here, see `trajcage.kernel.cages`.
+    """
+    for q in range(n_corners):
+        x, y, z = s.corner[q, 0], s.corner[q, 1], s.corner[q, 2]
+        if x * x + y * y + z * z > 1e-28:
+            return False
+    return n_corners > 0
 
 
 @helper

@@ -12,7 +12,7 @@ import numpy as np
 
 from trajcage.kernel.codes import CLOSED, INVALID
 from trajcage.kernel.jit import helper
-from trajcage.kernel.patch3d import AREA, AX, AY, STAMP, TURN, touch
+from trajcage.kernel.patch3d import AREA, AX, AY, STAMP, TURN, held_fast, touch
 from trajcage.kernel.scratch import POWER, REACH, X, Y
 from trajcage.kernel.torus import home_of
 from trajcage.kernel.wall3d import covered
@@ -202,13 +202,17 @@ def integrate_wall(grid, s, n, n_cells, n_corners, torus):
         _free_lines(s, n_cells, torus)
         area = 0.5 * (torus.sums[0] - wall_sum)
     area = max(area, 0.0)
-    if not np.sqrt(tx * tx + ty * ty) <= 1e-7 * length + 1e-280:
+    held = held_fast(s, n_corners)
+    if held:
+        area = 0.0
+    elif not np.sqrt(tx * tx + ty * ty) <= 1e-7 * length + 1e-280:
         return INVALID, 0.0, 0.0, 0.0, 0, 0.0, -1
     bounding = 0
     for m in range(s.clock[1]):
-        # arcs born from broken ties have no length
-        if s.patch[s.seen[m], AREA] > 1e-10 * length:
-            s.seen[bounding] = s.seen[m]
+        a = s.seen[m]
+        # arcs born from broken ties have no length; in a point none has
+        if s.patch[a, AREA] > 1e-10 * length or (held and s.patch[a, TURN] != 0.0):
+            s.seen[bounding] = a
             bounding += 1
     weakest = -1.0
     where = -1

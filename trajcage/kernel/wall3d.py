@@ -25,6 +25,7 @@ from trajcage.kernel.patch3d import (
     STAMP,
     TURN,
     add_arc,
+    held_fast,
     opening_ratio,
     patch_area,
     polish_corners,
@@ -442,14 +443,17 @@ def integrate_wall(grid, s, n, n_cells, n_corners, torus):
     if torus is not None:
         volume = (torus.sums[0] - wall_sum) / 3.0
     volume = max(volume, 0.0)
-    closure = np.sqrt(tx * tx + ty * ty + tz * tz)
-    if not closure <= 1e-7 * surface + 1e-280:
+    held = held_fast(s, n_corners)
+    if held:
+        volume = 0.0
+    elif not np.sqrt(tx * tx + ty * ty + tz * tz) <= 1e-7 * surface + 1e-280:
         return INVALID, 0.0, 0.0, 0.0, 0, 0.0, -1
     bounding = 0
     for m in range(s.clock[1]):
-        # patches born from broken ties have no area
-        if s.patch[s.seen[m], AREA] > 1e-10 * surface:
-            s.seen[bounding] = s.seen[m]
+        a = s.seen[m]
+        # patches born from broken ties have no area; in a point none has
+        if s.patch[a, AREA] > 1e-10 * surface or (held and s.patch[a, ARCS] > 0.0):
+            s.seen[bounding] = a
             bounding += 1
     weakest = -1.0
     where = -1
