@@ -175,8 +175,8 @@ def lattice(name: str, packing_fraction: float) -> LatticeReference:
     While the nearest neighbors alone bound the cage, its size comes from closed forms
     (plane) or one smooth integral (space), to rounding at any distance from close
     packing. Later stages have closed forms in the plane; in space the same kernel
-    that measures trajectories measures the perfect lattice, to 1e-8 of the free
-    volume, since it breaks ties by shifts of 1e-10.
+    that measures trajectories measures the perfect lattice, to 1e-12: so
+    much the size depends on how its ties are broken.
 
     Parameters
     ----------
