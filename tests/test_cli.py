@@ -228,6 +228,7 @@ def test_lattice_prints_the_reference_of_the_library():
         (["measure", "nothing.gsd", "-o", "r.h5"], 1, "nothing at nothing.gsd"),
         (["inspect", "nothing.gsd"], 1, "nothing at nothing.gsd"),
         (["inspect", scenario.FLUID[0]], 1, "--diameter"),
+        (["inspect", *reversed(scenario.FLUID)], 1, "the topology first"),
         (["summary", "nothing.h5"], 1, "nothing.h5"),
         (["breaks", scenario.CRYSTAL], 1, "not an HDF5 file"),
         (["lattice", "fc", "--packing-fraction", "0.5"], 2, "did you mean fcc?"),

@@ -16,6 +16,9 @@ __all__ = ["open_trajectory"]
 
 _LOGGER = logging.getLogger(__name__)
 
+# Formats that hold frames and nothing about the particles.
+_ONLY_FRAMES = {".dcd", ".trr", ".xtc"}
+
 # First bytes that settle the format whatever the file is called (dump.melt).
 _FIRST_BYTES = {
     b"ITEM: ": ".dump",
@@ -107,6 +110,11 @@ def _kind(path: Path) -> str:
 
 def _companion(topology: Path) -> Particles:
     """Read the particles from a topology beside a trajectory."""
+    if topology.suffix.lower() in _ONLY_FRAMES:
+        raise InputError(
+            f"{topology} names no particles: expected the topology first, then the "
+            "trajectory"
+        )
     source = _open_own(topology)
     if source is None:
         from trajcage.readers.universe import read_topology  # as MDAnalysis above
