@@ -225,8 +225,11 @@ def compressibility_factor(
         return math.nan, CompressibilityStatus.UNRESOLVED
     if _is_ideal_lattice(frame, table):
         return math.nan, CompressibilityStatus.IDEAL_LATTICE
-    with np.errstate(divide="ignore"):
-        ratio = table.wall_sum[measured] / table.free_volume[measured]
+    walls, volumes = table.wall_sum[measured], table.free_volume[measured]
+    # without room contacts never cease, and neither volume nor wall is left
+    ratio = np.divide(
+        walls, volumes, out=np.full(len(volumes), np.inf), where=volumes > 0.0
+    )
     z = 1.0 + float(ratio.mean()) / (2.0 * frame.dimensions)
     return z, CompressibilityStatus.MEASURED
 
@@ -244,13 +247,16 @@ def _is_ideal_lattice(frame: Frame, table: CageTable) -> bool:
     members = np.bincount(group)
     if frame.n_particles <= 2 or len(volumes) < 4 * len(members):
         return False
-    mean = np.bincount(group, volumes) / members
-    with np.errstate(invalid="ignore", divide="ignore"):
-        spread = np.abs(volumes / mean[group] - 1.0)
-        steepness = float(np.mean(table.free_surface[known] / volumes))
+    mean = (np.bincount(group, volumes) / members)[group]
+    steepness = np.divide(
+        table.free_surface[known],
+        volumes,
+        out=np.zeros_like(volumes),
+        where=volumes > 0,
+    )  # touching neighbors leave nothing, not even a slope
     shift = 2.0 * math.sqrt(frame.dimensions) * frame.resolution
-    limit = min(1e-6 + shift * steepness, _LARGEST_LATTICE_SPREAD)
-    return bool(np.all(spread <= limit))
+    limit = min(1e-6 + shift * float(steepness.mean()), _LARGEST_LATTICE_SPREAD)
+    return bool(np.all(np.abs(volumes - mean) <= limit * mean))
 
 
 def equal_diameter(frame: Frame) -> float:
