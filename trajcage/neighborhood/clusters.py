@@ -27,7 +27,9 @@ def connected_groups(
         Group of each particle, 0 for the largest; single particles are groups.
     """
     n = neighbors.n_particles
-    i, j = neighbors.particles[linked], neighbors.neighbors[linked]
+    i, j = neighbors.particles, neighbors.neighbors
+    once = linked & (i < j)  # one of the two directions is enough, and half the work
+    i, j = i[once], j[once]
     bonds = freud.locality.NeighborList.from_arrays(
         n,
         n,
