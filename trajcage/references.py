@@ -102,6 +102,18 @@ def _entry(kind: str, key: str, fields: dict[str, str]) -> str:
     return "\n".join([f"@{kind}{{{key},", *lines, "}"])
 
 
+def _article(authors: str, title: str, place: str, doi: str = "") -> Article:
+    """Return an article from its authors, title and ``Journal volume, page (year)``."""
+    found = re.fullmatch(r"(.+) (\S+), (\S+) \((\d{4})\)", place)
+    assert found is not None, place
+    journal, volume, page, year = found.groups()
+    if journal.startswith("Phys. Rev. "):  # follows from the place
+        series = journal.removeprefix("Phys. Rev. ").rstrip(".")
+        doi = f"10.1103/PhysRev{series}.{volume}.{page}"
+    names = tuple(authors.split("; "))
+    return Article(names, title, journal, volume, page, int(year), doi)
+
+
 PROGRAM = Program(
     "the trajcage developers",
     "trajcage: exact cages, free volumes and cage breaking of hard spheres and colloids",
@@ -110,300 +122,142 @@ PROGRAM = Program(
 
 #: Libraries whose authors ask to be cited.
 BUILT_ON = (
-    Article(
-        (
-            "Michaud-Agrawal, Naveen",
-            "Denning, Elizabeth J.",
-            "Woolf, Thomas B.",
-            "Beckstein, Oliver",
-        ),
+    _article(
+        "Michaud-Agrawal, Naveen; Denning, Elizabeth J.; Woolf, Thomas B.; Beckstein, Oliver",
         "MDAnalysis: A toolkit for the analysis of molecular dynamics simulations",
-        "Journal of Computational Chemistry",
-        "32",
-        "2319",
-        2011,
+        "Journal of Computational Chemistry 32, 2319 (2011)",
         "10.1002/jcc.21787",
     ),
-    Article(
-        (
-            "Ramasubramani, Vyas",
-            "Dice, Bradley D.",
-            "Harper, Eric S.",
-            "Spellings, Matthew P.",
-            "Anderson, Joshua A.",
-            "Glotzer, Sharon C.",
-        ),
-        "freud: A software suite for high throughput analysis of particle simulation "
-        "data",
-        "Computer Physics Communications",
-        "254",
-        "107275",
-        2020,
+    _article(
+        "Ramasubramani, Vyas; Dice, Bradley D.; Harper, Eric S.; Spellings, Matthew P.; Anderson, Joshua A.; Glotzer, Sharon C.",
+        "freud: A software suite for high throughput analysis of particle simulation data",
+        "Computer Physics Communications 254, 107275 (2020)",
         "10.1016/j.cpc.2020.107275",
     ),
 )
 
-
-def _physical_review(
-    series: str, volume: str, page: str, year: int, title: str, *authors: str
-) -> Article:
-    """Return an article whose DOI follows from its place."""
-    doi = f"10.1103/PhysRev{series.rstrip('.')}.{volume}.{page}"
-    return Article(authors, title, f"Phys. Rev. {series}", volume, page, year, doi)
-
-
-def _article(
-    journal: str, volume: str, page: str, year: int, title: str, *authors: str
-) -> Article:
-    return Article(authors, title, journal, volume, page, year)
-
-
-_CHEMICAL = "J. Chem. Phys."
-_MOLECULAR = "Mol. Phys."
-
 _FREE_VOLUME = _article(
-    _MOLECULAR,
-    "95",
-    "289",
-    1998,
+    "Sastry, S.; Truskett, T. M.; Debenedetti, P. G.; Torquato, S.; Stillinger, F. H.",
     "Free volume in the hard sphere liquid",
-    "Sastry, S.",
-    "Truskett, T. M.",
-    "Debenedetti, P. G.",
-    "Torquato, S.",
-    "Stillinger, F. H.",
+    "Mol. Phys. 95, 289 (1998)",
 )
 _PRESSURE = (
     _article(
-        _CHEMICAL,
-        "57",
-        "1259",
-        1972,
+        "Hoover, W. G.; Ashurst, W. T.; Grover, R.",
         "Exact dynamical basis for a fluctuating cell model",
-        "Hoover, W. G.",
-        "Ashurst, W. T.",
-        "Grover, R.",
+        "J. Chem. Phys. 57, 1259 (1972)",
     ),
     _article(
-        "J. Chem. Soc. Faraday Trans. 2",
-        "76",
-        "693",
-        1980,
-        "Accurate theory of the hard sphere fluid",
         "Speedy, R. J.",
+        "Accurate theory of the hard sphere fluid",
+        "J. Chem. Soc. Faraday Trans. 2 76, 693 (1980)",
     ),
     _article(
-        _MOLECULAR,
-        "96",
-        "1623",
-        1999,
-        "Statistical geometry of hard sphere systems: exact relations for additive and "
-        "non-additive mixtures",
-        "Corti, D. S.",
-        "Bowles, R. K.",
+        "Corti, D. S.; Bowles, R. K.",
+        "Statistical geometry of hard sphere systems: exact relations for additive and non-additive mixtures",
+        "Mol. Phys. 96, 1623 (1999)",
     ),
 )
 _CELLS = _article(
-    "J. Non-Cryst. Solids",
-    "50",
-    "313",
-    1982,
-    "Characterisation of models of multicomponent amorphous metals: the radical "
-    "alternative to the Voronoi polyhedron",
-    "Gellatly, B. J.",
-    "Finney, J. L.",
+    "Gellatly, B. J.; Finney, J. L.",
+    "Characterisation of models of multicomponent amorphous metals: the radical alternative to the Voronoi polyhedron",
+    "J. Non-Cryst. Solids 50, 313 (1982)",
 )
-_CELL_SHAPE = _physical_review(
-    "E",
-    "77",
-    "021309",
-    2008,
+_CELL_SHAPE = _article(
+    "Aste, T.; Di Matteo, T.",
     "Emergence of Gamma distributions in granular materials and packing models",
-    "Aste, T.",
-    "Di Matteo, T.",
+    "Phys. Rev. E 77, 021309 (2008)",
 )
 _ORDER = (
-    _physical_review(
-        "B",
-        "28",
-        "784",
-        1983,
+    _article(
+        "Steinhardt, P. J.; Nelson, D. R.; Ronchetti, M.",
         "Bond-orientational order in liquids and glasses",
-        "Steinhardt, P. J.",
-        "Nelson, D. R.",
-        "Ronchetti, M.",
+        "Phys. Rev. B 28, 784 (1983)",
     ),
     _article(
-        _CHEMICAL,
-        "129",
-        "114707",
-        2008,
-        "Accurate determination of crystal structures based on averaged local bond order "
-        "parameters",
-        "Lechner, W.",
-        "Dellago, C.",
+        "Lechner, W.; Dellago, C.",
+        "Accurate determination of crystal structures based on averaged local bond order parameters",
+        "J. Chem. Phys. 129, 114707 (2008)",
     ),
 )
 _FACETS = _article(
-    _CHEMICAL,
-    "138",
-    "044501",
-    2013,
-    "Shortcomings of the bond orientational order parameters for the analysis of "
-    "disordered particulate matter",
-    "Mickel, W.",
-    "Kapfer, S. C.",
-    "Schröder-Turk, G. E.",
-    "Mecke, K.",
+    "Mickel, W.; Kapfer, S. C.; Schröder-Turk, G. E.; Mecke, K.",
+    "Shortcomings of the bond orientational order parameters for the analysis of disordered particulate matter",
+    "J. Chem. Phys. 138, 044501 (2013)",
 )
 _SOLID = _article(
-    _CHEMICAL,
-    "133",
-    "244115",
-    2010,
-    "Crystal nucleation of hard spheres using molecular dynamics, umbrella sampling, and "
-    "forward flux sampling: A comparison of simulation techniques",
-    "Filion, L.",
-    "Hermes, M.",
-    "Ni, R.",
-    "Dijkstra, M.",
+    "Filion, L.; Hermes, M.; Ni, R.; Dijkstra, M.",
+    "Crystal nucleation of hard spheres using molecular dynamics, umbrella sampling, and forward flux sampling: A comparison of simulation techniques",
+    "J. Chem. Phys. 133, 244115 (2010)",
 )
 _RATTLERS = (
     _article(
-        "J. Phys. Chem. B",
-        "105",
-        "11849",
-        2001,
-        "Multiplicity of generation, selection, and classification procedures for jammed "
-        "hard-particle packings",
-        "Torquato, S.",
-        "Stillinger, F. H.",
+        "Torquato, S.; Stillinger, F. H.",
+        "Multiplicity of generation, selection, and classification procedures for jammed hard-particle packings",
+        "J. Phys. Chem. B 105, 11849 (2001)",
     ),
-    _physical_review(
-        "E",
-        "88",
-        "062208",
-        2013,
-        "Detailed characterization of rattlers in exactly isostatic, strictly jammed "
-        "sphere packings",
-        "Atkinson, S.",
-        "Stillinger, F. H.",
-        "Torquato, S.",
+    _article(
+        "Atkinson, S.; Stillinger, F. H.; Torquato, S.",
+        "Detailed characterization of rattlers in exactly isostatic, strictly jammed sphere packings",
+        "Phys. Rev. E 88, 062208 (2013)",
     ),
 )
-_BREAKING = _physical_review(
-    "E",
-    "58",
-    "3515",
-    1998,
+_BREAKING = _article(
+    "Yamamoto, R.; Onuki, A.",
     "Dynamics of highly supercooled liquids: Heterogeneity, rheology, and diffusion",
-    "Yamamoto, R.",
-    "Onuki, A.",
+    "Phys. Rev. E 58, 3515 (1998)",
 )
 _SURVIVAL = (
     _article(
-        "J. Am. Stat. Assoc.",
-        "53",
-        "457",
-        1958,
+        "Kaplan, E. L.; Meier, P.",
         "Nonparametric estimation from incomplete observations",
-        "Kaplan, E. L.",
-        "Meier, P.",
+        "J. Am. Stat. Assoc. 53, 457 (1958)",
     ),
-    _physical_review(
-        "E",
-        "69",
-        "061205",
-        2004,
-        "Excitation lines and the breakdown of Stokes-Einstein relations in supercooled "
-        "liquids",
-        "Jung, Y.",
-        "Garrahan, J. P.",
-        "Chandler, D.",
+    _article(
+        "Jung, Y.; Garrahan, J. P.; Chandler, D.",
+        "Excitation lines and the breakdown of Stokes-Einstein relations in supercooled liquids",
+        "Phys. Rev. E 69, 061205 (2004)",
     ),
 )
 _JUMPS = (
-    _physical_review(
-        "Lett.",
-        "105",
-        "135702",
-        2010,
-        "Spatiotemporal hierarchy of relaxation events, dynamical heterogeneities, and "
-        "structural reorganization in a supercooled liquid",
-        "Candelier, R.",
-        "Widmer-Cooper, A.",
-        "Kummerfeld, J. K.",
-        "Dauchot, O.",
-        "Biroli, G.",
-        "Harrowell, P.",
-        "Reichman, D. R.",
+    _article(
+        "Candelier, R.; Widmer-Cooper, A.; Kummerfeld, J. K.; Dauchot, O.; Biroli, G.; Harrowell, P.; Reichman, D. R.",
+        "Spatiotemporal hierarchy of relaxation events, dynamical heterogeneities, and structural reorganization in a supercooled liquid",
+        "Phys. Rev. Lett. 105, 135702 (2010)",
     ),
-    _physical_review(
-        "E",
-        "88",
-        "022314",
-        2013,
-        "Distribution of local relaxation events in an aging three-dimensional glass: "
-        "Spatiotemporal correlation and dynamical heterogeneity",
-        "Smessaert, A.",
-        "Rottler, J.",
+    _article(
+        "Smessaert, A.; Rottler, J.",
+        "Distribution of local relaxation events in an aging three-dimensional glass: Spatiotemporal correlation and dynamical heterogeneity",
+        "Phys. Rev. E 88, 022314 (2013)",
     ),
 )
 _PATHS = _article(
-    _CHEMICAL,
-    "153",
-    "021101",
-    2020,
-    "Systematic errors in diffusion coefficients from long-time molecular dynamics "
-    "simulations at constant pressure",
-    "von Bülow, S.",
-    "Bullerjahn, J. T.",
-    "Hummer, G.",
+    "von Bülow, S.; Bullerjahn, J. T.; Hummer, G.",
+    "Systematic errors in diffusion coefficients from long-time molecular dynamics simulations at constant pressure",
+    "J. Chem. Phys. 153, 021101 (2020)",
 )
 _ERRORS = (
     _article(
-        _CHEMICAL,
-        "91",
-        "461",
-        1989,
+        "Flyvbjerg, H.; Petersen, H. G.",
         "Error estimates on averages of correlated data",
-        "Flyvbjerg, H.",
-        "Petersen, H. G.",
+        "J. Chem. Phys. 91, 461 (1989)",
     ),
-    _physical_review(
-        "E",
-        "83",
-        "066706",
-        2011,
+    _article(
+        "Lee, R. M.; Conduit, G. J.; Nemec, N.; López Ríos, P.; Drummond, N. D.",
         "Strategies for improving the efficiency of quantum Monte Carlo calculations",
-        "Lee, R. M.",
-        "Conduit, G. J.",
-        "Nemec, N.",
-        "López Ríos, P.",
-        "Drummond, N. D.",
+        "Phys. Rev. E 83, 066706 (2011)",
     ),
 )
 _SOFT = (
     _article(
-        _CHEMICAL,
-        "47",
-        "4714",
-        1967,
-        "Perturbation theory and equation of state for fluids. II. A successful theory "
-        "of liquids",
-        "Barker, J. A.",
-        "Henderson, D.",
+        "Barker, J. A.; Henderson, D.",
+        "Perturbation theory and equation of state for fluids. II. A successful theory of liquids",
+        "J. Chem. Phys. 47, 4714 (1967)",
     ),
     _article(
-        _CHEMICAL,
-        "54",
-        "5237",
-        1971,
-        "Role of repulsive forces in determining the equilibrium structure of simple "
-        "liquids",
-        "Weeks, J. D.",
-        "Chandler, D.",
-        "Andersen, H. C.",
+        "Weeks, J. D.; Chandler, D.; Andersen, H. C.",
+        "Role of repulsive forces in determining the equilibrium structure of simple liquids",
+        "J. Chem. Phys. 54, 5237 (1971)",
     ),
 )
 
@@ -430,111 +284,62 @@ METHODS: tuple[tuple[tuple[str, ...], tuple[Article, ...]], ...] = (
 #: Articles behind the equations of state that a summary may name.
 EQUATIONS = (
     _article(
-        "Phys. Chem. Chem. Phys.",
-        "6",
-        "2335",
-        2004,
-        "Accurate equation of state of the hard sphere fluid in stable and metastable "
-        "regions",
-        "Kolafa, J.",
-        "Labík, S.",
-        "Malijevský, A.",
+        "Kolafa, J.; Labík, S.; Malijevský, A.",
+        "Accurate equation of state of the hard sphere fluid in stable and metastable regions",
+        "Phys. Chem. Chem. Phys. 6, 2335 (2004)",
     ),
     _article(
-        _CHEMICAL,
-        "51",
-        "635",
-        1969,
+        "Carnahan, N. F.; Starling, K. E.",
         "Equation of state for nonattracting rigid spheres",
-        "Carnahan, N. F.",
-        "Starling, K. E.",
+        "J. Chem. Phys. 51, 635 (1969)",
     ),
     _article(
-        _MOLECULAR,
-        "104",
-        "3435",
-        2006,
-        "Simulation-based equation of state of the hard disk fluid and prediction of "
-        "higher-order virial coefficients",
-        "Kolafa, J.",
-        "Rottner, M.",
+        "Kolafa, J.; Rottner, M.",
+        "Simulation-based equation of state of the hard disk fluid and prediction of higher-order virial coefficients",
+        "Mol. Phys. 104, 3435 (2006)",
     ),
     _article(
-        _CHEMICAL,
-        "103",
-        "4622",
-        1995,
+        "Santos, A.; López de Haro, M.; Bravo Yuste, S.",
         "An accurate and simple equation of state for hard disks",
-        "Santos, A.",
-        "López de Haro, M.",
-        "Bravo Yuste, S.",
+        "J. Chem. Phys. 103, 4622 (1995)",
     ),
     _article(
-        _MOLECULAR,
-        "30",
-        "971",
-        1975,
-        "A simple equation of state for hard discs",
         "Henderson, D.",
+        "A simple equation of state for hard discs",
+        "Mol. Phys. 30, 971 (1975)",
     ),
     _article(
-        _CHEMICAL, "53", "471", 1970, "Hard-sphere equation of state", "Boublík, T."
+        "Boublík, T.", "Hard-sphere equation of state", "J. Chem. Phys. 53, 471 (1970)"
     ),
     _article(
-        _CHEMICAL,
-        "54",
-        "1523",
-        1971,
+        "Mansoori, G. A.; Carnahan, N. F.; Starling, K. E.; Leland, T. W.",
         "Equilibrium thermodynamic properties of the mixture of hard spheres",
-        "Mansoori, G. A.",
-        "Carnahan, N. F.",
-        "Starling, K. E.",
-        "Leland, T. W.",
+        "J. Chem. Phys. 54, 1523 (1971)",
     ),
     _article(
-        _MOLECULAR,
-        "96",
-        "1",
-        1999,
+        "Santos, A.; Bravo Yuste, S.; López de Haro, M.",
         "Equation of state of a multicomponent d-dimensional hard-sphere fluid",
-        "Santos, A.",
-        "Bravo Yuste, S.",
-        "López de Haro, M.",
+        "Mol. Phys. 96, 1 (1999)",
     ),
     _article(
-        _CHEMICAL,
-        "57",
-        "2252",
-        1972,
-        "Another hard-sphere equation of state",
         "Hall, K. R.",
+        "Another hard-sphere equation of state",
+        "J. Chem. Phys. 57, 2252 (1972)",
     ),
     _article(
-        "J. Phys.: Condens. Matter",
-        "10",
-        "4387",
-        1998,
-        "Pressure and entropy of hard-sphere crystals",
         "Speedy, R. J.",
+        "Pressure and entropy of hard-sphere crystals",
+        "J. Phys.: Condens. Matter 10, 4387 (1998)",
     ),
     _article(
-        _CHEMICAL,
-        "130",
-        "184106",
-        2009,
-        "A cluster algorithm for Monte Carlo simulation at constant pressure",
         "Almarza, N. G.",
+        "A cluster algorithm for Monte Carlo simulation at constant pressure",
+        "J. Chem. Phys. 130, 184106 (2009)",
     ),
     _article(
-        _CHEMICAL,
-        "49",
-        "3688",
-        1968,
-        "Studies in molecular dynamics. V. High-density equation of state and entropy "
-        "for hard disks and spheres",
-        "Alder, B. J.",
-        "Hoover, W. G.",
-        "Young, D. A.",
+        "Alder, B. J.; Hoover, W. G.; Young, D. A.",
+        "Studies in molecular dynamics. V. High-density equation of state and entropy for hard disks and spheres",
+        "J. Chem. Phys. 49, 3688 (1968)",
     ),
 )
 
