@@ -91,5 +91,7 @@ def write_figures(
         for name, path in paths.items():
             path.write_bytes(figure_bytes(figures.drawn[name], form))
     except OSError as error:
-        raise ResultFileError(f"cannot write figures to {target}: {error.strerror}") from error
+        raise ResultFileError(
+            f"cannot write figures to {target}: {error.strerror}"
+        ) from error
     return paths, figures
