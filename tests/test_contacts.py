@@ -176,8 +176,8 @@ def test_unequal_disks_touch_at_the_sum_of_their_radii():
 @pytest.fixture(scope="module", params=["disks", "spheres"])
 def jammed(request):
     if request.param == "disks":
-        return jammed_packing(80, seed=4, radii=binary(80, 1.4), dimensions=2)
-    return jammed_packing(60, seed=1, radii=polydisperse(60, 0.1))
+        return jammed_packing(60, seed=4, radii=binary(60, 1.4), dimensions=2)
+    return jammed_packing(48, seed=1, radii=polydisperse(48, 0.1))
 
 
 def as_packed(jammed, digits=15):

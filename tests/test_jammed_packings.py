@@ -7,11 +7,13 @@ import pytest
 from jammed_packings import jam, jammed_packing
 from monte_carlo import MonteCarlo, binary, random_fluid
 
+N = 50
+
 
 @pytest.fixture(scope="module", params=[2, 3])
 def jammed(request):
-    radii = binary(70, 1.4) if request.param == 2 else 0.5
-    return jammed_packing(70, seed=21, radii=radii, dimensions=request.param)
+    radii = binary(N, 1.4) if request.param == 2 else 0.5
+    return jammed_packing(N, seed=21, radii=radii, dimensions=request.param)
 
 
 def contact_directions(jammed):
@@ -35,7 +37,7 @@ def test_the_backbone_is_isostatic(jammed):
     dimensions = jammed.packing.lengths.size
     n_backbone = np.count_nonzero(~jammed.rattlers)
     assert len(jammed.contacts) == dimensions * (n_backbone - 1) + 1
-    contacts = np.bincount(jammed.contacts.ravel(), minlength=70)
+    contacts = np.bincount(jammed.contacts.ravel(), minlength=N)
     assert (contacts[jammed.rattlers] == 0).all()
     assert (contacts[~jammed.rattlers] >= dimensions + 1).all()
 

@@ -82,7 +82,7 @@ def test_mixture(phi):
     run = monte_carlo.random_fluid(
         600, phi, radii, seed=24, sweeps=1000, swap_fraction=0.2
     )
-    found, error = sampled(run, 50, 25)
+    found, error = sampled(run, 24, 25)
     assert error < 0.01 * found
     exact = sphere_mixture(radii).compressibility_factor(phi)
     agree(found, error, exact, 0.005 * exact)
