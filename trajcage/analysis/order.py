@@ -20,6 +20,10 @@ __all__ = [
 ]
 
 
+# Bonds whose harmonics are multiplied together: few enough for the cache.
+_AT_A_TIME = 16_384
+
+
 @dataclass(frozen=True)
 class OrderOptions:
     """How bonds are found and when they count as solid.
@@ -220,10 +224,13 @@ def _space(
     # q_lm of -m is the conjugate of that of m up to a sign: m >= 0 is enough.
     half = unit[:, :7] * np.sqrt([1, 2, 2, 2, 2, 2, 2]).astype(np.float32)
     parts = half.view(np.float32)  # real and imaginary
-    here = np.repeat(parts, neighbors.counts, axis=0)
-    product = np.einsum("ij,ij->i", here, parts[neighbors.neighbors])
-    solid = neighbors.particles[product > options.bond_threshold]
-    bonds = np.bincount(solid, minlength=len(q))
+    i, j = neighbors.particles, neighbors.neighbors
+    solid = np.empty(len(i), dtype=np.bool_)
+    for start in range(0, len(i), _AT_A_TIME):
+        some = slice(start, start + _AT_A_TIME)
+        product = np.einsum("ij,ij->i", parts[i[some]], parts[j[some]])
+        solid[some] = product > options.bond_threshold
+    bonds = np.bincount(i[solid], minlength=len(q))
     structure = classify_space(
         np.column_stack([q, w]),
         bonds >= options.solid_bonds,

@@ -114,7 +114,6 @@ def _bonds(frame: Frame, neighbors: NeighborList) -> _Bonds:
         turns = neighbors.vectors @ inverse + fractional[i] - fractional[j]
         ends = np.round(turns).astype(np.int64) + cells[:, None]
         cell = np.ravel_multi_index(tuple(np.moveaxis(ends % repeats, -1, 0)), repeats)
-    start = (i + n * np.arange(len(cells))[:, None]).ravel()
     points = np.zeros((n * len(cells), 3))
     unit = float(lengths.mean()) if longest > 0.0 else 1.0
     one_cell = lower_triangle(vectors) / unit
@@ -124,10 +123,11 @@ def _bonds(frame: Frame, neighbors: NeighborList) -> _Bonds:
     bonds = np.zeros((len(i), 3), dtype=np.float32)
     bonds[:, :d] = neighbors.vectors @ (inverse @ one_cell)
     weights = neighbors.weights / neighbors.weights.mean() if len(i) else np.ones(0)
+    start = i + n * np.arange(len(cells))[:, None]
     listed = freud.locality.NeighborList.from_arrays(
         len(points),
         len(points),
-        start.astype(np.uint32),
+        start.ravel().astype(np.uint32),
         (j + n * cell).ravel().astype(np.uint32),
         np.tile(bonds, (len(cells), 1)),
         np.tile(weights.astype(np.float32), len(cells)),

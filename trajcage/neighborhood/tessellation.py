@@ -13,6 +13,9 @@ from trajcage.neighborhood.pairs import check_distinct
 
 __all__ = ["radical_voronoi", "tessellate", "voronoi"]
 
+# Neighbors whose vectors are computed together: few enough for the cache.
+_AT_A_TIME = 16_384
+
 
 def tessellate(
     frame: Frame, near: NeighborList | None = None
@@ -72,23 +75,27 @@ def voronoi(
     points[:, :d] = (fractional - 0.5) @ triangular
     tessellation = freud.locality.Voronoi()
     tessellation.compute((box, points.astype(np.float32)))
-    pairs = tessellation.nlist
-    i = np.asarray(pairs.query_point_indices, dtype=np.int64)
-    j = np.asarray(pairs.point_indices, dtype=np.int64)
-    proposed = np.asarray(pairs.vectors, dtype=np.float64)[:, :d]
-    turns = np.round(
-        proposed @ np.linalg.inv(triangular) - (fractional[j] - fractional[i])
-    )
     volumes = np.asarray(tessellation.volumes, dtype=np.float64) * scale**d
     if not frame.box.fully_periodic:
         unbounded = _depends_on_outside(
             frame.box, padded, tessellation, fractional, triangular * scale, scale
         )
         volumes[unbounded] = np.nan
+    pairs = tessellation.nlist
+    del tessellation  # with all corners of the cells, the most memory of a run
+    first, second = pairs.query_point_indices, pairs.point_indices
+    vectors = np.empty((len(first), d))
+    inverse = np.linalg.inv(triangular)
+    for start in range(0, len(first), _AT_A_TIME):
+        part = slice(start, start + _AT_A_TIME)
+        i, j = first[part], second[part]
+        proposed = np.asarray(pairs.vectors[part, :d], dtype=np.float64)
+        turns = np.round(proposed @ inverse - (fractional[j] - fractional[i]))
+        vectors[part] = (positions[j] - positions[i]) + turns @ padded.vectors
     return volumes, NeighborList(
-        offsets=np.concatenate(([0], np.cumsum(np.bincount(i, minlength=n)))),
-        neighbors=j,
-        vectors=(positions[j] - positions[i]) + turns @ padded.vectors,
+        offsets=np.concatenate(([0], np.cumsum(np.bincount(first, minlength=n)))),
+        neighbors=np.asarray(second, dtype=np.int64),
+        vectors=vectors,
         weights=np.asarray(pairs.weights, dtype=np.float64) * scale ** (d - 1),
     )
 
