@@ -95,9 +95,11 @@ class Bonds:
         )
 
     def state(self) -> dict[str, NDArray[np.generic]]:
-        """Return the bonds as compact arrays."""
+        """Return the bonds as compact arrays; bonds of one particle mostly follow."""
+        starts = np.flatnonzero(np.diff(self.first, prepend=-1))
         return {
-            "first": self.first.astype(np.int32),
+            "first": self.first[starts].astype(np.int32),
+            "runs": np.diff(starts, append=len(self)).astype(np.int32),
             "second": self.second.astype(np.int32),
             "crossing": self.crossing.astype(np.int32),
             "shifts": self.shifts.copy(),
@@ -107,7 +109,7 @@ class Bonds:
     def from_state(cls, state: Mapping[str, NDArray[np.generic]]) -> Self:
         """Rebuild from what :meth:`state` returned."""
         return cls(
-            np.array(state["first"], dtype=np.int64),
+            np.repeat(np.array(state["first"], dtype=np.int64), state["runs"]),
             np.array(state["second"], dtype=np.int64),
             np.array(state["crossing"], dtype=np.int64),
             np.array(state["shifts"], dtype=np.int32),

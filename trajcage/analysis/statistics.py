@@ -221,17 +221,22 @@ class BlockMoments:
         return _choose(value, self.count(row), 0, counts, squared_errors)
 
     def state(self) -> dict[str, NDArray[np.generic]]:
-        """All that is needed to continue, as arrays."""
+        """All that is needed to continue, as arrays: levels with a block in them."""
+        used = int(np.count_nonzero(self._counts.any(axis=0)))
         return {
-            "counts": self._counts.copy(),
-            "means": self._means.copy(),
-            "comoments": self._comoments.copy(),
-            "waiting": self._waiting.copy(),
+            "counts": self._counts[:, :used].copy(),
+            "means": self._means[:, :used].copy(),
+            "comoments": self._comoments[:, :used].copy(),
+            "waiting": self._waiting[:, :used].copy(),
         }
 
     def restore(self, state: Mapping[str, NDArray[np.generic]]) -> None:
         """Continue from what :meth:`state` returned."""
-        self._counts[:] = state["counts"]
-        self._means[:] = state["means"]
-        self._comoments[:] = state["comoments"]
-        self._waiting[:] = state["waiting"]
+        for array, name in (
+            (self._counts, "counts"),
+            (self._means, "means"),
+            (self._comoments, "comoments"),
+            (self._waiting, "waiting"),
+        ):
+            array[:] = 0
+            array[:, : state[name].shape[1]] = state[name]

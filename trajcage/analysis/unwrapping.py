@@ -125,8 +125,8 @@ class Unwrapper:
         return {
             "flags": np.array([self._started, self._has_images]),
             "fractional": self._fractional.copy(),
-            "images": self._images.copy(),
-            "turns": self._turns.copy(),
+            "images": self._images[: None if self._has_images else 0].copy(),
+            "turns": self._turns.astype(np.int32),
             "path": self._path.copy(),
             "drift": self._drift.copy(),
         }
@@ -135,7 +135,8 @@ class Unwrapper:
         """Continue from what :meth:`state` returned."""
         self._started, self._has_images = (bool(flag) for flag in state["flags"])
         self._fractional = np.array(state["fractional"], dtype=np.float64)
-        self._images = np.array(state["images"], dtype=np.float64)
+        if self._has_images:
+            self._images = np.array(state["images"], dtype=np.float64)
         self._turns = np.array(state["turns"], dtype=np.float64)
         self._path = np.array(state["path"], dtype=np.float64)
         self._drift = np.array(state["drift"], dtype=np.float64)
