@@ -396,7 +396,7 @@ def test_families_can_be_left_out(skip, absent, present, tmp_path):
         ({"skip": ["cage"]}, "no family 'cage'"),
         ({"workers": -1}, "workers"),
         ({"resume": True, "overwrite": True}, "give one"),
-        ({"start": 5}, "frames 0 to 1"),
+        ({"start": 5}, "frames go from 0 to 1"),
         ({"step": 0}, "stride"),
         ({"reach": -1.0}, "reach"),
     ],

@@ -6,7 +6,7 @@ from collections.abc import Callable
 
 import numpy as np
 
-from trajcage.errors import InterruptedRunError, TrajcageError
+from trajcage.errors import InterruptedRunError, ResultFileError, TrajcageError
 from trajcage.run.fold import RunFold
 from trajcage.run.frames import MeasuredFrame, MeasuredFrames
 from trajcage.run.interruption import StopRequest
@@ -86,8 +86,8 @@ def fold_frames(
                 interval = max(_COMMIT_EVERY, _COMMIT_SHARE * (last - now))
             if stop.signal is not None:
                 break
-    except TrajcageError:
-        if writer.n_pending:
+    except TrajcageError as error:
+        if writer.n_pending and not isinstance(error, ResultFileError):
             _commit(fold, writer)
         raise
     finally:
