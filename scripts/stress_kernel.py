@@ -5,7 +5,8 @@ and axes exchanged and mirrored: another order of all decisions, the same geomet
 answer is explained if
 
 - ``overlap``: a brute-force search finds the overlap;
-- ``border``: the box has an open edge (a cage that is also open may be called either);
+- ``border``: the particle is closer to an open edge than the reach and the largest sum
+  of radii; ``open``: it is not;
 - ``open``, ``closed``: both measurements agree, a closed cage has a positive volume and
   obeys the isoperimetric inequality, and its patches add up to its wall.
 
@@ -220,6 +221,16 @@ def overlapping(made: Configuration) -> NDArray[np.bool_]:
     return np.asarray(gaps.min(axis=1) < 0.0)
 
 
+def edge_room(made: Configuration, reach: float) -> Floats:
+    """Distance from what may matter within the reach to the open edges, (n,)."""
+    inverse = np.linalg.inv(made.vectors)
+    fractions = made.positions @ inverse
+    heights = 1.0 / np.linalg.norm(inverse, axis=0)
+    apart = np.minimum(fractions, 1.0 - fractions) * heights
+    apart[:, made.periodic] = np.inf
+    return np.asarray(apart.min(axis=1) - reach - made.radii - made.radii.max())
+
+
 def examine(made: Configuration, seed: int) -> tuple[Counter[str], list[Finding]]:
     """Measure twice; return statuses and everything that is not explained."""
     d = made.positions.shape[1]
@@ -242,6 +253,7 @@ def examine(made: Configuration, seed: int) -> tuple[Counter[str], list[Finding]
     back = np.empty_like(order)
     back[order] = np.arange(len(order))
     overlaps = overlapping(made)
+    room = edge_room(made, reach)
     counts: Counter[str] = Counter()
     findings = []
     assert first.wall is not None
@@ -255,10 +267,14 @@ def examine(made: Configuration, seed: int) -> tuple[Counter[str], list[Finding]
             complaint = "invalid"
         elif (status is CageStatus.OVERLAP) != overlaps[i]:
             complaint = f"overlap not as found ({status.name})"
-        elif status is CageStatus.BORDER and made.periodic.all():
-            complaint = "border in a periodic box"
-        elif {status, twin} == {CageStatus.OPEN, CageStatus.BORDER}:
-            complaint = "border in a periodic box" if made.periodic.all() else ""
+        elif status is CageStatus.BORDER and room[i] > 10 * rounding:
+            complaint = "border far from the edges"
+        elif status is CageStatus.OPEN and room[i] < -10 * rounding:
+            complaint = "open next to an edge"
+        elif abs(room[i]) < 10 * rounding and {status, twin} == {
+            CageStatus.OPEN, CageStatus.BORDER,
+        }:  # fmt: skip
+            pass
         elif status is not twin:
             complaint = f"{status.name.lower()}, then {twin.name.lower()}"
         elif status is CageStatus.CLOSED:

@@ -93,3 +93,37 @@ def test_open_edges_hold_without_neighbors(d):
     assert (measure(pair, 400.0, 0.5, False, -200.0, reach=4.0).status == OPEN).all()
     deep = np.vstack([center, center + 0.2])
     assert (measure(deep, 4.0, 0.5, False).status == OVERLAP).all()
+
+
+@pytest.mark.parametrize("d", [2, 3])
+def test_open_and_border_do_not_depend_on_what_is_met_first(d):
+    """Sparse gases, where voids meet open edges and leave the reach at once.
+
+    A cage that is not closed is border exactly if the particle is closer to an open
+    edge than the reach and the largest sum of radii; whatever lies outside then, an
+    open cage stays open.
+    """
+    rng = np.random.default_rng(17)
+    n, phi = (250, 0.2) if d == 3 else (150, 0.3)
+    seen = set()
+    for trial in range(6):
+        run = monte_carlo.random_fluid(n, phi, 0.5, seed=trial, dimensions=d, sweeps=10)
+        positions = run.positions % run.lengths
+        flags = np.array([[False] * d, [True] + [False] * (d - 1)][trial % 2])
+        for reach in (1.2, 2.0, 3.0):
+            found = measure(positions, run.lengths, 0.5, flags, reach=reach)
+            edges = np.minimum(positions, run.lengths - positions)
+            edges[:, flags] = np.inf
+            near = edges.min(axis=1) < reach + 1.0
+            loose = found.status != CLOSED
+            np.testing.assert_array_equal(found.status[loose & near], BORDER)
+            np.testing.assert_array_equal(found.status[loose & ~near], OPEN)
+            seen |= set(found.status)
+            order = rng.permutation(n)
+            again = measure(positions[order], run.lengths, 0.5, flags, reach=reach)
+            np.testing.assert_array_equal(again.status, found.status[order])
+            # the periodic box is one of the surroundings
+            whole = measure(positions, run.lengths, 0.5, reach=reach)
+            same = (found.status == OPEN) | (found.status == CLOSED)
+            np.testing.assert_array_equal(whole.status[same], found.status[same])
+    assert seen == {CLOSED, OPEN, BORDER}

@@ -1,9 +1,17 @@
 """The cages of one share of the particles: flood and wall of one after the other."""
 
 from trajcage.kernel import patch3d, wall2d, wall3d
-from trajcage.kernel.codes import CLOSED, INVALID, NEED_CAPACITY, NEED_HALO
+from trajcage.kernel.codes import (
+    BORDER,
+    CLOSED,
+    INVALID,
+    NEED_CAPACITY,
+    NEED_HALO,
+    OPEN,
+)
 from trajcage.kernel.flood2d import flood as flood2d
 from trajcage.kernel.flood3d import flood as flood3d
+from trajcage.kernel.flood3d import outside
 from trajcage.kernel.jit import compiled, helper
 from trajcage.kernel.patch3d import AREA
 from trajcage.kernel.rows import PENDING
@@ -122,6 +130,14 @@ def measure_range(
             if where >= 0:
                 numbers[i, 3] = weakest
                 _window(grid, s, where, i, members, plane)
-        else:
-            status[i] = code
+            continue
+        if code == OPEN or code == BORDER:
+            # Not by what the flood met first: if all is known that can take part
+            # within the reach, the cage is open. (A vertex whose ball of candidates
+            # is not known has free space around it then, up to the reach.)
+            x, y, z = grid.home[i, 0], grid.home[i, 1], grid.home[i, 2]
+            far = reach + radii[i] + r_max
+            known = not outside(grid, x, y, z, 0.0, 0.0, 0.0, far)
+            code = OPEN if known else BORDER
+        status[i] = code
     return len(todo)

@@ -31,9 +31,10 @@ __all__ = ["Cages", "measure_cages"]
 #: inconsistent, which takes input that is degenerate at exactly this level.
 _SHIFTS = np.array([[1e-10, 0.0], [3e-9, 3e-12], [1e-7, 1e-10]])
 
-#: Particles of one radius from which on it pays to find out together whether their
-#: regions wrap around the box, instead of following each as far as the reach.
-_CROWD = 8
+#: How often the cubes of twice the reach about particles of one radius must fill the
+#: box, so that it pays to find out together whether their regions wrap around it
+#: instead of following each as far as the reach (measured).
+_CROWD = 8.0
 
 
 class Cages(NamedTuple):
@@ -84,7 +85,11 @@ def measure_cages(
         A cage that extends further than this from its particle is open. Ten
         of the largest diameters unless given. With ``inf`` the volume of a
         region that wraps around a fully periodic box is measured, too; it
-        counts each sphere once, not each image.
+        counts each sphere once, not each image. In a box with open edges a
+        particle whose cage is not closed is BORDER if it is closer to one of
+        them than the reach plus the sum of its and the largest radius, OPEN
+        if it is not: then nothing from beyond can change that its cage
+        extends further than the reach.
     overlap_tolerance : float, length
         Overlaps up to this depth count as contacts.
     windows : bool
@@ -160,7 +165,9 @@ def _further(
         _, kind, count = np.unique(
             system.radii[waiting], return_inverse=True, return_counts=True
         )
-        crowd[waiting] = count[kind] >= _CROWD
+        d = system.dimensions
+        box = abs(float(np.linalg.det(system.vectors[:d, :d])))
+        crowd[waiting] = count[kind] * (2.0 * far) ** d >= _CROWD * box
         found = make_output(len(waiting), system.dimensions)
     rows = measure_regions(system, crowd, tolerance, keep and endless, threads, found)
     waiting = waiting & ~(crowd & (found.status == WRAPPED))

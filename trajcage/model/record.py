@@ -17,7 +17,9 @@ class CageStatus(IntEnum):
 
     CLOSED = 0  #: bounded and measured
     OPEN = 1  #: reaches further than the stated reach
-    BORDER = 2  #: depends on what lies beyond an open edge of the data
+    BORDER = 2
+    """Depends on what lies beyond an open edge of the data: not closed, and closer to
+    an open edge than the reach plus the largest sum of radii."""
     OVERLAP = 3  #: the particle overlaps a neighbor by more than the tolerance
     INVALID = 4  #: no usable position, or a geometry that stayed inconsistent
     WRAPPED = 5  #: wraps around the periodic box: measured, but no cage
