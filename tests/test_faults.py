@@ -1,5 +1,6 @@
 """Whatever goes wrong: one clear error, an exit code that tells, nothing lost."""
 
+import contextlib
 import os
 import random
 import shutil
@@ -10,6 +11,7 @@ import time
 
 import crowd
 import numpy as np
+import psutil
 import pytest
 import run_scenario as scenario
 import store_scenario
@@ -161,6 +163,22 @@ def test_killed_at_random_moments_and_resumed(source, whole, tmp_path):
                 assert one.tobytes() == other.tobytes()
     measure(source, path, resume=True)
     scenario.assert_same(path, whole)
+
+
+def test_workers_do_not_outlive_a_killed_run():
+    code = (
+        "import os, signal\n"
+        "from trajcage.run.workers import _executor\n"
+        "print(_executor(1).submit(os.getpid).result(), flush=True)\n"
+        "os.kill(os.getpid(), signal.SIGKILL)\n"
+    )
+    done = subprocess.run(
+        [sys.executable, "-W", "ignore", "-c", code],
+        stdout=subprocess.PIPE, stderr=subprocess.DEVNULL, check=False,
+    )  # fmt: skip
+    assert done.returncode == -signal.SIGKILL
+    with contextlib.suppress(psutil.NoSuchProcess):
+        psutil.Process(int(done.stdout)).wait(30)  # raises TimeoutExpired
 
 
 def test_ctrl_c_stops_workers_and_parent_in_good_order(tmp_path):

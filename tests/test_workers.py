@@ -108,6 +108,14 @@ def test_blocks_are_bounded_in_frames_and_particles():
     assert [len(b) for b in blocks.cut(range(8), 4, 1000)] == [1] * 8
 
 
+def test_huge_frames_are_measured_by_fewer_processes():
+    assert workers.affordable(2, 20_000) == 2
+    assert workers.affordable(64, 20_000) == 64
+    assert workers.affordable(2, 1_000_000) == 1  # in 4 GiB, see bench_memory.py
+    assert workers.affordable(8, 1_000_000) == 4
+    assert workers.affordable(2, 10**9) == 1
+
+
 class Recorder(blocks.Crew):
     """Remembers how many blocks were on their way at most."""
 

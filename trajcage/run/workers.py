@@ -2,12 +2,13 @@
 
 import os
 import signal
+import threading
 from collections import deque
 from collections.abc import Callable, Iterator, Sequence
 from concurrent.futures import Future, ProcessPoolExecutor
 from concurrent.futures.process import BrokenProcessPool
 from contextlib import closing, contextmanager
-from multiprocessing import get_context
+from multiprocessing import get_context, parent_process
 
 from trajcage.errors import TrajcageError
 from trajcage.readers import Trajectory
@@ -23,7 +24,7 @@ from trajcage.run.blocks import (
 from trajcage.run.frames import MeasuredFrames, measure_frame
 from trajcage.run.settings import RunSettings
 
-__all__ = ["measured_frames"]
+__all__ = ["affordable", "measured_frames"]
 
 _THREAD_LIMITS = (
     "MKL_NUM_THREADS",
@@ -31,6 +32,15 @@ _THREAD_LIMITS = (
     "OMP_NUM_THREADS",
     "OPENBLAS_NUM_THREADS",
 )
+
+# Memory that a run may use for each of its workers, and what it needs, measured with
+# scripts/bench_memory.py: libraries and code of a process, and for every particle of a
+# frame what measuring (freud's tessellation) and what the time analysis with its state
+# and the frames on their way take.
+_PER_WORKER = 2 * 2**30  # bytes
+_PER_PROCESS = 300_000_000
+_MEASURING = 2500
+_FOLDING = 3000
 
 _BlockFuture = Future[MeasuredBlock]
 
@@ -68,6 +78,18 @@ def measured_frames(
     if len(indices) < 3 or (n_workers == 1 and cluster is None):
         yield from _measure(trajectory, indices, settings)
         return
+    if cluster is None:
+        fitting = affordable(n_workers, trajectory.n_particles)
+        if fitting < n_workers:
+            note(
+                f"{fitting} instead of {n_workers} processes measure frames of "
+                f"{trajectory.n_particles:,} particles, to stay within "
+                f"{n_workers * _PER_WORKER / 2**30:.0f} GiB of memory"
+            )
+        if fitting == 1:
+            yield from _measure(trajectory, indices, settings)
+            return
+        n_workers = fitting
     # The first frame is measured here, so that mistakes show before processes
     # start, and the kernels are compiled once.
     first, rest, n = indices[:1], indices[1:], trajectory.n_particles
@@ -83,6 +105,26 @@ def measured_frames(
     with closing(crew):
         yield from _measure(trajectory, first, settings)
         yield from in_order(crew, cut(rest, crew.n_threads, n))
+
+
+def affordable(n_workers: int, n_particles: int) -> int:
+    """Return how many processes fit into 2 GiB of memory for each worker asked for.
+
+    Parameters
+    ----------
+    n_workers : int
+        Workers asked for.
+    n_particles : int
+        Particles of a frame.
+
+    Returns
+    -------
+    int
+        At least 1; the parent itself then measures and folds in turn.
+    """
+    left = n_workers * _PER_WORKER - _PER_PROCESS - _FOLDING * n_particles
+    fitting = int(left // (_PER_PROCESS + _MEASURING * n_particles))
+    return max(1, min(n_workers, fitting))
 
 
 def _measure(
@@ -175,12 +217,20 @@ class _Pool(Crew):
 
 
 def _executor(n_workers: int) -> ProcessPoolExecutor:
-    return ProcessPoolExecutor(n_workers, get_context("spawn"), _ignore_interrupts)
+    return ProcessPoolExecutor(n_workers, get_context("spawn"), _follow_parent)
 
 
-def _ignore_interrupts() -> None:
-    """Leave it to the parent to decide when to stop."""
+def _follow_parent() -> None:
+    """Leave it to the parent when to stop, but do not outlive it if it is killed."""
     signal.signal(signal.SIGINT, signal.SIG_IGN)
+    threading.Thread(target=_end_with_parent, daemon=True).start()
+
+
+def _end_with_parent() -> None:
+    parent = parent_process()
+    if parent is not None:
+        parent.join()
+        os._exit(1)
 
 
 def _shut(executor: ProcessPoolExecutor) -> None:

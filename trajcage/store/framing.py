@@ -20,17 +20,24 @@ __all__ = ["pack_arrays", "unpack_arrays"]
 _MAGIC = b"TCSTATE1"
 _HEAD = struct.Struct("<8sII")
 _ITEM = struct.Struct("<IQ")
+_LARGE = 1 << 20  # bytes from which on an array is not copied
 
 
-def pack_arrays(arrays: Mapping[str, NDArray[np.generic]]) -> bytes:
+def pack_arrays(arrays: Mapping[str, NDArray[np.generic]]) -> list[memoryview]:
     """Serialize named arrays.
+
+    Returns
+    -------
+    list of memoryview
+        Bytes to be written one after the other; large arrays are not copied.
 
     Raises
     ------
     UsageError
         If an array holds Python objects.
     """
-    parts: list[bytes | memoryview] = []
+    parts: list[bytes] = []
+    views: list[memoryview] = []
     for name, array in arrays.items():
         values = np.asarray(array, order="C")
         if values.dtype.hasobject:
@@ -41,11 +48,17 @@ def pack_arrays(arrays: Mapping[str, NDArray[np.generic]]) -> bytes:
         )
         key, start = name.encode(), header.getvalue()
         parts += [_ITEM.pack(len(key), len(start) + values.nbytes), key, start]
-        parts.append(values.reshape(-1).view(np.uint8).data)
+        body = values.reshape(-1).view(np.uint8).data
+        if len(body) < _LARGE:
+            parts.append(bytes(body))
+        else:
+            views += [memoryview(b"".join(parts)), body]
+            parts = []
+    views.append(memoryview(b"".join(parts)))
     checksum = 0
-    for part in parts:
-        checksum = zlib.crc32(part, checksum)
-    return b"".join((_HEAD.pack(_MAGIC, checksum, len(arrays)), *parts))
+    for view in views:
+        checksum = zlib.crc32(view, checksum)
+    return [memoryview(_HEAD.pack(_MAGIC, checksum, len(arrays))), *views]
 
 
 def unpack_arrays(data: bytes, path: Path) -> dict[str, NDArray[np.generic]]:

@@ -437,8 +437,11 @@ class ResultWriter:
             values: dict[str, Any] = {"frames_complete": total, "complete": finished}
             if packed is not None:
                 slot = 1 - old.state_slot
-                self._slots[slot].write(0, np.frombuffer(packed, np.uint8))
-                values |= {"state_slot": slot, "state_bytes": len(packed)}
+                size = 0
+                for part in packed:
+                    self._slots[slot].write(size, np.frombuffer(part, np.uint8))
+                    size += len(part)
+                values |= {"state_slot": slot, "state_bytes": size}
             elif total != old.frames_complete:
                 values["state_bytes"] = -1
             if text is not None:
