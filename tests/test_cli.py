@@ -19,6 +19,7 @@ from trajcage.cli import main
 from trajcage.cli.lattice import LATTICE_NAMES
 from trajcage.cli.measure import _SKIPPABLE
 from trajcage.cli.plot import FIGURES as FIGURE_NAMES
+from trajcage.kernel import jit
 from trajcage.lattices import LATTICES
 from trajcage.plots import FIGURES
 from trajcage.run import FAMILIES
@@ -317,3 +318,11 @@ def test_a_near_miss_is_suggested(name, found):
     known = ("free_volume", "cage_status")
     expected = f" (did you mean {found}?)" if found else ""
     assert near_miss(name, known) == expected
+
+
+def test_the_first_run_says_that_it_compiles(tmp_path, monkeypatch):
+    source = scenario.write_gsd(tmp_path / "a.gsd", [scenario.shaken()])
+    words = ("measure", source, "-o", tmp_path / "r.h5", "--overwrite")
+    assert "compiling" not in call(*words).stderr
+    monkeypatch.setattr(jit, "_CACHE_DIRECTORY", tmp_path)  # where no code is
+    assert "compiling the geometry" in call(*words).stderr

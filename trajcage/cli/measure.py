@@ -170,9 +170,12 @@ def command(
     from trajcage.analysis.order import OrderOptions
     from trajcage.analysis.regions import RegionOptions
     from trajcage.analysis.time_options import TimeOptions
+    from trajcage.kernel.jit import is_compiled
     from trajcage.run import measure
 
     started = time.monotonic()
+    if not is_compiled():
+        say("compiling the geometry, once after each installation: half a minute or so")
     elsewhere = context.get_parameter_source("topology") == ParameterSource.COMMANDLINE
     if elsewhere and context.get_parameter_source("trajectory") != (
         ParameterSource.COMMANDLINE

@@ -40,7 +40,7 @@ def progress_bar(stack: ExitStack) -> Callable[[int, int], None] | None:
                 label="frames",
                 show_pos=True,
                 show_eta=False,
-                item_show_func=str,
+                item_show_func=lambda told: told or "",
                 file=sys.stderr,
             )
             bars.append(stack.enter_context(bar))

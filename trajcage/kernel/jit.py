@@ -11,7 +11,7 @@ import numba
 from numba.core.codegen import JITCodeLibrary
 from numba.core.compiler import CompilerBase, DefaultPassBuilder
 
-__all__ = ["compiled", "helper"]
+__all__ = ["compiled", "helper", "is_compiled"]
 
 _log = logging.getLogger(__name__)
 
@@ -51,6 +51,11 @@ def _cache_directory() -> Path | None:
 
 
 _CACHE_DIRECTORY = _cache_directory()
+
+
+def is_compiled() -> bool:
+    """Whether machine code of these kernels is there, from an earlier run."""
+    return _CACHE_DIRECTORY is not None and any(_CACHE_DIRECTORY.rglob("*.nbc"))
 
 
 def compiled(function: Callable[P, R]) -> Callable[P, R]:
