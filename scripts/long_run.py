@@ -27,7 +27,7 @@ import numpy as np
 from monte_carlo import polydisperse, random_fluid
 
 import trajcage
-from trajcage.analysis.jumps import msd_crossover
+from trajcage.analysis.path_splits import msd_crossover
 from trajcage.errors import InterruptedRunError
 from trajcage.store import Result
 

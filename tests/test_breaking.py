@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 from moving import collect, fcc, frames, run, triangular, vibration
 
-from trajcage.analysis.breaking import BreakingRule
+from trajcage.analysis.breaking_rule import BreakingRule
 from trajcage.analysis.fold import TimeFold, growing_tables
 from trajcage.analysis.regions import Region
 from trajcage.analysis.time_options import TimeOptions

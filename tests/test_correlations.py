@@ -5,7 +5,7 @@ import pytest
 from moving import fcc, run, triangular, vibration
 from scipy.special import erf
 
-from trajcage.analysis.correlations import CORRELATION_FIELDS, CorrelationPlan
+from trajcage.analysis.correlation_plan import CORRELATION_FIELDS, CorrelationPlan
 from trajcage.analysis.time_options import TimeOptions
 from trajcage.errors import UsageError
 from trajcage.model import Box
@@ -170,11 +170,13 @@ def test_memory_does_not_grow_with_the_number_of_frames():
     rng = np.random.default_rng(6)
     paths = sites + vibration(rng, (400, *sites.shape), 0.05)
     options = TimeOptions(origin_interval=2, max_lag=64)
-    sizes = []
+    sizes, levels = [], []
     for n_frames in (200, 400):
-        fold, *_ = run(paths[:n_frames], box, options)
-        sizes.append(sum(array.nbytes for array in fold.state().values()))
+        state = run(paths[:n_frames], box, options)[0].state()
+        sizes.append(sum(a.nbytes for k, a in state.items() if ".moments." not in k))
+        levels.append(state["correlations.moments.counts"].shape[1])
     assert abs(sizes[1] / sizes[0] - 1.0) < 0.02
+    assert levels == [7, 8]  # of blocks, doubled in length up to the whole record
 
 
 def test_columns_are_as_declared():

@@ -9,7 +9,7 @@ from monte_carlo import polydisperse, random_fluid
 from moving import collect
 
 from trajcage.analysis.fold import TimeFold
-from trajcage.analysis.jumps import msd_crossover
+from trajcage.analysis.path_splits import msd_crossover
 from trajcage.analysis.time_options import TimeOptions
 from trajcage.model import Box, Frame
 

@@ -4,12 +4,8 @@ import numpy as np
 import pytest
 from moving import frames, run
 
-from trajcage.analysis.jumps import (
-    HopIndicator,
-    hop_indicator,
-    msd_crossover,
-    split_paths,
-)
+from trajcage.analysis.jumps import HopIndicator
+from trajcage.analysis.path_splits import hop_indicator, msd_crossover, split_paths
 from trajcage.analysis.time_options import TimeOptions
 from trajcage.errors import InputError, UsageError
 from trajcage.model import Box

@@ -108,8 +108,9 @@ class Bonds:
     @classmethod
     def from_state(cls, state: Mapping[str, NDArray[np.generic]]) -> Self:
         """Rebuild from what :meth:`state` returned."""
+        first = np.array(state["first"], dtype=np.int64)
         return cls(
-            np.repeat(np.array(state["first"], dtype=np.int64), state["runs"]),
+            np.repeat(first, np.array(state["runs"], dtype=np.int64)),
             np.array(state["second"], dtype=np.int64),
             np.array(state["crossing"], dtype=np.int64),
             np.array(state["shifts"], dtype=np.int32),

@@ -6,8 +6,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from trajcage.analysis.correlations import CORRELATION_FIELDS
-from trajcage.analysis.jumps import msd_crossover
+from trajcage.analysis.correlation_plan import CORRELATION_FIELDS
+from trajcage.analysis.path_splits import msd_crossover
 from trajcage.analysis.survival import SURVIVAL_FIELDS, SurvivalCurve
 from trajcage.model import Field
 from trajcage.store import ArraySpec

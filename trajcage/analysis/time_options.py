@@ -4,8 +4,8 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from trajcage.analysis.breaking import BreakingRule
-from trajcage.analysis.correlations import CorrelationPlan
+from trajcage.analysis.breaking_rule import BreakingRule
+from trajcage.analysis.correlation_plan import CorrelationPlan
 from trajcage.errors import UsageError
 
 __all__ = ["TimeOptions"]
@@ -18,7 +18,7 @@ class TimeOptions:
     Parameters
     ----------
     bonded, broken, fraction_lost, minimum_duration, mobility_window
-        See :class:`~trajcage.analysis.breaking.BreakingRule`.
+        See :class:`~trajcage.analysis.breaking_rule.BreakingRule`.
     remove_drift : bool
         Whether displacements are taken relative to the mean over all particles.
     hop_half_window : int
