@@ -95,7 +95,7 @@ def test_inspect_shows_text_and_json():
     assert found["n_frames"] == 60
 
 
-def test_measure_talks_to_stderr_only(tmp_path):
+def test_measure_keeps_stdout_empty(tmp_path):
     source = scenario.write_gsd(tmp_path / "a.gsd", [scenario.shaken()])
     done = call("measure", source, "-o", tmp_path / "r.h5")
     assert done.stdout == ""

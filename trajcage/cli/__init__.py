@@ -123,5 +123,5 @@ def main() -> None:
     """Exact cages, free volumes and cage breaking of hard spheres and colloids.
 
     Reads any trajectory that MDAnalysis reads and writes one HDF5 file. Results go to
-    files and standard output, talk goes to standard error.
+    files and standard output, messages to standard error.
     """

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from trajcage.cli.common import print_json, result_argument, table
-from trajcage.cli.talk import talk_options
+from trajcage.cli.verbosity import verbosity_options
 from trajcage.wording import MISSING, number
 
 if TYPE_CHECKING:
@@ -28,7 +28,7 @@ __all__ = ["command"]
     show_default=True,
     help="Events to show as text.",
 )
-@talk_options
+@verbosity_options
 def command(*, result: Any, as_csv: bool, as_json: bool, limit: int) -> None:
     """List the cages that broke: who, when, how far, and which neighbors were lost.
 

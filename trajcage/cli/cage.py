@@ -6,7 +6,7 @@ from typing import Any
 import click
 
 from trajcage.cli.common import input_options
-from trajcage.cli.talk import say, talk_options
+from trajcage.cli.verbosity import say, verbosity_options
 
 __all__ = ["command"]
 
@@ -34,7 +34,7 @@ __all__ = ["command"]
 @click.option(
     "--fineness",
     type=float,
-    default=12.0,
+    default=8.0,
     show_default=True,
     help="How much smaller than the cage its triangles are.",
 )
@@ -45,7 +45,7 @@ __all__ = ["command"]
     help="As for trajcage measure; that of the run for a result file.",
 )
 @click.option("--overwrite", is_flag=True, help="Replace the output if it exists.")
-@talk_options
+@verbosity_options
 def command(
     *,
     particle: int,

@@ -4,7 +4,7 @@ from pathlib import Path
 
 import click
 
-from trajcage.cli.talk import talk_options
+from trajcage.cli.verbosity import verbosity_options
 
 __all__ = ["command"]
 
@@ -14,7 +14,7 @@ __all__ = ["command"]
     "result", type=click.Path(path_type=Path), metavar="[FILE]", required=False
 )
 @click.option("--bibtex", is_flag=True, help="Print BibTeX entries.")
-@talk_options
+@verbosity_options
 def command(*, result: Path | None, bibtex: bool) -> None:
     """Print the citation of trajcage and of what it builds on.
 

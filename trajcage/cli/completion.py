@@ -4,14 +4,14 @@ import click
 from click.shell_completion import get_completion_class
 
 from trajcage.cli.common import NearChoice
-from trajcage.cli.talk import talk_options
+from trajcage.cli.verbosity import verbosity_options
 
 __all__ = ["command"]
 
 
 @click.command(name="completion")
 @click.argument("shell", type=NearChoice(["bash", "zsh", "fish"]))
-@talk_options
+@verbosity_options
 @click.pass_context
 def command(context: click.Context, /, *, shell: str) -> None:
     """Print the script that lets a shell complete commands, options and names.

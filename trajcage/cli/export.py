@@ -7,7 +7,7 @@ from typing import Any, TextIO
 import click
 
 from trajcage.cli.common import NearChoice, result_argument
-from trajcage.cli.talk import say, talk_options
+from trajcage.cli.verbosity import say, verbosity_options
 
 __all__ = ["command"]
 
@@ -45,7 +45,7 @@ __all__ = ["command"]
 @click.option("--stop", type=int, help="Stored frame to stop before.")
 @click.option("--step", type=int, help="Take every so many stored frames.")
 @click.option("--overwrite", is_flag=True, help="Replace the output if it exists.")
-@talk_options
+@verbosity_options
 def command(
     *,
     result: Any,

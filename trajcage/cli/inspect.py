@@ -5,7 +5,7 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from trajcage.cli.common import input_options, json_option, print_json, table
-from trajcage.cli.talk import note, talk_options
+from trajcage.cli.verbosity import note, verbosity_options
 
 if TYPE_CHECKING:
     from trajcage.run import Inspection
@@ -23,7 +23,7 @@ __all__ = ["command"]
     "coordinates unless given.",
 )
 @json_option
-@talk_options
+@verbosity_options
 def command(*, as_json: bool, **given: Any) -> None:
     """Tell what is understood of an input, and refuse what makes no sense.
 

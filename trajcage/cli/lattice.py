@@ -5,7 +5,7 @@ from typing import TYPE_CHECKING
 import click
 
 from trajcage.cli.common import json_option, print_json, table
-from trajcage.cli.talk import talk_options
+from trajcage.cli.verbosity import verbosity_options
 from trajcage.wording import MISSING, number
 
 if TYPE_CHECKING:
@@ -44,7 +44,7 @@ LATTICE_NAMES = (
     help="Show the cage at this packing fraction; may be repeated.",
 )
 @json_option
-@talk_options
+@verbosity_options
 def command(
     *, names: tuple[str, ...], packing_fractions: tuple[float, ...], as_json: bool
 ) -> None:

@@ -14,7 +14,7 @@ from click.core import ParameterSource
 from trajcage.cli.common import NearChoice, input_options
 from trajcage.cli.configured import configuration_options, recorded_inputs, settings
 from trajcage.cli.progress import progress_bar
-from trajcage.cli.talk import note, say, talk_options
+from trajcage.cli.verbosity import note, say, verbosity_options
 
 __all__ = ["command"]
 
@@ -138,7 +138,7 @@ class _Reach(click.ParamType[float]):
 )
 @click.option("--resume", is_flag=True, help="Continue the result file if it exists.")
 @click.option("--overwrite", is_flag=True, help="Replace the result file if it exists.")
-@talk_options
+@verbosity_options
 @click.pass_context
 def command(
     context: click.Context,

@@ -8,7 +8,7 @@ from pathlib import Path
 import click
 
 from trajcage.cli.progress import progress_bar
-from trajcage.cli.talk import note, say, talk_options
+from trajcage.cli.verbosity import note, say, verbosity_options
 
 __all__ = ["command"]
 
@@ -29,7 +29,7 @@ _FILE = click.Path(path_type=Path)
 )
 @click.option("--trajectory", type=_FILE, help="The trajectory that goes with it.")
 @click.option("--overwrite", is_flag=True, help="Replace the output if it exists.")
-@talk_options
+@verbosity_options
 def command(
     *,
     parts: tuple[Path, ...],

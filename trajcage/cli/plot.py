@@ -6,7 +6,7 @@ from typing import Any
 import click
 
 from trajcage.cli.common import NearChoice, result_argument
-from trajcage.cli.talk import say, talk_options
+from trajcage.cli.verbosity import say, verbosity_options
 
 __all__ = ["FIGURES", "command"]
 
@@ -51,7 +51,7 @@ FIGURES = (
     help="File format.",
 )
 @click.option("--overwrite", is_flag=True, help="Replace figures that are there.")
-@talk_options
+@verbosity_options
 def command(
     *, result: Any, output: Path, names: tuple[str, ...], form: str, overwrite: bool
 ) -> None:

@@ -8,7 +8,7 @@ from typing import Any
 
 import click
 
-from trajcage.cli.talk import is_quiet, is_verbose
+from trajcage.cli.verbosity import is_quiet, is_verbose
 
 __all__ = ["progress_bar"]
 
@@ -16,7 +16,7 @@ __all__ = ["progress_bar"]
 def progress_bar(stack: ExitStack) -> Callable[[int, int], None] | None:
     """Return a function of frames done and of all frames, if there is a bar.
 
-    There is none without a terminal, and none if the user wants no talk or a log.
+    There is none without a terminal, and none if the user wants no messages or a log.
 
     The rate and the time left are those of this run, also when it goes on with a file
     that holds most of the frames already.

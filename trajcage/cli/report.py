@@ -6,7 +6,7 @@ from typing import Any
 import click
 
 from trajcage.cli.common import result_argument
-from trajcage.cli.talk import say, talk_options
+from trajcage.cli.verbosity import say, verbosity_options
 
 __all__ = ["command"]
 
@@ -21,7 +21,7 @@ __all__ = ["command"]
     help="HTML file to write.",
 )
 @click.option("--overwrite", is_flag=True, help="Replace the page if it exists.")
-@talk_options
+@verbosity_options
 def command(*, result: Any, output: Path, overwrite: bool) -> None:
     """Write a result file as one HTML page: warnings, numbers, figures, options.
 

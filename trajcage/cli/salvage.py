@@ -5,7 +5,7 @@ from pathlib import Path
 import click
 
 from trajcage.cli.common import result_argument
-from trajcage.cli.talk import say, talk_options
+from trajcage.cli.verbosity import say, verbosity_options
 
 __all__ = ["command"]
 
@@ -13,7 +13,7 @@ __all__ = ["command"]
 @click.command(name="salvage")
 @result_argument
 @click.argument("target", type=click.Path(path_type=Path), metavar="TARGET")
-@talk_options
+@verbosity_options
 def command(*, result: Path, target: Path) -> None:
     """Copy the complete frames of a damaged file to TARGET, a new file.
 

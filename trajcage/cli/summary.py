@@ -5,7 +5,7 @@ from typing import Any
 import click
 
 from trajcage.cli.common import json_option, print_json, result_argument, table
-from trajcage.cli.talk import talk_options
+from trajcage.cli.verbosity import verbosity_options
 from trajcage.wording import MISSING, number, with_error
 
 __all__ = ["command"]
@@ -41,7 +41,7 @@ _SHOWN = (
     is_flag=True,
     help="Print the options of the run instead, for trajcage measure --config.",
 )
-@talk_options
+@verbosity_options
 def command(*, result: Any, as_json: bool, as_toml: bool) -> None:
     """Show means with errors beside equations of state and ideal lattices.
 

@@ -1,6 +1,6 @@
 """What commands say on standard error: errors only, the usual, or all they do.
 
-Every command takes ``--quiet`` and ``--verbose``. Results are not talk: they go to
+Every command takes ``--quiet`` and ``--verbose``. Results are no messages: they go to
 standard output or to files whatever is chosen.
 """
 
@@ -12,7 +12,7 @@ from typing import Any, TypeVar
 
 import click
 
-__all__ = ["is_quiet", "is_verbose", "note", "say", "talk_options"]
+__all__ = ["is_quiet", "is_verbose", "note", "say", "verbosity_options"]
 
 F = TypeVar("F", bound=Callable[..., Any])
 
@@ -20,7 +20,7 @@ _QUIET, _VERBOSE = "trajcage.quiet", "trajcage.verbose"
 _FORMAT = "%(asctime)s %(name)s: %(message)s"
 
 
-def talk_options(function: F) -> F:
+def verbosity_options(function: F) -> F:
     """Add ``--quiet`` and ``--verbose``, which the command itself does not see."""
     for names, told, callback in (
         (("-v", "--verbose"), "Log what is read and chosen, and timings.", _verbose),
