@@ -1,9 +1,9 @@
-"""Write every option into README.md and every dataset into DATASETS.md.
+"""Write every option and every dataset into README.md.
 
 python scripts/readme_reference.py
 
-Help texts and descriptions of fields are the only source; the tests check that both files
-hold what this makes of them.
+Help texts and descriptions of fields are the only source; the tests check that the README
+holds what this makes of them.
 """
 
 import re
@@ -22,20 +22,16 @@ ROOT = Path(__file__).parents[1]
 BEGIN = "<!-- written by scripts/readme_reference.py -->"
 END = "<!-- end -->"
 
-_TALK = {"verbose", "quiet"}
+_VERBOSITY = {"verbose", "quiet"}
 _OWN = {"overlap_tolerance", "as_json"}  # those of inspect itself
 _LATTICE = re.compile(rf"lattice_({'|'.join(LATTICES)})_")
 _STORED = RunSettings(store_positions=True, store_walls=True, varying_radii=True)
 
 
-def option_reference() -> str:
-    """Return all commands and options as Markdown, a part of README.md."""
-    return "\n\n".join(["## Every option", *_commands()])
-
-
-def dataset_reference() -> str:
-    """Return all datasets as Markdown, the contents of DATASETS.md."""
-    return "\n\n".join(["# Every dataset of a result file", *_datasets()]) + "\n"
+def reference() -> str:
+    """Return all commands, options and datasets as Markdown."""
+    parts = ["## Every option", *_commands(), "## Every dataset", *_datasets()]
+    return "\n\n".join(parts)
 
 
 def commands() -> dict[str, click.Command]:
@@ -54,7 +50,7 @@ def options(command: click.Command) -> list[click.Option]:
 
 def _commands() -> Iterator[str]:
     inputs = options(commands()["inspect"])
-    shared = {o.name: o.opts[0] for o in inputs if o.name not in _OWN | _TALK}
+    shared = {o.name: o.opts[0] for o in inputs if o.name not in _OWN | _VERBOSITY}
     yield (
         "Every command has `-h, --help`, `-v, --verbose` (log what is read and chosen, and "
         "timings) and `-q, --quiet` (print errors only). `trajcage --version` shows the "
@@ -64,7 +60,7 @@ def _commands() -> Iterator[str]:
         context = click.Context(command, info_name=f"trajcage {name}")
         usage = " ".join(command.collect_usage_pieces(context))
         lines = [f"### trajcage {name}", "", f"`trajcage {name} {usage}`"]
-        own = [o for o in options(command) if o.name not in _TALK]
+        own = [o for o in options(command) if o.name not in _VERBOSITY]
         if name != "inspect" and shared.keys() <= {o.name for o in own}:
             own = [o for o in own if o.name not in shared]
             names = ", ".join(f"`{name}`" for name in shared.values())
@@ -163,16 +159,14 @@ def _cell(text: str) -> str:
     return text.replace("|", "\\|")
 
 
-def with_options(text: str) -> str:
+def with_reference(text: str) -> str:
     """Return the README with a fresh reference."""
     head, _, rest = text.partition(BEGIN)
     _, _, tail = rest.partition(END)
-    return f"{head}{BEGIN}\n\n{option_reference()}\n\n{END}{tail}"
+    return f"{head}{BEGIN}\n\n{reference()}\n\n{END}{tail}"
 
 
 if __name__ == "__main__":
     readme = ROOT / "README.md"
-    readme.write_text(
-        with_options(readme.read_text(encoding="utf-8")), encoding="utf-8"
-    )
-    (ROOT / "DATASETS.md").write_text(dataset_reference(), encoding="utf-8")
+    text = with_reference(readme.read_text(encoding="utf-8"))
+    readme.write_text(text, encoding="utf-8")
