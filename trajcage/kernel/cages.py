@@ -1,6 +1,5 @@
 """Measure the cages of many particles: grid, flood, wall, and growth of the reach."""
 
-from concurrent.futures import ThreadPoolExecutor
 from functools import partial
 from typing import NamedTuple
 
@@ -22,6 +21,7 @@ from trajcage.kernel.rows import (
     make_rows,
 )
 from trajcage.kernel.scratch import make_scratch
+from trajcage.kernel.sharing import in_threads
 from trajcage.kernel.system import System
 
 __all__ = ["Cages", "measure_cages"]
@@ -199,9 +199,8 @@ def _rounds(
         settings = (reach, first, system.r_max, tolerance)
         parts = np.array_split(todo, max(1, min(threads, len(todo))))
         work = partial(_measure_part, grid, system.radii, settings, keep, output)
-        with ThreadPoolExecutor(len(parts)) as pool:
-            for share in pool.map(work, parts):
-                rows += share
+        for share in in_threads(work, parts, threads):
+            rows += share
         waiting &= output.status == PENDING
         halo *= 1.6
         first = min(1.3 * first, halo)

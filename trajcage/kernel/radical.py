@@ -1,6 +1,5 @@
 """Radical (power, Laguerre) Voronoi cells of many particles, 3D and 2D."""
 
-from concurrent.futures import ThreadPoolExecutor
 from functools import partial
 from typing import NamedTuple
 
@@ -8,7 +7,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from trajcage.kernel.codes import CLOSED, INVALID, NEED_CAPACITY, NEED_HALO
-from trajcage.kernel.grid import CORNER, LOWEST, PER_EDGE, Grid, build_grid
+from trajcage.kernel.grid import CORNER, LOWEST, PER_EDGE, Grid
 from trajcage.kernel.jit import compiled, helper
 from trajcage.kernel.radical_planes import (
     BOUNDING,
@@ -23,6 +22,8 @@ from trajcage.kernel.radical_planes import (
     make_scratch,
 )
 from trajcage.kernel.radical_walk import walk_cell
+from trajcage.kernel.sharing import in_threads
+from trajcage.kernel.system import System
 
 __all__ = ["RadicalCells", "radical_cells"]
 
@@ -233,41 +234,27 @@ def radical_cells(
     spacing = float((abs(np.linalg.det(vectors)) / n) ** (1.0 / d))
     # a power of two brings lengths to order one without rounding
     scale = float(2.0 ** -np.round(np.log2(spacing)))
-    spacing *= scale
-    xyz = np.zeros((n, 3))
-    xyz[:, :d] = positions * scale
-    edges = np.eye(3)
-    edges[:d, :d] = vectors * scale
-    corner = np.zeros(3)
-    corner[:d] = origin * scale
-    flags = np.zeros(3, np.bool_)
-    flags[:d] = periodic
-    radius = np.ascontiguousarray(radii * scale, dtype=np.float64)
-    r_max = float(radius.max())
-    limit = 2.0 * float(np.linalg.norm(edges[:d, :d], axis=1).sum() + r_max)
-    halo = 3.0 * spacing if flags.any() else limit
-    if d == 2:
-        edges[2, 2] = 0.5  # one grid cell thick
+    system = System.embed(positions, vectors, origin, periodic, radii, scale)
+    spacing = system.spacing
+    edges = np.linalg.norm(system.vectors[:d, :d], axis=1)
+    limit = 2.0 * float(edges.sum() + system.r_max)
+    halo = 3.0 * spacing if np.any(periodic) else limit
     volumes = np.full(n, np.nan)
     status = np.full(n, _PENDING, np.uint8)
     row_of = np.zeros(n, np.int64)
     all_rows: list[_Rows] = []
     waiting = np.ones(n, np.bool_)
     while waiting.any():
-        grid = build_grid(xyz, edges, corner, flags, radius, halo, spacing)
-        if d == 2:
-            grid.shape[1, 2] = 1  # nothing lies beyond the plane
+        grid = system.grid(halo, spacing)
         cells_per_box = float(np.prod(grid.geometry[PER_EDGE, :d]))
         cell_volume = spacing**d * n / cells_per_box
-        settings = (cell_volume, d, r_max, limit, not flags[:d].all())
+        settings = (cell_volume, d, system.r_max, limit, not np.all(periodic))
         parts = np.array_split(grid.order[waiting[grid.order]], threads)
-        work = partial(_measure_part, grid, radius, settings, volumes, status, row_of)
-        if threads == 1:
-            all_rows += work(parts[0])
-        else:
-            with ThreadPoolExecutor(threads) as pool:
-                for part in pool.map(work, parts):
-                    all_rows += part
+        work = partial(
+            _measure_part, grid, system.radii, settings, volumes, status, row_of
+        )
+        for share in in_threads(work, parts, threads):
+            all_rows += share
         waiting = status == _PENDING
         halo *= 1.6
     offsets = np.zeros(n + 1, np.int64)

@@ -9,8 +9,6 @@ A periodic structure cannot be made generic by changing powers image by image;
 ties are broken by a tiny shear of space and a tiny change of the radii.
 """
 
-from concurrent.futures import ThreadPoolExecutor
-
 import numpy as np
 from numpy.typing import NDArray
 
@@ -27,6 +25,7 @@ from trajcage.kernel.region_cells import Spheres, forget
 from trajcage.kernel.region_parts import CORNERS, flood_part, make_store
 from trajcage.kernel.region_removal import UNKNOWN, add_up_region
 from trajcage.kernel.rows import Output, Rows, make_rows
+from trajcage.kernel.sharing import in_threads
 from trajcage.kernel.system import System
 
 __all__ = ["measure_regions"]
@@ -193,8 +192,7 @@ def _rounds(
                 spheres, group, (first, tolerant, group[1]), keep, output
             )
 
-        with ThreadPoolExecutor(max(1, min(threads, len(groups)))) as pool:
-            parts = list(pool.map(work, groups))
+        parts = in_threads(work, groups, threads)
         rows += [row for part in parts for row in part[0]]
         groups = [
             (rest, alone)
