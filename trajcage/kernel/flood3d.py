@@ -23,8 +23,8 @@ from trajcage.kernel.codes import (
     OVERLAP,
 )
 from trajcage.kernel.grid import CORNER, INVERSE_HEIGHT, gather
-from trajcage.kernel.jit import helper
-from trajcage.kernel.scratch import GAP, POWER, REACH, SHIFTED, TIE, X, Y, Z
+from trajcage.kernel.jit import helper, inlined
+from trajcage.kernel.scratch import AHEAD, GAP, POWER, REACH, SHIFTED, TIE, X, Y, Z
 from trajcage.kernel.torus import begin, canonical, register
 
 __all__ = [
@@ -104,7 +104,7 @@ def outside(grid, xi, yi, zi, px, py, pz, radius):
     return False
 
 
-@helper
+@inlined
 def _solve(s, a, b, c, d):
     """Point of equal power to four candidates, and that power."""
     x0, y0, z0, g0 = s.near[X, a], s.near[Y, a], s.near[Z, a], s.near[SHIFTED, a]
@@ -177,7 +177,7 @@ def ray_to_sphere(px, py, pz, nx, ny, nz, radius):
     return (-bb + np.sqrt(bb * bb - aa * cc)) / aa
 
 
-@helper
+@inlined
 def _climb(grid, s, i, xi, yi, zi, ri, n, known, limits, shift):
     """Walk up the power distance from the particle to the first vertex.
 
@@ -508,12 +508,14 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
                     far = np.sqrt(qx * qx + qy * qy + qz * qz)
                     ball = largest
                 else:
+                    # vector code first, then one branch that is rarely taken
+                    for k in range(pad(n)):
+                        h = nx * near[X, k] + ny * near[Y, k] + nz * near[Z, k] - level
+                        ahead = 0.5 * near[GAP, k] / h
+                        near[AHEAD, k] = ahead if h > 0.0 else np.inf
                     for k in range(n):
-                        h = 2.0 * (
-                            nx * near[X, k] + ny * near[Y, k] + nz * near[Z, k] - level
-                        )
-                        if h > 0.0 and near[GAP, k] < step * h:
-                            step = near[GAP, k] / h
+                        if near[AHEAD, k] < step:
+                            step = near[AHEAD, k]
                             who = k
                     qx, qy, qz = px + step * nx, py + step * ny, pz + step * nz
                     if who < 0 or not qx * qx + qy * qy + qz * qz <= reach * reach:

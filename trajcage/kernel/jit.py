@@ -83,6 +83,22 @@ def helper(function: Callable[P, R]) -> Callable[P, R]:
     )
 
 
+def inlined(function: Callable[P, R]) -> Callable[P, R]:
+    """Compile a helper right into every place that calls it.
+
+    A call passes every field of every array, which costs more than a small
+    function does. For small helpers, and larger ones with a single caller.
+    """
+    return _compile(
+        function,
+        no_cpython_wrapper=True,
+        no_cfunc_wrapper=True,
+        _nrt=False,
+        forceinline=True,
+        pipeline_class=_HelperCompiler,
+    )
+
+
 class _Part(JITCodeLibrary):  # type: ignore[misc]
     """Code that is linked into kernels and never runs by itself.
 

@@ -9,7 +9,7 @@ r x dr / 2.
 
 import numpy as np
 
-from trajcage.kernel.jit import helper
+from trajcage.kernel.jit import helper, inlined
 from trajcage.kernel.scratch import POWER, REACH, X, Y, Z
 
 __all__ = [
@@ -32,7 +32,7 @@ __all__ = [
 _FULL = 4.0 * np.pi
 
 # columns of Scratch.patch
-STAMP, _X0, _Y0, _Z0, _RE, _IM, TURN, AX, AY, AZ, ARCS, AREA = range(12)
+STAMP, _X0, _Y0, _Z0, _RE, _IM, TURN, AX, AY, AZ, ARCS, AREA, _R0 = range(13)
 
 
 @helper
@@ -46,7 +46,7 @@ def window(s, q):
     return a, b, c
 
 
-@helper
+@inlined
 def polish_corners(s, n_corners):
     """Move the corners from the spheres with broken ties to the true ones.
 
@@ -102,7 +102,7 @@ def held_fast(s, n_corners):
     return n_corners > 0
 
 
-@helper
+@inlined
 def opening_ratio(s, a, b, c):
     """Factor on the exclusion radii at which the window a, b, c is just shut.
 
@@ -128,10 +128,11 @@ def opening_ratio(s, a, b, c):
     rc = s.near[REACH, c] * s.near[REACH, c]
     det = d11 * d22 - d12 * d12
     # y - x_a = p e1 + q e2 with p, q linear in mu
-    p0 = 0.5 * (d11 * d22 - d22 * d12) / det
-    q0 = 0.5 * (d22 * d11 - d11 * d12) / det
-    p1 = 0.5 * ((ra - rb) * d22 - (ra - rc) * d12) / det
-    q1 = 0.5 * ((ra - rc) * d11 - (ra - rb) * d12) / det
+    half = 0.5 / det
+    p0 = half * (d11 * d22 - d22 * d12)
+    q0 = half * (d22 * d11 - d11 * d12)
+    p1 = half * ((ra - rb) * d22 - (ra - rc) * d12)
+    q1 = half * ((ra - rc) * d11 - (ra - rb) * d12)
     aa = p1 * p1 * d11 + q1 * q1 * d22 + 2.0 * p1 * q1 * d12
     bb = p0 * p1 * d11 + q0 * q1 * d22 + (p0 * q1 + q0 * p1) * d12 - 0.5 * ra
     cc = p0 * p0 * d11 + q0 * q0 * d22 + 2.0 * p0 * q0 * d12
@@ -141,7 +142,7 @@ def opening_ratio(s, a, b, c):
     return np.sqrt(cc / (np.sqrt(root) - bb))
 
 
-@helper
+@inlined
 def touch(s, a, px, py, pz):
     """Start the sums of sphere a, with p as reference point, at first use."""
     if s.patch[a, STAMP] != s.clock[0]:
@@ -158,15 +159,18 @@ def touch(s, a, px, py, pz):
         s.patch[a, AY] = 0.0
         s.patch[a, AZ] = 0.0
         s.patch[a, ARCS] = 0.0
+        px, py, pz = px - s.near[X, a], py - s.near[Y, a], pz - s.near[Z, a]
+        s.patch[a, _R0] = np.sqrt(px * px + py * py + pz * pz)
 
 
-@helper
+@inlined
 def add_arc(s, a, ex, ey, ez, height, circle, px, py, pz, dx, dy, dz):
     """Add the arc p -> p + d, clockwise about the outward axis e of sphere a.
 
     ``height`` is the distance of the arc's plane from the center along e.
     ``circle`` is the squared radius of the arc's circle, the arc's angle, its
-    sine and cosine times the squared radius, and the nudge of the reference.
+    sine and cosine times the squared radius, and the squared nudge of the
+    reference.
 
     The reference point lies beside the first corner, off it in a direction
     without symmetry by a part of the cage's size: as close as the cage is
@@ -175,13 +179,15 @@ def add_arc(s, a, ex, ey, ez, height, circle, px, py, pz, dx, dy, dz):
     differences are differences of points relative to the particle, which
     keeps the digits of tiny cages.
     """
-    rho2, angle, sine, cosine, nudge = circle
-    touch(s, a, px + 0.482 * nudge, py + 0.673 * nudge, pz - 0.561 * nudge)
+    rho2, angle, sine, cosine, nudge2 = circle
+    if s.patch[a, STAMP] != s.clock[0]:
+        nudge = np.sqrt(nudge2)
+        touch(s, a, px + 0.482 * nudge, py + 0.673 * nudge, pz - 0.561 * nudge)
     r = s.near[REACH, a]
     cx, cy, cz = s.near[X, a], s.near[Y, a], s.near[Z, a]
     u1x, u1y, u1z = px - s.patch[a, _X0], py - s.patch[a, _Y0], pz - s.patch[a, _Z0]
     x0, y0, z0 = s.patch[a, _X0] - cx, s.patch[a, _Y0] - cy, s.patch[a, _Z0] - cz
-    r0 = np.sqrt(x0 * x0 + y0 * y0 + z0 * z0)
+    r0 = s.patch[a, _R0]
     r1x, r1y, r1z = px - cx, py - cy, pz - cz
     r2x, r2y, r2z = r1x + dx, r1y + dy, r1z + dz
     # solid angle of the triangle (reference, p, p + d): E = 2 arg(re + i im)
@@ -208,13 +214,15 @@ def add_arc(s, a, ex, ey, ez, height, circle, px, py, pz, dx, dy, dz):
         re, im = re * k_re - im * k_im, re * k_im + im * k_re
         s.patch[a, TURN] -= angle * (1.0 - height / r)
         segment = rho2 * angle - sine
-    # only the direction of the product matters; keep its size in range
-    norm = 1.0 / (abs(re) + abs(im))
-    re *= norm
-    im *= norm
     o_re, o_im = s.patch[a, _RE], s.patch[a, _IM]
-    s.patch[a, _RE] = o_re * re - o_im * im
-    s.patch[a, _IM] = o_re * im + o_im * re
+    re, im = o_re * re - o_im * im, o_re * im + o_im * re
+    size = abs(re) + abs(im)
+    if size < 1e-100 or size > 1e100:
+        # only the direction of the product matters; keep its size in range
+        re /= size
+        im /= size
+    s.patch[a, _RE] = re
+    s.patch[a, _IM] = im
     segment *= -0.5
     s.patch[a, AX] += 0.5 * tx + segment * ex
     s.patch[a, AY] += 0.5 * ty + segment * ey
@@ -222,7 +230,7 @@ def add_arc(s, a, ex, ey, ez, height, circle, px, py, pz, dx, dy, dz):
     s.patch[a, ARCS] += 1.0
 
 
-@helper
+@inlined
 def patch_area(s, a):
     """Area of the wall on sphere a over R^2, between 0 and 4 pi."""
     if s.patch[a, ARCS] < 0.0:

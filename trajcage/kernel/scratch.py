@@ -10,6 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 __all__ = [
+    "AHEAD",
     "GAP",
     "POWER",
     "REACH",
@@ -29,6 +30,7 @@ POWER = 4  # power of the particle, |x|^2 - reach^2
 SHIFTED = 5  # the same with ties broken
 TIE = 6  # numbers in [0, 1) without pattern, to break ties
 GAP = 7  # power above that of the current vertex
+AHEAD = 8  # where along the current edge the candidate shares the vertex's power
 
 
 class Scratch(NamedTuple):
@@ -41,7 +43,9 @@ class Scratch(NamedTuple):
     """
 
     found: NDArray[np.int64]  #: (candidates,) grid slot
-    near: NDArray[np.float64]  #: (8, candidates) rows as named above
+    near: NDArray[np.float64]
+    """(9, candidates and more) rows as named above; a row does not fill whole
+    pages, since a store delays the loads at the same place of other pages."""
     cell: NDArray[np.uint32]  #: (cells, 4) candidates of the simplex, ascending
     across: NDArray[np.int32]
     """(cells, 4): what lies across the face opposite to each candidate of the
@@ -54,15 +58,15 @@ class Scratch(NamedTuple):
     slots: NDArray[np.int64]  #: (slots, 2) hash table of cells: clock, cell
     corner: NDArray[np.float64]  #: (corners, 3)
     mark: NDArray[np.int32]  #: (corners, 6) cell, face, arcs walked
-    patch: NDArray[np.float64]  #: (candidates, 12) sums over the wall on a sphere
+    patch: NDArray[np.float64]  #: (candidates, 16) sums over the wall on a sphere
     seen: NDArray[np.uint32]  #: candidates with a piece of the wall
     clock: NDArray[np.int64]  #: (2,) number of the current flood; candidates seen
 
 
 def make_scratch(n_candidates: int, n_cells: int) -> Scratch:
     """Allocate room for so many candidates and cells."""
-    near = np.zeros((8, n_candidates))
-    near[TIE] = np.random.default_rng(20).random(n_candidates)
+    near = np.zeros((9, n_candidates + 24))
+    near[TIE] = np.random.default_rng(20).random(near.shape[1])
     return Scratch(
         np.empty(n_candidates, np.int64),
         near,
@@ -74,7 +78,7 @@ def make_scratch(n_candidates: int, n_cells: int) -> Scratch:
         np.zeros((1 << int(np.ceil(np.log2(4 * n_cells))), 2), np.int64),
         np.empty((4 * n_cells, 3)),
         np.empty((4 * n_cells, 6), np.int32),
-        np.zeros((n_candidates, 12)),
+        np.zeros((n_candidates, 16)),
         np.empty(n_candidates, np.uint32),
         np.zeros(2, np.int64),
     )

@@ -15,7 +15,7 @@ is put together from cones about the spheres' centers:
 import numpy as np
 
 from trajcage.kernel.codes import CLOSED, INVALID
-from trajcage.kernel.jit import helper
+from trajcage.kernel.jit import helper, inlined
 from trajcage.kernel.patch3d import (
     ARCS,
     AREA,
@@ -172,7 +172,7 @@ def _covered_half_angle(s, ex, ey, ez, height, q, slot_a, slot_w):
     return np.arctan2(np.sqrt(kx * kx + ky * ky + kz * kz), wx * vx + wy * vy + wz * vz)
 
 
-@helper
+@inlined
 def _arcs(grid, s, n_cells, n_corners, torus):
     """Walk every arc of the wall once and add it to its two spheres."""
     size2 = 0.0
@@ -245,8 +245,7 @@ def _arcs(grid, s, n_cells, n_corners, torus):
                     angle += 2.0 * np.pi
             elif angle < 0.0:
                 angle += 2.0 * np.pi
-            nudge = 0.3 * np.sqrt(min(size2, ra * rb))
-            circle = (rho2, angle, sine, cosine, nudge)
+            circle = (rho2, angle, sine, cosine, 0.09 * min(size2, ra * rb))
             # counterclockwise about a -> b is clockwise about b -> a
             if torus is None:
                 add_arc(
@@ -327,7 +326,7 @@ def covered(s, n, px, py, pz, ex, ey, ez, rho, a, b):
     return False
 
 
-@helper
+@inlined
 def _circles(grid, s, n, n_cells, torus):
     """Add the full circles in which two spheres meet."""
     if torus is not None:
@@ -345,13 +344,13 @@ def _circles(grid, s, n, n_cells, torus):
                 while i == k or i == w:
                     i += 1
                 j = 6 - i - k - w
-                a, b = s.cell[t, i], s.cell[t, j]
-                ex, ey, ez, length, height, rho2 = _foot(s, a, b)
                 if torus is None:
-                    if rho2 <= 0.0 or not _ring_is_open(s, t, i, j, k, w, n_cells):
+                    if not _ring_is_open(s, t, i, j, k, w, n_cells):
                         continue
                 elif not _ring_is_new(s, t, i, j, k, w, torus.walked, n_cells):
                     continue
+                a, b = s.cell[t, i], s.cell[t, j]
+                ex, ey, ez, length, height, rho2 = _foot(s, a, b)
                 mx = s.near[X, a] + height * ex
                 my = s.near[Y, a] + height * ey
                 mz = s.near[Z, a] + height * ez
@@ -383,7 +382,7 @@ def _circles(grid, s, n, n_cells, torus):
                 s.patch[into_b, AZ] += half * ez
 
 
-@helper
+@inlined
 def _islands(grid, s, n, n_cells, torus):
     """Add the spheres that meet no other: seen in full, or hidden."""
     for t in range(n_cells):
@@ -401,7 +400,7 @@ def _islands(grid, s, n, n_cells, torus):
                 s.patch[into, ARCS] = -1.0
 
 
-@helper
+@inlined
 def integrate_wall(grid, s, n, n_cells, n_corners, torus):
     """Volume, area, wall sum, bounding neighbors and weakest window of a cage.
 
