@@ -27,6 +27,11 @@ td { overflow-wrap: anywhere; font-variant-numeric: tabular-nums; }
 figure { margin: 1.6rem 0; }
 figure img { max-width: 100%; height: auto; border: 1px solid #e4e4e4; }
 details summary { cursor: pointer; }
+@media (max-width: 48rem) {
+  .wide:not(.text) table { min-width: 46rem; }
+  figure { overflow-x: auto; }
+  figure img { max-width: none; width: 42rem; }
+}
 @media print { details > * { display: block; } figure { break-inside: avoid; } }
 """
 
