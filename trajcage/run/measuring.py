@@ -210,7 +210,7 @@ def measure(
         )
         record = parameters(options, inputs, description, notes, command_line)
         fold = RunFold(settings, first, inputs)
-        n_workers = workers or len(os.sched_getaffinity(0))
+        n_workers = workers or _usable_cores()
         _LOGGER.info("processes: %d", n_workers)
         measured = measured_frames(opened, frames, settings, n_workers, note, dask)
         if not resume:
@@ -246,6 +246,13 @@ def measure(
                     measured, fold, writer, len(frames), stopping, note, progress
                 )
     return open_result(target)
+
+
+def _usable_cores() -> int:
+    """Cores that this process may use; all of the machine where that is not told."""
+    if hasattr(os, "sched_getaffinity"):
+        return len(os.sched_getaffinity(0))
+    return os.cpu_count() or 1
 
 
 def _put_back(first: MeasuredFrame, rest: MeasuredFrames) -> MeasuredFrames:
