@@ -34,7 +34,7 @@ __all__ = ["command"]
 @click.option(
     "--fineness",
     type=float,
-    default=8.0,
+    default=12.0,
     show_default=True,
     help="How much smaller than the cage its triangles are.",
 )
