@@ -9,9 +9,13 @@ from numpy.typing import NDArray
 from trajcage.kernel import radical_cells
 from trajcage.model import Box, Frame, NeighborList
 from trajcage.neighborhood.boxes import freud_box, lower_triangle
+from trajcage.neighborhood.memory import return_freed_memory
 from trajcage.neighborhood.pairs import check_distinct
 
 __all__ = ["radical_voronoi", "tessellate", "voronoi"]
+
+# Particles of a frame from which on what freud leaves behind is worth the time.
+_HUGE = 100_000
 
 # Neighbors whose vectors are computed together: few enough for the cache.
 _AT_A_TIME = 16_384
@@ -83,6 +87,8 @@ def voronoi(
         volumes[unbounded] = np.nan
     pairs = tessellation.nlist
     del tessellation  # with all corners of the cells, the most memory of a run
+    if n >= _HUGE:
+        return_freed_memory()
     first, second = pairs.query_point_indices, pairs.point_indices
     vectors = np.empty((len(first), d))
     inverse = np.linalg.inv(triangular)
