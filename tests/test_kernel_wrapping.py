@@ -172,3 +172,18 @@ def test_lattices_past_their_escape():
         # 81 pairs, six of which the vacancy lacks
         volume = 27 - 26 * BALL[3] * s**3 + 75 * lens
         np.testing.assert_allclose(found.free_volume, volume, rtol=1e-8)
+
+
+def test_ties_of_a_lattice_with_a_vacancy_end():
+    """Squares whose four spheres all but meet in one point, their vertices anywhere."""
+    sites = np.delete(list(np.ndindex(2, 2, 2)), 4, axis=0)  # not (1, 0, 0)
+    noise = [[-180, -922, -361], [581, 130, 0], [525, 0, -455], [695, 0, 0]]
+    noise += [[0, -903, 0], [0, 0, 921], [0, 0, 0]]
+    positions = np.sqrt(2.0) * sites + 1e-15 * np.array(noise)
+    found = measure(positions, math.sqrt(8.0), 0.5, reach=math.inf)
+    assert (found.status == WRAPPED).all()
+    # twelve bonds between neighbors are left, or fourteen beside the vacancy
+    beside = np.abs(sites - [1, 0, 0]).sum(axis=1) == 1
+    lens = math.pi * (4 + math.sqrt(2.0)) * (2 - math.sqrt(2.0)) ** 2 / 12
+    volume = 8.0**1.5 - 6 * BALL[3] + lens * np.where(beside, 14, 12)
+    np.testing.assert_allclose(found.free_volume, volume, rtol=1e-8)

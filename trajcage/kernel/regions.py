@@ -33,6 +33,9 @@ __all__ = ["measure_regions"]
 #: Strengths of the shear; the next one is tried if a region came out inconsistent.
 _SHEARS = (1e-11, 1e-9, 1e-7)
 
+#: Cells that a particle of a periodic structure can have, at the very most.
+_MOST_CELLS = 512
+
 #: Status of a particle with contacts that are spheres of its own making.
 _ALONE = 254
 
@@ -178,7 +181,9 @@ def _rounds(
     side = max(sheared.r_max, 0.75 * sheared.spacing)
     edges = sheared.edges(side)
     extent = float(np.linalg.norm(edges, axis=1).sum())
-    halo = 4.0 * first
+    # no ball of a periodic box that is free of centers is wider than its edges together
+    widest = extent + 4.0 * first
+    halo = min(4.0 * first, widest)
     rows: list[Rows] = []
     while groups:
         grid = sheared.grid(halo, side)
@@ -189,7 +194,12 @@ def _rounds(
             reaches = sheared.radii + radii[group[0][0]]
             spheres = Spheres(grid, edges, reaches, float(reaches.max()), extent)
             return _measure_group(
-                spheres, group, (first, tolerant, group[1]), keep, output
+                spheres,
+                group,
+                (first, tolerant, group[1]),
+                keep,
+                grid.halo < widest,
+                output,
             )
 
         parts = in_threads(work, groups, threads)
@@ -199,7 +209,7 @@ def _rounds(
             for (_, rest), (_, alone) in zip(parts, groups, strict=True)
             if len(rest) > 0
         ]
-        halo *= 1.6
+        halo = min(1.6 * halo, widest)
     return rows
 
 
@@ -208,27 +218,35 @@ def _measure_group(
     group: _Group,
     settings: tuple[float, bool, bool],
     keep: bool,
+    widen: bool,
     output: Output,
 ) -> tuple[list[Rows], NDArray[np.int64]]:
-    """Measure particles of one radius; return those that need a wider halo, too."""
+    """Measure particles of one radius; return those that need a wider halo, too.
+
+    INVALID are those that need a wider one than is possible (not ``widen``) or more
+    cells: they have met a vertex that broken ties have put anywhere.
+    """
     todo = group[0]
     n = len(spheres.reaches)
     plane = 2 if output.members.shape[1] == 2 else None
     n_cells = 256 + (9 * n if plane is None else 3 * n)
+    most = max(_MOST_CELLS * n, 1 << 16)
     room = 4 * n_cells
     begin = 0
     finished: list[Rows] = []
     while begin < len(todo):
         rows = make_rows(room if keep else 0)
+        at = begin
         code, begin = _measure_space(
             spheres, make_store(n, n_cells), todo, begin, settings, keep, rows, output,
             plane,
         )  # fmt: skip
         finished.append(rows)
-        if code == NEED_HALO:
+        if code == NEED_HALO and widen:
             break
-        if code == NEED_CAPACITY:
-            n_cells, room = 2 * n_cells, 2 * room
+        if code == NEED_CAPACITY and n_cells < most:
+            room *= 2
+            n_cells *= 2 if begin == at else 1  # else the rows were full
         elif code != CLOSED:
             output.status[todo[begin]] = INVALID
             begin += 1
