@@ -29,17 +29,17 @@ def _cage(grid, s, i, radius, first, limits, shift, plane):
     xi, yi, zi = grid.home[i, 0], grid.home[i, 1], grid.home[i, 2]
     if plane is None:
         code, n, n_cells, n_corners = flood3d(
-            grid, s, i, xi, yi, zi, radius, first, limits, shift, None
+            grid, s, i, xi, yi, zi, radius, first, limits, shift
         )
         if code != CLOSED:
             return n_corners, (code, 0.0, 0.0, 0.0, 0, 0.0, -1)
-        return n_corners, wall3d.integrate_wall(grid, s, n, n_cells, n_corners, None)
+        return n_corners, wall3d.integrate_wall(s, n, n_cells, n_corners)
     code, n, n_cells, n_corners = flood2d(
-        grid, s, i, xi, yi, zi, radius, first, limits, shift, None
+        grid, s, i, xi, yi, zi, radius, first, limits, shift
     )
     if code != CLOSED:
         return n_corners, (code, 0.0, 0.0, 0.0, 0, 0.0, -1)
-    return n_corners, wall2d.integrate_wall(grid, s, n, n_cells, n_corners, None)
+    return n_corners, wall2d.integrate_wall(s, n, n_cells, n_corners)
 
 
 @helper

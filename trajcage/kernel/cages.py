@@ -24,7 +24,7 @@ from trajcage.kernel.scratch import make_scratch
 from trajcage.kernel.sharing import in_threads
 from trajcage.kernel.system import System
 
-__all__ = ["Cages", "measure_cages"]
+__all__ = ["Cages", "Wall", "Windows", "measure_cages"]
 
 #: Strengths of the tie-breaking, relative to the power and (for ties of contacts
 #: with far spheres) absolute; the next ones are tried if a flood came out

@@ -25,7 +25,6 @@ from trajcage.kernel.flood3d import (
 )
 from trajcage.kernel.jit import helper
 from trajcage.kernel.scratch import GAP, SHIFTED, X, Y
-from trajcage.kernel.torus import begin, canonical, register
 
 __all__ = ["flood"]
 
@@ -171,7 +170,7 @@ def _gaps(s, begin, n, t):
 
 
 @helper
-def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
+def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):
     """Find all power vertices of the cage and the corners of its wall.
 
     Parameters and results are those of :func:`trajcage.kernel.flood3d.flood`.
@@ -208,26 +207,6 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
         known = need
     if outside(grid, xi, yi, zi, px, py, 0.0, ball):
         return BORDER, n, 0, 0
-    if torus is not None:
-        begin(torus, grid, i)
-        register(torus, grid, s, n)
-        while not canonical(torus, grid, a, b, c, a, 3):
-            need = 1.2 * known
-            if need > halo:
-                return NEED_HALO, n, 0, 0
-            code, n = collect(
-                grid, s, i, xi, yi, zi, ri, n, known, need, tolerance, shift
-            )
-            if code != CLOSED:
-                return code, n, 0, 0
-            known = need
-            register(torus, grid, s, n)
-        image = torus.image
-        a, b, c = _sorted3(
-            np.uint32(image[0]), np.uint32(image[1]), np.uint32(image[2])
-        )
-        px, py, power = _solve(s, a, b, c)
-        torus.offset[0, :] = 0
     _, slot = find_cell(s, a, b, c, no_fourth)
     _new_cell(s, none, slot, a, b, c, px, py, power)
     n_cells = one
@@ -263,10 +242,10 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
                 if inside >= 0.0:
                     crossing = power / (np.sqrt(inside) - slope)
             level = nx * bx + ny * by
-            # slots and candidates of the edge
+            # slots of the edge's candidates
             f0 = 1 if f == 0 else 0
             f1 = 2 if f <= 1 else 1
-            m0, m1, m3 = e0, e1, e0
+            m3 = e0
             while True:
                 who = -1
                 step = np.inf
@@ -290,38 +269,21 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
                         ball = largest
                         need = min(reach + ball, max(1.4 * known, known + ball))
                     else:
-                        m0, m1, m3 = e0, e1, np.uint32(who)
-                        ready = True
-                        if torus is not None:
-                            # the neighbor must be final before it is moved
-                            q_power = power + (2.0 * slope + square * step) * step
-                            ball = np.sqrt(max(q_power, 0.0) + largest * largest)
-                            need = np.sqrt(qx * qx + qy * qy) + ball
-                            ready = need <= known
-                            if ready and not canonical(torus, grid, m0, m1, m3, m3, 3):
-                                ready = False
-                                need = 1.2 * known
-                            if ready:
-                                m0, m1 = (
-                                    np.uint32(torus.image[0]),
-                                    np.uint32(torus.image[1]),
-                                )
-                                m3 = np.uint32(torus.image[2])
-                        if ready:
-                            a, b, c = _sorted3(m0, m1, m3)
-                            other, slot = find_cell(s, a, b, c, no_fourth)
-                            if other >= 0:
-                                break
-                            qx, qy, q_power = _solve(s, a, b, c)
-                            ball = np.sqrt(max(q_power, 0.0) + largest * largest)
-                            if q_power <= 0.0:
-                                # rounding hid the crossing of an edge that ends
-                                # within a disk
-                                blocked = True
-                                ball = largest
-                                step = crossing if crossing < np.inf else 0.0
-                                qx, qy = px + step * nx, py + step * ny
-                            need = np.sqrt(qx * qx + qy * qy) + ball
+                        m3 = np.uint32(who)
+                        a, b, c = _sorted3(e0, e1, m3)
+                        other, slot = find_cell(s, a, b, c, no_fourth)
+                        if other >= 0:
+                            break
+                        qx, qy, q_power = _solve(s, a, b, c)
+                        ball = np.sqrt(max(q_power, 0.0) + largest * largest)
+                        if q_power <= 0.0:
+                            # rounding hid the crossing of an edge that ends
+                            # within a disk
+                            blocked = True
+                            ball = largest
+                            step = crossing if crossing < np.inf else 0.0
+                            qx, qy = px + step * nx, py + step * ny
+                        need = np.sqrt(qx * qx + qy * qy) + ball
                 if need <= known:
                     break
                 if not need < np.inf:
@@ -336,8 +298,6 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
                 _gaps(s, n, total, t)
                 n = total
                 known = need
-                if torus is not None:
-                    register(torus, grid, s, n)
             if blocked:
                 if outside(grid, xi, yi, zi, qx, qy, 0.0, largest):
                     return BORDER, n, n_cells, n_corners
@@ -367,25 +327,13 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
                 n_cells += 1
                 s.stack[height] = other
                 height += 1
-                if torus is not None:
-                    for axis in range(3):
-                        torus.offset[other, axis] = (
-                            torus.offset[t, axis] + torus.move[axis]
-                        )
-            elif torus is not None:
-                for axis in range(3):
-                    if (
-                        torus.offset[other, axis]
-                        != torus.offset[t, axis] + torus.move[axis]
-                    ):
-                        torus.sums[1] = 1.0
             # link both sides of the edge
             back = slot_of(s, other, m3)
             if s.cell[other, back] != m3 or back == 3 or s.across[other, back] != -1:
                 return INVALID, n, n_cells, n_corners
             s.across[t, f] = other
             s.across[other, back] = t
-            j0, j1 = slot_of(s, other, m0), slot_of(s, other, m1)
+            j0, j1 = slot_of(s, other, e0), slot_of(s, other, e1)
             s.join[t, f] = j0 << 2 * f0 | j1 << 2 * f1
             s.join[other, back] = f0 << 2 * j0 | f1 << 2 * j1
     return CLOSED, n, n_cells, n_corners

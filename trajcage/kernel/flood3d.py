@@ -25,7 +25,6 @@ from trajcage.kernel.codes import (
 from trajcage.kernel.grid import CORNER, INVERSE_HEIGHT, gather
 from trajcage.kernel.jit import helper, inlined
 from trajcage.kernel.scratch import AHEAD, GAP, POWER, REACH, SHIFTED, TIE, X, Y, Z
-from trajcage.kernel.torus import begin, canonical, register
 
 __all__ = [
     "collect",
@@ -346,7 +345,7 @@ def _gaps(s, begin, n, t):
 
 
 @helper
-def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
+def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift):
     """Find all power vertices of the cage and the corners of its wall.
 
     Parameters
@@ -361,8 +360,6 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
         radius; overlap tolerance; distance up to which the grid is complete.
     shift : (2,) float64
         Strength of the tie-breaking, relative and absolute.
-    torus : Torus or None
-        Whether cells count up to translations by box edges.
 
     Returns
     -------
@@ -404,29 +401,6 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
         known = need
     if outside(grid, xi, yi, zi, px, py, pz, ball):
         return BORDER, n, 0, 0
-    if torus is not None:
-        begin(torus, grid, i)
-        register(torus, grid, s, n)
-        while not canonical(torus, grid, a, b, c, d, 4):
-            need = 1.2 * known
-            if need > halo:
-                return NEED_HALO, n, 0, 0
-            code, n = collect(
-                grid, s, i, xi, yi, zi, ri, n, known, need, tolerance, shift
-            )
-            if code != CLOSED:
-                return code, n, 0, 0
-            known = need
-            register(torus, grid, s, n)
-        image = torus.image
-        a, b, c, d = _sorted4(
-            np.uint32(image[0]),
-            np.uint32(image[1]),
-            np.uint32(image[2]),
-            np.uint32(image[3]),
-        )
-        px, py, pz, power = _solve(s, a, b, c, d)
-        torus.offset[0, :] = 0
     _, slot = find_cell(s, a, b, c, d)
     _new_cell(s, none, slot, a, b, c, d, px, py, pz, power)
     n_cells = one
@@ -526,46 +500,21 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
                         ball = largest
                         far = min(reach, max(1.4 * known - ball, known))
                     else:
-                        m0, m1, m2 = s.cell[t, f0], s.cell[t, f1], s.cell[t, f2]
                         m3 = np.uint32(who)
-                        ready = True
-                        if torus is not None:
-                            # the neighbor must be final before it is moved
-                            far = np.sqrt(qx * qx + qy * qy + qz * qz)
-                            q_power = power + (2.0 * slope + square * step) * step
-                            ball = np.sqrt(max(q_power, 0.0) + largest * largest)
-                            ready = far + ball <= known
-                            if ready and not canonical(torus, grid, m0, m1, m2, m3, 4):
-                                ready = False
-                                far = 1.2 * known - ball
-                            if ready:
-                                m0, m1 = (
-                                    np.uint32(torus.image[0]),
-                                    np.uint32(torus.image[1]),
-                                )
-                                m2, m3 = (
-                                    np.uint32(torus.image[2]),
-                                    np.uint32(torus.image[3]),
-                                )
-                        if ready:
-                            a, b, c, d = _sorted4(m0, m1, m2, m3)
-                            other, slot = find_cell(s, a, b, c, d)
-                            if other >= 0:
-                                break
-                            qx, qy, qz, q_power = _solve(s, a, b, c, d)
-                            ball = np.sqrt(max(q_power, 0.0) + largest * largest)
-                            if q_power <= 0.0:
-                                # rounding hid the crossing of an edge that ends
-                                # within a sphere
-                                blocked = True
-                                ball = largest
-                                step = crossing if crossing < np.inf else 0.0
-                                qx, qy, qz = (
-                                    px + step * nx,
-                                    py + step * ny,
-                                    pz + step * nz,
-                                )
-                            far = np.sqrt(qx * qx + qy * qy + qz * qz)
+                        a, b, c, d = _sorted4(m0, m1, m2, m3)
+                        other, slot = find_cell(s, a, b, c, d)
+                        if other >= 0:
+                            break
+                        qx, qy, qz, q_power = _solve(s, a, b, c, d)
+                        ball = np.sqrt(max(q_power, 0.0) + largest * largest)
+                        if q_power <= 0.0:
+                            # rounding hid the crossing of an edge that ends
+                            # within a sphere
+                            blocked = True
+                            ball = largest
+                            step = crossing if crossing < np.inf else 0.0
+                            qx, qy, qz = px + step * nx, py + step * ny, pz + step * nz
+                        far = np.sqrt(qx * qx + qy * qy + qz * qz)
                 need = far + ball
                 if need <= known:
                     break
@@ -581,8 +530,6 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
                 _gaps(s, n, total, t)
                 n = total
                 known = need
-                if torus is not None:
-                    register(torus, grid, s, n)
             if blocked:
                 if outside(grid, xi, yi, zi, qx, qy, qz, largest):
                     return BORDER, n, n_cells, n_corners
@@ -612,18 +559,6 @@ def flood(grid, s, i, xi, yi, zi, ri, known, limits, shift, torus):
                 n_cells += 1
                 s.stack[height] = other
                 height += 1
-                if torus is not None:
-                    for axis in range(3):
-                        torus.offset[other, axis] = (
-                            torus.offset[t, axis] + torus.move[axis]
-                        )
-            elif torus is not None:
-                for axis in range(3):
-                    if (
-                        torus.offset[other, axis]
-                        != torus.offset[t, axis] + torus.move[axis]
-                    ):
-                        torus.sums[1] = 1.0
             # link both sides of the face
             back = slot_of(s, other, m3)
             if s.cell[other, back] != m3 or s.across[other, back] != -1:

@@ -11,8 +11,15 @@ from numpy.typing import NDArray
 
 from trajcage.kernel.jit import compiled, helper
 
-__all__ = ["CORNER", "INVERSE_HEIGHT", "Grid", "build_grid", "gather"]
-
+__all__ = [
+    "CORNER",
+    "INVERSE_HEIGHT",
+    "LOWEST",
+    "PER_EDGE",
+    "Grid",
+    "build_grid",
+    "gather",
+]
 
 # rows of Grid.geometry; rows 0 to 2 turn Cartesian into fractional coordinates
 LOWEST = 3  # fractional coordinate where the grid starts

@@ -11,7 +11,7 @@ import numba
 from numba.core.codegen import JITCodeLibrary
 from numba.core.compiler import CompilerBase, DefaultPassBuilder
 
-__all__ = ["compiled", "helper", "is_compiled"]
+__all__ = ["compiled", "helper", "inlined", "is_compiled"]
 
 _log = logging.getLogger(__name__)
 

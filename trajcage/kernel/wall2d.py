@@ -2,10 +2,8 @@
 
 On the circle about x_j with radius R, x . n = (|x|^2 - g) / 2R with g the
 power of the particle, so that the area is sum (g L - int |x|^2 dl) / 4R, in
-which nothing cancels however small the cage; around a periodic box the area is half
-of the sum over pairs of (distance x free length of their radical line) minus
-the sum of R L. For an arc p1 -> p2 the integral
-of the normal is the chord turned by a right angle.
+which nothing cancels however small the cage. For an arc p1 -> p2 the integral of
+the normal is the chord turned by a right angle.
 """
 
 import numpy as np
@@ -14,7 +12,6 @@ from trajcage.kernel.codes import CLOSED, INVALID
 from trajcage.kernel.jit import helper
 from trajcage.kernel.patch3d import AREA, AX, AY, STAMP, TURN, held_fast, touch
 from trajcage.kernel.scratch import POWER, REACH, X, Y
-from trajcage.kernel.torus import home_of
 from trajcage.kernel.wall3d import covered
 
 __all__ = ["integrate_wall", "opening_ratio", "window"]
@@ -88,7 +85,7 @@ def _covered_half_angle(s, q, slot):
 
 
 @helper
-def _arcs(grid, s, n_cells, n_corners, torus):
+def _arcs(s, n_cells, n_corners):
     """Walk every arc of the wall once, counterclockwise on its disk."""
     for q in range(n_corners):
         t = s.mark[q, 0]
@@ -111,12 +108,6 @@ def _arcs(grid, s, n_cells, n_corners, torus):
             qx, qy = s.corner[q, 0] - s.near[X, a], s.corner[q, 1] - s.near[Y, a]
             dx = s.corner[end, 0] - s.corner[q, 0]
             dy = s.corner[end, 1] - s.corner[q, 1]
-            into = a
-            if torus is not None:
-                other = s.cell[s.mark[end, 0], end_i]
-                dx += s.near[X, a] - s.near[X, other]
-                dy += s.near[Y, a] - s.near[Y, other]
-                into = np.uint32(home_of(torus, grid, s, a))
             r2 = s.near[REACH, a] * s.near[REACH, a]
             chord2 = dx * dx + dy * dy
             angle = np.arctan2(qx * dy - qy * dx, r2 - 0.5 * chord2)
@@ -128,60 +119,33 @@ def _arcs(grid, s, n_cells, n_corners, torus):
                     angle += 2.0 * np.pi
             elif angle < 0.0:
                 angle += 2.0 * np.pi
-            touch(s, into, 0.0, 0.0, 0.0)
-            s.patch[into, TURN] += angle
-            s.patch[into, AX] += dy
-            s.patch[into, AY] -= dx
+            touch(s, a, 0.0, 0.0, 0.0)
+            s.patch[a, TURN] += angle
+            s.patch[a, AX] += dy
+            s.patch[a, AY] -= dx
     return CLOSED
 
 
 @helper
-def _free_lines(s, n_cells, torus):
-    """Sum of distance x free length of the radical line over pairs of disks."""
-    for t in range(n_cells):
-        for f in range(3):
-            i = 1 if f == 0 else 0
-            j = 3 - i - f
-            a, b = s.cell[t, i], s.cell[t, j]
-            dx, dy = s.near[X, b] - s.near[X, a], s.near[Y, b] - s.near[Y, a]
-            px, py = s.vertex[t, 0] - s.near[X, a], s.vertex[t, 1] - s.near[Y, a]
-            other = s.across[t, f]
-            half = 0.5
-            if other < 0:
-                half = 1.0
-                px -= s.corner[-2 - other, 0] - s.near[X, a]
-                py -= s.corner[-2 - other, 1] - s.near[Y, a]
-            else:
-                # seen from both cells
-                c = s.cell[other, s.join[t, f] >> 2 * i & 3]
-                px -= s.vertex[other, 0] - s.near[X, c]
-                py -= s.vertex[other, 1] - s.near[Y, c]
-            torus.sums[0] += half * np.sqrt((dx * dx + dy * dy) * (px * px + py * py))
-
-
-@helper
-def integrate_wall(grid, s, n, n_cells, n_corners, torus):
+def integrate_wall(s, n, n_cells, n_corners):
     """Area, length, wall sum, bounding neighbors and weakest window of a cage.
 
     Returns what :func:`trajcage.kernel.wall3d.integrate_wall` does.
     """
     s.clock[1] = 0
     _polish_corners(s, n_corners)
-    code = _arcs(grid, s, n_cells, n_corners, torus)
+    code = _arcs(s, n_cells, n_corners)
     if code != CLOSED:
         return code, 0.0, 0.0, 0.0, 0, 0.0, -1
     for t in range(n_cells):
         for f in range(3):
             a = s.cell[t, f]
-            into = a
-            if torus is not None:
-                into = np.uint32(home_of(torus, grid, s, a))
-            if s.patch[into, STAMP] != s.clock[0]:
+            if s.patch[a, STAMP] != s.clock[0]:
                 # a disk without any arc: an island, or hidden
                 x, y, r = s.near[X, a], s.near[Y, a], s.near[REACH, a]
-                touch(s, into, 0.0, 0.0, 0.0)
+                touch(s, a, 0.0, 0.0, 0.0)
                 if not covered(s, n, x, y, 0.0, 0.0, 0.0, 0.0, r, a, a):
-                    s.patch[into, TURN] = 2.0 * np.pi
+                    s.patch[a, TURN] = 2.0 * np.pi
     area = 0.0
     length = 0.0
     wall_sum = 0.0
@@ -198,9 +162,6 @@ def integrate_wall(grid, s, n, n_cells, n_corners, torus):
         area += (2.0 * power * arc - moment) / (4.0 * r)
         length += arc
         wall_sum += r * arc
-    if torus is not None:
-        _free_lines(s, n_cells, torus)
-        area = 0.5 * (torus.sums[0] - wall_sum)
     area = max(area, 0.0)
     held = held_fast(s, n_corners)
     if held:

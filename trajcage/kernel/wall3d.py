@@ -5,11 +5,6 @@ two spheres meet. On the sphere about x_j with radius R,
 x . n = (|x|^2 - g) / 2R, where g is the power of the particle, so that the
 divergence theorem gives the volume as sum (g A - int |x|^2 dA) / 6R, in which
 nothing cancels however small the cage.
-
-A region that wraps around the periodic box has no such sum. There the volume
-is put together from cones about the spheres' centers:
-3 V = sum over pairs of (distance x free area of their radical plane)
-- sum R A.
 """
 
 import numpy as np
@@ -33,7 +28,6 @@ from trajcage.kernel.patch3d import (
     window,
 )
 from trajcage.kernel.scratch import POWER, REACH, X, Y, Z
-from trajcage.kernel.torus import home_of
 
 __all__ = ["covered", "integrate_wall"]
 
@@ -109,53 +103,6 @@ def _foot(s, a, b):
 
 
 @helper
-def _swept(s, t, i, j, k, w, ex, ey, ez, height, q, n_cells):
-    """Twice the area about the foot that a turn about an edge sweeps out.
-
-    The turn goes from corner q (or from vertex t if q < 0) along the power
-    vertices to the last corner (or around to vertex t again). Vectors are
-    taken from the foot in the frame of each cell, as the cells of a torus
-    have frames of their own. Returns the area with the sign of the turn.
-    """
-    first, first_i, first_j, first_k = t, i, j, k
-    total = 0.0
-    ox, oy, oz = 0.0, 0.0, 0.0
-    fresh = q < 0
-    if q >= 0:
-        a = s.cell[t, i]
-        ox = s.corner[q, 0] - s.near[X, a] - height * ex
-        oy = s.corner[q, 1] - s.near[Y, a] - height * ey
-        oz = s.corner[q, 2] - s.near[Z, a] - height * ez
-    for _ in range(4 * n_cells):
-        a = s.cell[t, i]
-        vx = s.vertex[t, 0] - s.near[X, a] - height * ex
-        vy = s.vertex[t, 1] - s.near[Y, a] - height * ey
-        vz = s.vertex[t, 2] - s.near[Z, a] - height * ez
-        if not fresh:
-            total += (
-                ex * (oy * vz - oz * vy)
-                + ey * (oz * vx - ox * vz)
-                + ez * (ox * vy - oy * vx)
-            )
-            if q < 0 and t == first and i == first_i and j == first_j and k == first_k:
-                return total
-        fresh = False
-        ox, oy, oz = vx, vy, vz
-        if s.across[t, w] < 0:
-            end = -2 - s.across[t, w]
-            vx = s.corner[end, 0] - s.near[X, a] - height * ex
-            vy = s.corner[end, 1] - s.near[Y, a] - height * ey
-            vz = s.corner[end, 2] - s.near[Z, a] - height * ez
-            return total + (
-                ex * (oy * vz - oz * vy)
-                + ey * (oz * vx - ox * vz)
-                + ez * (ox * vy - oy * vx)
-            )
-        t, i, j, k, w = _step(s, t, i, j, k, w)
-    return total
-
-
-@helper
 def _covered_half_angle(s, ex, ey, ez, height, q, slot_a, slot_w):
     """Angle about the axis e between corner q and its third candidate."""
     t = s.mark[q, 0]
@@ -173,7 +120,7 @@ def _covered_half_angle(s, ex, ey, ez, height, q, slot_a, slot_w):
 
 
 @inlined
-def _arcs(grid, s, n_cells, n_corners, torus):
+def _arcs(s, n_cells, n_corners):
     """Walk every arc of the wall once and add it to its two spheres."""
     size2 = 0.0
     for q in range(n_corners):
@@ -209,14 +156,8 @@ def _arcs(grid, s, n_cells, n_corners, torus):
                 + ey * (cz * dx - cx * dz)
                 + ez * (cx * dy - cy * dx)
             )
-            # both ends in the frame of this cell
             x1, y1, z1 = s.corner[q, 0], s.corner[q, 1], s.corner[q, 2]
             x2, y2, z2 = s.corner[end, 0], s.corner[end, 1], s.corner[end, 2]
-            if torus is not None:
-                other = s.cell[s.mark[end, 0], end_i]
-                x2 += ax - s.near[X, other]
-                y2 += ay - s.near[Y, other]
-                z2 += az - s.near[Z, other]
             if sense < 0.0:
                 # from here on the arc runs counterclockwise about a -> b
                 x1, y1, z1, x2, y2, z2 = x2, y2, z2, x1, y1, z1
@@ -247,28 +188,10 @@ def _arcs(grid, s, n_cells, n_corners, torus):
                 angle += 2.0 * np.pi
             circle = (rho2, angle, sine, cosine, 0.09 * min(size2, ra * rb))
             # counterclockwise about a -> b is clockwise about b -> a
-            if torus is None:
-                add_arc(
-                    s, b, -ex, -ey, -ez, length - height, circle, x1, y1, z1, dx, dy, dz
-                )
-                add_arc(s, a, ex, ey, ez, height, circle, x2, y2, z2, -dx, -dy, -dz)
-            else:
-                c = np.uint32(home_of(torus, grid, s, b))
-                ox, oy, oz = s.near[X, c], s.near[Y, c], s.near[Z, c]
-                ox, oy, oz = ox - s.near[X, b], oy - s.near[Y, b], oz - s.near[Z, b]
-                add_arc(
-                    s, c, -ex, -ey, -ez, length - height, circle,
-                    x1 + ox, y1 + oy, z1 + oz, dx, dy, dz,
-                )  # fmt: skip
-                c = np.uint32(home_of(torus, grid, s, a))
-                ox, oy, oz = s.near[X, c] - ax, s.near[Y, c] - ay, s.near[Z, c] - az
-                add_arc(
-                    s, c, ex, ey, ez, height, circle,
-                    x2 + ox, y2 + oy, z2 + oz, -dx, -dy, -dz,
-                )  # fmt: skip
-                swept = _swept(s, t, i, j, k, w, ex, ey, ez, height, q, n_cells)
-                swept = swept if sense > 0.0 else -swept
-                torus.sums[0] += 0.5 * length * (swept - rho2 * angle)
+            add_arc(
+                s, b, -ex, -ey, -ez, length - height, circle, x1, y1, z1, dx, dy, dz
+            )
+            add_arc(s, a, ex, ey, ez, height, circle, x2, y2, z2, -dx, -dy, -dz)
     return CLOSED
 
 
@@ -282,26 +205,6 @@ def _ring_is_open(s, t, i, j, k, w, n_cells):
             # round once; or a corner, or a ring already seen from an earlier cell
             return other == first
         t, i, j, k, w = _step(s, t, i, j, k, w)
-    return False
-
-
-@helper
-def _ring_is_new(s, t, i, j, k, w, walked, n_cells):
-    """Tell whether all cells about an edge are in the region and mark the edge.
-
-    In a torus a ring can pass the same cell twice, so edges are marked one by
-    one instead of by their lowest cell.
-    """
-    first, first_i, first_j, first_k = t, i, j, k
-    if walked[t] & (1 << 4 * min(i, j) + max(i, j)):
-        return False
-    for _ in range(4 * n_cells):
-        walked[t] |= 1 << 4 * min(i, j) + max(i, j)
-        if s.across[t, w] < 0:
-            return False
-        t, i, j, k, w = _step(s, t, i, j, k, w)
-        if t == first and i == first_i and j == first_j and k == first_k:
-            return True
     return False
 
 
@@ -327,81 +230,62 @@ def covered(s, n, px, py, pz, ex, ey, ez, rho, a, b):
 
 
 @inlined
-def _circles(grid, s, n, n_cells, torus):
+def _circles(s, n, n_cells):
     """Add the full circles in which two spheres meet."""
-    if torus is not None:
-        for t in range(n_cells):
-            torus.walked[t] = 0
     for t in range(n_cells):
         for k in range(3):
             # an edge whose cells are all open: both its faces here lead on
-            if s.across[t, k] < (0 if torus is not None else t):
+            if s.across[t, k] < t:
                 continue
             for w in range(k + 1, 4):
-                if s.across[t, w] < (0 if torus is not None else t):
+                if s.across[t, w] < t:
                     continue
                 i = 0
                 while i == k or i == w:
                     i += 1
                 j = 6 - i - k - w
-                if torus is None:
-                    if not _ring_is_open(s, t, i, j, k, w, n_cells):
-                        continue
-                elif not _ring_is_new(s, t, i, j, k, w, torus.walked, n_cells):
+                if not _ring_is_open(s, t, i, j, k, w, n_cells):
                     continue
                 a, b = s.cell[t, i], s.cell[t, j]
                 ex, ey, ez, length, height, rho2 = _foot(s, a, b)
                 mx = s.near[X, a] + height * ex
                 my = s.near[Y, a] + height * ey
                 mz = s.near[Z, a] + height * ez
-                seen = rho2 > 0.0 and not covered(
+                if not rho2 > 0.0 or covered(
                     s, n, mx, my, mz, ex, ey, ez, np.sqrt(rho2), a, b
-                )
-                into_a, into_b = a, b
-                if torus is not None:
-                    into_a = np.uint32(home_of(torus, grid, s, a))
-                    into_b = np.uint32(home_of(torus, grid, s, b))
-                    swept = abs(
-                        _swept(s, t, i, j, k, w, ex, ey, ez, height, -1, n_cells)
-                    )
-                    hole = 2.0 * np.pi * rho2 if seen else 0.0
-                    torus.sums[0] += 0.5 * length * (swept - hole)
-                if not seen:
+                ):
                     continue
-                touch(s, into_a, mx, my, mz)
-                touch(s, into_b, mx, my, mz)
+                touch(s, a, mx, my, mz)
+                touch(s, b, mx, my, mz)
                 ra, rb = s.near[REACH, a], s.near[REACH, b]
-                s.patch[into_a, TURN] -= 2.0 * np.pi * (1.0 - height / ra)
-                s.patch[into_b, TURN] -= 2.0 * np.pi * (1.0 - (length - height) / rb)
+                s.patch[a, TURN] -= 2.0 * np.pi * (1.0 - height / ra)
+                s.patch[b, TURN] -= 2.0 * np.pi * (1.0 - (length - height) / rb)
                 half = np.pi * rho2
-                s.patch[into_a, AX] -= half * ex
-                s.patch[into_a, AY] -= half * ey
-                s.patch[into_a, AZ] -= half * ez
-                s.patch[into_b, AX] += half * ex
-                s.patch[into_b, AY] += half * ey
-                s.patch[into_b, AZ] += half * ez
+                s.patch[a, AX] -= half * ex
+                s.patch[a, AY] -= half * ey
+                s.patch[a, AZ] -= half * ez
+                s.patch[b, AX] += half * ex
+                s.patch[b, AY] += half * ey
+                s.patch[b, AZ] += half * ez
 
 
 @inlined
-def _islands(grid, s, n, n_cells, torus):
+def _islands(s, n, n_cells):
     """Add the spheres that meet no other: seen in full, or hidden."""
     for t in range(n_cells):
         for i in range(4):
             a = s.cell[t, i]
-            into = a
-            if torus is not None:
-                into = np.uint32(home_of(torus, grid, s, a))
-            if s.patch[into, STAMP] == s.clock[0]:
+            if s.patch[a, STAMP] == s.clock[0]:
                 continue
             x, y, z, r = s.near[X, a], s.near[Y, a], s.near[Z, a], s.near[REACH, a]
-            touch(s, into, x, y, z)
+            touch(s, a, x, y, z)
             if covered(s, n, x, y, z, 0.0, 0.0, 0.0, r, a, a):
                 # nothing of this sphere is seen
-                s.patch[into, ARCS] = -1.0
+                s.patch[a, ARCS] = -1.0
 
 
 @inlined
-def integrate_wall(grid, s, n, n_cells, n_corners, torus):
+def integrate_wall(s, n, n_cells, n_corners):
     """Volume, area, wall sum, bounding neighbors and weakest window of a cage.
 
     Returns
@@ -413,11 +297,11 @@ def integrate_wall(grid, s, n, n_cells, n_corners, torus):
     """
     s.clock[1] = 0
     polish_corners(s, n_corners)
-    code = _arcs(grid, s, n_cells, n_corners, torus)
+    code = _arcs(s, n_cells, n_corners)
     if code != CLOSED:
         return code, 0.0, 0.0, 0.0, 0, 0.0, -1
-    _circles(grid, s, n, n_cells, torus)
-    _islands(grid, s, n, n_cells, torus)
+    _circles(s, n, n_cells)
+    _islands(s, n, n_cells)
     volume = 0.0
     surface = 0.0
     wall_sum = 0.0
@@ -439,8 +323,6 @@ def integrate_wall(grid, s, n, n_cells, n_corners, torus):
         volume += (2.0 * power * area - moment) / (6.0 * r)
         surface += area
         wall_sum += r * area
-    if torus is not None:
-        volume = (torus.sums[0] - wall_sum) / 3.0
     volume = max(volume, 0.0)
     held = held_fast(s, n_corners)
     if held:
