@@ -167,6 +167,43 @@ def test_a_cut_shows_what_is_inside_particles(periodic):
     assert np.linalg.norm(edges, axis=1) == pytest.approx(box.lengths[:2])
 
 
+def test_the_slice_is_that_of_the_frame_chosen(results, tmp_path):
+    with trajcage.open_result(results["space"]) as result:
+        figures = draw_figures(result, ["slice"], frame=4)
+        expected = cut(np.asarray(result["position"][4]), result.radii, result.box(4))
+        with pytest.raises(UsageError, match=r"not hold frame 12.* frames 0 to 11$"):
+            draw_figures(result, frame=12)
+        with pytest.raises(UsageError, match="not among the figures chosen: regions"):
+            draw_figures(result, ["regions"], frame=4)
+    figure = figures.drawn["slice"].figure
+    assert figure.texts[0].get_text() == "Slice through frame 4"
+    for axes in figure.axes[:2]:
+        places = axes.collections[0].get_offsets()
+        assert places == pytest.approx(expected.centers / 1.3)
+    done = call("plot", results["plane"], "-o", tmp_path, "--frame", -1, code=2)
+    assert "does not hold frame -1; choose among frames 0 to 2" in done.stderr
+    page = tmp_path / "report.html"
+    call("report", results["plane"], "-o", page, "--frame", 7, code=2)
+    assert not page.exists()
+
+
+def test_frames_left_out_of_a_run_are_not_offered(tmp_path):
+    path = tmp_path / "every-third.h5"
+    trajcage.measure(
+        scenario.MONOLAYER,
+        output=path,
+        stop=7,
+        step=3,
+        skip=["time", "order", "rattlers"],
+        store_positions=True,
+    ).close()
+    with trajcage.open_result(path) as result:
+        title = draw_figures(result, ["slice"], frame=3).drawn["slice"].title
+        assert title == "Map of frame 3"
+        with pytest.raises(UsageError, match="frames 0 to 6 in steps of 3"):
+            draw_figures(result, ["slice"], frame=1)
+
+
 def test_colors_differ_for_every_eye():
     # Simulated protanopia, deuteranopia and tritanopia: Machado, Oliveira & Fernandes
     # 2009, IEEE Trans. Vis. Comput. Graph. 15, 1291, matrices from memory. Ten units

@@ -43,6 +43,12 @@ FIGURES = (
     help="Draw only this figure; may be repeated.",
 )
 @click.option(
+    "--frame",
+    type=int,
+    metavar="F",
+    help="Frame of the slice, as numbered in the trajectory from 0.  [default: the last]",
+)
+@click.option(
     "--format",
     "form",
     type=NearChoice(["png", "svg", "pdf"]),
@@ -53,7 +59,13 @@ FIGURES = (
 @click.option("--overwrite", is_flag=True, help="Replace figures that are there.")
 @verbosity_options
 def command(
-    *, result: Any, output: Path, names: tuple[str, ...], form: str, overwrite: bool
+    *,
+    result: Any,
+    output: Path,
+    names: tuple[str, ...],
+    frame: int | None,
+    form: str,
+    overwrite: bool,
 ) -> None:
     """Draw the figures of a result file.
 
@@ -63,7 +75,7 @@ def command(
 
     \b
       trajcage plot cages.h5 -o figures
-      trajcage plot cages.h5 -o figures --only slice --format svg --overwrite
+      trajcage plot cages.h5 -o figures --only slice --frame 12 --overwrite
     """
     from trajcage.errors import ResultFileError
     from trajcage.plots import write_figures
@@ -71,7 +83,7 @@ def command(
 
     with open_result(result) as opened:
         paths, figures = write_figures(
-            opened, output, names, form=form, overwrite=overwrite
+            opened, output, names, frame=frame, form=form, overwrite=overwrite
         )
     for path in paths.values():
         say(f"wrote {path}")

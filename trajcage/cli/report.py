@@ -20,9 +20,15 @@ __all__ = ["command"]
     required=True,
     help="HTML file to write.",
 )
+@click.option(
+    "--frame",
+    type=int,
+    metavar="F",
+    help="Frame of the slice, as numbered in the trajectory from 0.  [default: the last]",
+)
 @click.option("--overwrite", is_flag=True, help="Replace the page if it exists.")
 @verbosity_options
-def command(*, result: Any, output: Path, overwrite: bool) -> None:
+def command(*, result: Any, output: Path, frame: int | None, overwrite: bool) -> None:
     """Write a result file as one HTML page: warnings, numbers, figures, options.
 
     The page holds all it shows and loads nothing; open it in any browser.
@@ -34,7 +40,7 @@ def command(*, result: Any, output: Path, overwrite: bool) -> None:
     from trajcage.store import open_result
 
     with open_result(result) as opened:
-        figures = write_report(opened, output, overwrite=overwrite)
+        figures = write_report(opened, output, frame=frame, overwrite=overwrite)
     say(f"wrote {output} with {len(figures.drawn)} figures")
     for name, reason in figures.missing.items():
         say(f"left out {name}: {reason}")

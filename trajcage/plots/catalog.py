@@ -49,7 +49,9 @@ class Figures:
     missing: dict[str, str]
 
 
-def draw_figures(result: Result, names: Iterable[str] = ()) -> Figures:
+def draw_figures(
+    result: Result, names: Iterable[str] = (), *, frame: int | None = None
+) -> Figures:
     """Draw figures of a result file; those without data are left out with a reason.
 
     Parameters
@@ -58,11 +60,13 @@ def draw_figures(result: Result, names: Iterable[str] = ()) -> Figures:
         An open result file.
     names : iterable of str
         Of :data:`FIGURES`; all unless given.
+    frame : int, optional
+        Frame of the slice, as numbered in the trajectory; the last one unless given.
 
     Raises
     ------
     UsageError
-        If a figure is unknown.
+        If a figure or the frame is unknown, or no slice of that frame is wanted.
     ResultFileError
         If the file has no summary yet or is damaged.
     """
@@ -73,7 +77,12 @@ def draw_figures(result: Result, names: Iterable[str] = ()) -> Figures:
                 f"there is no figure {name!r}{near_miss(name, FIGURES)}; choose among "
                 f"{', '.join(FIGURES)}"
             )
-    facts = Facts(result)
+    if frame is not None and "slice" not in chosen:
+        raise UsageError(
+            f"frame {frame} is that of the slice, which is not among the figures chosen: "
+            f"{', '.join(chosen)}"
+        )
+    facts = Facts(result, frame)
     drawn: dict[str, Drawing] = {}
     missing: dict[str, str] = {}
     with styled():

@@ -4,6 +4,7 @@ from typing import Any
 
 import numpy as np
 from matplotlib.axes import Axes
+from matplotlib.ticker import MaxNLocator
 from numpy.typing import NDArray
 
 from trajcage.plots.facts import Facts, number_of
@@ -36,17 +37,20 @@ def regions(facts: Facts) -> Drawing | Missing:
     if not any(np.isfinite(values).any() for values in fractions.values()):
         return Missing("the region of every particle is unknown on every frame")
     needs = facts.series("glass_needs_unbroken")
+    left_out = facts.summary["observables"]["glass_fraction"]["n_missing"]
     drawing, (axes,) = new_figure(
         "Regions in time",
         facts.caption(
             "Shares of the particles of known region on each frame; legend: mean over "
-            "frames with blocking error, shaded.",
+            "frames with blocking error, shaded"
+            + (f"; {left_out} frames left out, see below." if left_out else "."),
             f"Left out, region unknown: {int(unknown.sum())} of "
             f"{facts.n_particles * facts.n_frames} over all frames.",
             "Crystal: solid by bond order; glass: else in a closed cage"
             + (
                 " that has not broken within the mobility window; fluid: the rest. While "
-                "the record is shorter than that window, too many count as glass."
+                "that window is not yet full, too many count as glass: means of glass and "
+                "fluid leave these frames out."
                 if needs.all()
                 else "; fluid: the rest. No cage breaking was known."
             ),
@@ -71,7 +75,7 @@ def regions(facts: Facts) -> Drawing | Missing:
         text = "mobility window\nnot yet full"
         axes.axvspan(facts.times[0], full, color="#eeeeee", lw=0, zorder=0, label=text)
     axes.set_ylim(-0.03, 1.03)
-    axes.set_xlabel(facts.time_label)
+    axes.set_xlabel(facts.time_label())
     axes.set_ylabel("share of particles")
     legend(axes)
     return drawing
@@ -130,7 +134,7 @@ def survival(facts: Facts) -> Drawing | Missing:
     axes.axhline(0.5, color=FADED, lw=0.8, ls=":")
     axes.set_ylim(-0.03, 1.03)
     axes.set_xlim(left=0.0)
-    axes.set_xlabel(f"age of the cage, {facts.time_label}")
+    axes.set_xlabel(facts.time_label("age of the cage"))
     axes.set_ylabel("probability to be whole")
     legend(axes)
     return drawing
@@ -212,12 +216,13 @@ def correlations(facts: Facts) -> Drawing | Missing:
     panels[5].plot(lag, origins, "o-", color=INK)
     panels[5].set_ylabel("time origins")
     panels[5].set_ylim(bottom=0.0)
+    panels[5].yaxis.set_major_locator(MaxNLocator(integer=True, min_n_ticks=1))
     for k in (0, 2):
         panels[k].set_ylim(-0.05, 1.05)
     for axes in panels[4:]:
         axes.set_xscale("log")
         log_ticks(axes.xaxis, lag[0], lag[-1])
-        axes.set_xlabel(f"lag, {facts.time_label}")
+        axes.set_xlabel(facts.time_label("lag"))
     return drawing
 
 

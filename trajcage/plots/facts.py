@@ -6,7 +6,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from trajcage.errors import ResultFileError
+from trajcage.errors import ResultFileError, UsageError
 from trajcage.plots.style import Missing
 from trajcage.store import Result
 from trajcage.wording import with_error
@@ -23,14 +23,19 @@ class Facts:
     ----------
     result : Result
         An open result file.
+    frame : int, optional
+        The frame of what shows one alone, as numbered in the trajectory; the last one
+        unless given.
 
     Raises
     ------
     ResultFileError
         If the file has no summary yet.
+    UsageError
+        If there is no such frame.
     """
 
-    def __init__(self, result: Result) -> None:
+    def __init__(self, result: Result, frame: int | None = None) -> None:
         self.result = result
         self.summary: dict[str, Any] = result.summary
         if not self.summary:
@@ -46,6 +51,27 @@ class Facts:
         self.equal_radii = bool(self.summary["equal_radii"])
         self.time_unit = str(self.parameters["time_unit"])
         self.volume = "volume" if self.dimensions == 3 else "area"
+        self.row = self.n_frames - 1 if frame is None else self._row(frame)
+
+    def _row(self, frame: int) -> int:
+        """Find a frame of the trajectory among those measured."""
+        held = self.result.source_frames[: self.n_frames]
+        found = np.flatnonzero(held == frame)
+        if len(found) == 0:
+            steps = np.unique(np.diff(held))
+            told = (
+                f"frames {held[0]} to {held[-1]}"
+                if len(held) > 1
+                else f"frame {held[0]}"
+            )
+            if len(steps) > 1:
+                told += f", {len(held)} in all"
+            elif len(steps) == 1 and steps[0] > 1:
+                told += f" in steps of {steps[0]}"
+            raise UsageError(
+                f"{self.result.path} does not hold frame {frame}; choose among {told}"
+            )
+        return int(found[0])
 
     @property
     def radii(self) -> NDArray[np.float64]:
@@ -119,10 +145,14 @@ class Facts:
         return " ".join([head, *(s for s in sentences if s)])
 
     @property
-    def time_label(self) -> str:
-        """Label of an axis of time."""
+    def unit_of_time(self) -> str:
+        """The unit behind a number, nothing if the input does not tell it."""
+        return "" if self.time_unit == "time" else f" {self.time_unit}"
+
+    def time_label(self, what: str = "time") -> str:
+        """Label an axis of time."""
         unit = self.time_unit.replace("$", r"\$")
-        return "time (unit of the input)" if unit == "time" else f"time ({unit})"
+        return f"{what} (in the input's unit)" if unit == "time" else f"{what} ({unit})"
 
 
 def number_of(value: float | None) -> float:

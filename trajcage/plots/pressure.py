@@ -2,6 +2,7 @@
 
 import math
 from functools import lru_cache
+from itertools import pairwise
 
 import numpy as np
 from matplotlib.axes import Axes
@@ -33,6 +34,8 @@ from trajcage.wording import with_error
 
 __all__ = ["lattices", "pressure"]
 
+# keeps words readable where lines pass
+_BEHIND = {"facecolor": "white", "edgecolor": "none", "alpha": 0.85, "pad": 0.6}
 _DASHES = ("-", "--", ":", "-.", (0, (6, 2, 1, 2, 1, 2)))
 
 
@@ -110,7 +113,7 @@ def lattices(facts: Facts) -> Drawing | Missing:
     axes.set_xlim(0.12, max(LATTICES[n].close_packing.value for n in names) + 0.01)
     axes.set_xlabel("packing fraction")
     axes.set_ylabel(f"free {facts.volume} $v_f$ / $D^{d}$")
-    _mark_phases(axes, facts)
+    _mark_phases(axes, facts, top=True)
     legend(axes)
     return drawing
 
@@ -181,7 +184,7 @@ def pressure(facts: Facts) -> Drawing | Missing:
     axes.set_ylim(0.0, 1.25 * max(tops))
     axes.set_xlabel("packing fraction")
     axes.set_ylabel("$Z = PV / (N k T)$")
-    _mark_phases(axes, facts)
+    _mark_phases(axes, facts, top=False)
     axes.legend(
         loc="upper center",
         bbox_to_anchor=(0.5, -0.17),
@@ -216,6 +219,7 @@ def _deviations(
             xytext=(0, 7),
             textcoords="offset points",
             fontsize=7,
+            bbox=_BEHIND,
         )
     if not rows:
         axes.text(
@@ -240,29 +244,35 @@ def _equations(facts: Facts) -> list[EquationOfState]:
     return [mixture(facts.radii)]
 
 
-def _mark_phases(axes: Axes, facts: Facts) -> None:
-    """Mark published packing fractions; names run along their lines."""
+def _mark_phases(axes: Axes, facts: Facts, *, top: bool) -> None:
+    """Mark published packing fractions; names run along their lines at one end."""
     low, high = axes.get_xlim()
     place = blended_transform_factory(axes.transData, axes.transAxes)
-    last, level = -math.inf, 0
-    for mark in phase_marks(facts.dimensions):
-        phi = mark.packing_fraction
-        if not low < phi < high:
-            continue
+    marks = [
+        m for m in phase_marks(facts.dimensions) if low < m.packing_fraction < high
+    ]
+    places = [mark.packing_fraction for mark in marks]
+    tight = [b - a < 0.045 * (high - low) for a, b in pairwise(places)]
+    level = 0
+    for k, (mark, phi) in enumerate(zip(marks, places, strict=True)):
         axes.axvline(phi, color=FADED, lw=0.8, ls=(0, (2, 2)), zorder=1)
-        # neighbors too close to read side by side write at different heights
-        level = level + 1 if phi - last < 0.045 * (high - low) else 0
-        last = phi
-        axes.text(
-            phi,
-            0.01 + 0.3 * level,
-            f" {mark.name}",
-            transform=place,
+        # Of neighbors too close to read side by side, the last writes on its other
+        # side, and those between further along their lines.
+        before, after = k > 0 and tight[k - 1], k < len(tight) and tight[k]
+        level = level + 1 if before and after else 0
+        reach = 0.015 + 0.3 * level
+        axes.annotate(
+            mark.name,
+            (phi, 1.0 - reach if top else reach),
+            xycoords=place,
+            xytext=(2.5 if before and not after else -2.5, 0.0),
+            textcoords="offset points",
             rotation=90,
             fontsize=6.5,
-            color="#666666",
-            ha="right",
-            va="bottom",
+            color="#555555",
+            ha="left" if before and not after else "right",
+            va="top" if top else "bottom",
+            bbox=_BEHIND,
         )
 
 

@@ -19,7 +19,11 @@ _DOTS = 140.0  # an inch, of those
 
 
 def write_report(
-    result: Result, file: str | Path, *, overwrite: bool = False
+    result: Result,
+    file: str | Path,
+    *,
+    frame: int | None = None,
+    overwrite: bool = False,
 ) -> Figures:
     """Write a result file as one self-contained HTML page.
 
@@ -29,6 +33,8 @@ def write_report(
         An open result file.
     file : path
         Where to.
+    frame : int, optional
+        Frame of the slice, as numbered in the trajectory; the last one unless given.
     overwrite : bool
         Whether to replace a file that is there.
 
@@ -41,13 +47,15 @@ def write_report(
     ------
     ResultFileError
         If the file is in the way, cannot be written, or the result cannot be used.
+    UsageError
+        If there is no such frame.
     """
     target = Path(file)
     if target.exists() and not overwrite:
         raise ResultFileError(
             f"{target} exists; replace it with --overwrite, or choose another name"
         )
-    figures = draw_figures(result)
+    figures = draw_figures(result, frame=frame)
     try:
         target.write_text(report_page(result, figures), encoding="utf-8")
     except OSError as error:

@@ -41,6 +41,7 @@ def write_figures(
     directory: str | Path,
     names: Iterable[str] = (),
     *,
+    frame: int | None = None,
     form: str = "png",
     overwrite: bool = False,
 ) -> tuple[dict[str, Path], Figures]:
@@ -54,6 +55,8 @@ def write_figures(
         Where to; made if it is not there.
     names : iterable of str
         Of :data:`~trajcage.plots.FIGURES`; all unless given.
+    frame : int, optional
+        Frame of the slice, as numbered in the trajectory; the last one unless given.
     form : {"png", "svg", "pdf"}
         File format.
     overwrite : bool
@@ -69,7 +72,7 @@ def write_figures(
     Raises
     ------
     UsageError
-        If a figure or the format is unknown.
+        If a figure, the frame or the format is unknown.
     ResultFileError
         If a file is in the way, cannot be written, or the result cannot be used.
     """
@@ -77,7 +80,7 @@ def write_figures(
         raise UsageError(
             f"there is no format {form!r}; choose among {', '.join(FORMATS)}"
         )
-    figures = draw_figures(result, names)
+    figures = draw_figures(result, names, frame=frame)
     target = Path(directory)
     paths = {name: target / f"{name}.{form}" for name in figures.drawn}
     for path in paths.values():

@@ -18,6 +18,7 @@ from trajcage.plots.style import (
     REGION_COLORS,
     Drawing,
     Missing,
+    log_ticks,
     new_figure,
 )
 
@@ -105,13 +106,13 @@ def cut(positions: NDArray[np.float64], radii: NDArray[np.float64], box: Box) ->
 
 
 def slices(facts: Facts) -> Drawing | Missing:
-    """Cut of the last frame, colored by region and by free volume."""
+    """Cut of one frame, colored by region and by free volume."""
     result, d = facts.result, facts.dimensions
     if "position" not in result:
         return Missing(
             "the file holds no positions; measure again with --store-positions"
         )
-    frame = facts.n_frames - 1
+    frame = facts.row
     positions = np.asarray(result["position"][frame], dtype=np.float64)
     radii = result.radii if result.radii.ndim == 1 else result.radii[frame]
     there = np.asarray(np.isfinite(positions).all(axis=1), dtype=np.bool_)
@@ -136,9 +137,9 @@ def slices(facts: Facts) -> Drawing | Missing:
     width = 8.6 if has_regions else 5.6
     tall = min(max((width / columns - 0.75) * span[1] / span[0], 1.2), 8.0)
     drawing, panels = new_figure(
-        "The sample at the end of the record",
+        f"{'Slice through' if d == 3 else 'Map of'} frame {result.source_frames[frame]}",
         facts.caption(
-            f"Frame {result.source_frames[frame]}, time {result.times[frame]:.6g}, "
+            f"Time {result.times[frame]:.6g}{facts.unit_of_time}, "
             + (f"cut by {where}" if d == 3 else "all particles")
             + f": {len(seen)} particles as disks true to scale, periodic images at the "
             "edges.",
@@ -151,7 +152,7 @@ def slices(facts: Facts) -> Drawing | Missing:
             else "",
         ),
         columns=columns,
-        size=(width, tall + 1.55),
+        size=(width, tall + 1.42),
     )
     if has_regions:
         _draw_regions(panels[0], facts, found, frame, -0.48 / tall)
@@ -160,19 +161,22 @@ def slices(facts: Facts) -> Drawing | Missing:
     closed = (status == CageStatus.CLOSED) & (values > 0.0)
     if closed.any():
         low, high = np.percentile(values[closed], (2.0, 98.0))
-        norm = LogNorm(low, max(high, 1.001 * low))
+        high = max(high, 1.001 * low)
     else:
-        norm = LogNorm(0.1, 1.0)
+        low, high = 0.1, 1.0
     disks = _disks(panels[-1], found, facts.diameter)
-    disks.set(cmap=colormaps[MAP].with_extremes(bad=_UNMEASURED), norm=norm)
+    disks.set(
+        cmap=colormaps[MAP].with_extremes(bad=_UNMEASURED), norm=LogNorm(low, high)
+    )
     disks.set_array(np.ma.masked_array(values, ~closed))
-    drawing.figure.colorbar(
+    bar = drawing.figure.colorbar(
         disks,
         cax=panels[-1].inset_axes((0.0, -0.68 / tall, 1.0, 0.12 / tall)),
         extend="both",
         label=f"free {facts.volume} $v_f$ / $D^{d}$",
         orientation="horizontal",
     )
+    log_ticks(bar.ax.xaxis, low, high)
     return drawing
 
 
@@ -234,7 +238,7 @@ def _disks(axes: Axes, found: Cut, diameter: float) -> EllipseCollection:
     room = 0.01 * (high - low).max()
     axes.set_xlim(low[0] - room, high[0] + room)
     axes.set_ylim(low[1] - room, high[1] + room)
-    axes.set_aspect("equal")
+    axes.set_aspect("equal", anchor="N")
     axes.grid(visible=False)
     axes.set_xlabel("along the first edge / $D$")
     axes.set_ylabel("across / $D$")

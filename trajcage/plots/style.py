@@ -189,5 +189,6 @@ def log_ticks(axis: Axis, low: float, high: float) -> None:
     axis.set_minor_formatter(NullFormatter())
     if not 0.0 < low <= high < 50.0 * low:
         return
-    axis.set_major_locator(LogLocator(10.0, subs=(1.0, 2.0, 5.0)))
+    subs = (1.0, 3.0) if high > 20.0 * low else (1.0, 2.0, 5.0)
+    axis.set_major_locator(LogLocator(10.0, subs=subs))
     axis.set_major_formatter(FuncFormatter(lambda value, _: f"{value:g}"))
