@@ -10,6 +10,10 @@ answer is explained if
 - ``open``, ``closed``: both measurements agree, a closed cage has a positive volume and
   obeys the isoperimetric inequality, and its patches add up to its wall.
 
+Where a tie is exact but for rounding, either side of it is an answer, and the two
+measurements may differ: a window of opening ratio 1 (counted as ``window ties``), or
+particles that touch, one of which may hold the other in no room at all (``touching``).
+
 Run: python scripts/stress_kernel.py [configurations] [seed]
 """
 
@@ -33,6 +37,8 @@ Floats = NDArray[np.float64]
 SAME_VOLUME = 1e-6
 #: Rounding of distances, in units of the box: what a thinner cage is, nobody can tell.
 ROUNDING = 1e-15
+#: A window this close to the opening ratio 1 is a tie.
+WINDOW_TIE = 1e-9
 
 
 class Configuration(NamedTuple):
@@ -206,8 +212,8 @@ def configuration(seed: int, number: int, d: int) -> tuple[str, Configuration]:
     return name, made
 
 
-def overlapping(made: Configuration) -> NDArray[np.bool_]:
-    """Particles whose center lies in the exclusion sphere of another, (n,) bool."""
+def smallest_gaps(made: Configuration) -> Floats:
+    """Distance of each center from the exclusion spheres of the others, (n,)."""
     width = 2.0 * made.radii.max()
     heights = 1.0 / np.linalg.norm(np.linalg.inv(made.vectors), axis=0)
     turns = np.where(made.periodic, np.ceil(width / heights + 1.0), 0).astype(int)
@@ -218,7 +224,7 @@ def overlapping(made: Configuration) -> NDArray[np.bool_]:
         np.linalg.norm(apart, axis=-1).min(axis=-1) - made.radii[:, None] - made.radii
     )
     np.fill_diagonal(gaps, np.inf)
-    return np.asarray(gaps.min(axis=1) < 0.0)
+    return np.asarray(gaps.min(axis=1))
 
 
 def edge_room(made: Configuration, reach: float) -> Floats:
@@ -252,7 +258,7 @@ def examine(made: Configuration, seed: int) -> tuple[Counter[str], list[Finding]
     second = measure_cages(*_arguments(other), reach=reach)
     back = np.empty_like(order)
     back[order] = np.arange(len(order))
-    overlaps = overlapping(made)
+    gaps = smallest_gaps(made)
     room = edge_room(made, reach)
     counts: Counter[str] = Counter()
     findings = []
@@ -263,9 +269,11 @@ def examine(made: Configuration, seed: int) -> tuple[Counter[str], list[Finding]
         counts[status.name.lower()] += 1
         complaint = ""
         volume, surface = first.free_volume[i], first.free_surface[i]
+        windows = first.weakest_window[i], second.weakest_window[back[i]]
+        touching = abs(gaps[i]) < 10 * rounding
         if status is CageStatus.INVALID:
             complaint = "invalid"
-        elif (status is CageStatus.OVERLAP) != overlaps[i]:
+        elif not touching and (status is CageStatus.OVERLAP) != (gaps[i] < 0.0):
             complaint = f"overlap not as found ({status.name})"
         elif status is CageStatus.BORDER and room[i] > 10 * rounding:
             complaint = "border far from the edges"
@@ -296,6 +304,13 @@ def examine(made: Configuration, seed: int) -> tuple[Counter[str], list[Finding]
                 complaint = "patches are not the wall"
             elif len(patches) != first.bounding_neighbors[i]:
                 complaint = "patches are not the bounding neighbors"
+        if complaint == "two volumes" or (complaint and status is not twin):
+            if np.nanmax([*windows, 0.0]) > 1 - WINDOW_TIE:
+                counts["window ties"] += 1
+                continue
+            if touching:
+                counts["touching"] += 1
+                continue
         if complaint:
             findings.append(
                 Finding(
@@ -342,6 +357,8 @@ def main() -> None:
         "configurations",
         *(status.name.lower() for status in CageStatus),
         "thin",
+        "window ties",
+        "touching",
     ]
     print(f"{'':14}" + "".join(f"{column:>15}" for column in columns) + "  ms each")
     for name, row in counts.items():
