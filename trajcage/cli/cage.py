@@ -28,15 +28,16 @@ __all__ = ["command"]
     "--output",
     type=click.Path(path_type=Path, dir_okay=False),
     required=True,
-    help="File to write: .html to turn it around, .ply for a mesh, .png, .svg or .pdf "
-    "for a picture.",
+    help="File to write: .html to turn it around (disks: to zoom), .ply for a mesh "
+    "(spheres only), .png, .svg or .pdf for a picture.",
 )
 @click.option(
     "--fineness",
     type=float,
     default=12.0,
     show_default=True,
-    help="How much smaller than the cage its triangles are.",
+    help="How much smaller than the cage of a sphere its triangles are; the arcs of "
+    "that of a disk are exact.",
 )
 @click.option(
     "--overlap-tolerance",
@@ -66,14 +67,19 @@ def command(
       trajcage cage cages.h5 --particle 17 --frame 3 -o cage.html
     """
     from trajcage.analysis.cage_mesh import mesh_cage
+    from trajcage.analysis.cage_outline import outline_cage
     from trajcage.plots import write_cage
     from trajcage.run.single_frame import single_frame
 
     found, options = single_frame(topology, trajectory, frame=frame, **given)
-    mesh = mesh_cage(found, particle, options, fineness=fineness)
+    cage = (
+        outline_cage(found, particle, options)
+        if found.dimensions == 2
+        else mesh_cage(found, particle, options, fineness=fineness)
+    )
     source = f"{(trajectory or topology).name}, frame {frame}, time {found.time:.6g}"
-    write_cage(mesh, output, source, overwrite=overwrite)
+    write_cage(cage, output, source, overwrite=overwrite)
     say(
-        f"wrote {output}: free volume {mesh.free_volume:.6g}, "
-        f"{len(mesh.neighbors)} bounding neighbors"
+        f"wrote {output}: free volume {cage.free_volume:.6g}, "
+        f"{len(cage.neighbors)} bounding neighbors"
     )

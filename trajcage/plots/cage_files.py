@@ -1,17 +1,16 @@
-"""A cage as a file: a page to turn it around, a mesh, or a picture."""
+"""A cage as a file: a page, a mesh, or a picture."""
 
-import json
 from pathlib import Path
 
 import numpy as np
 from matplotlib.colors import to_rgb
-from numpy.typing import NDArray
 
 from trajcage.analysis.cage_mesh import CageMesh
+from trajcage.analysis.cage_outline import CageOutline
 from trajcage.errors import ResultFileError, UsageError
-from trajcage.plots.cage_picture import cage_drawing, cage_facts
-from trajcage.plots.cage_script import CONTROLS, SCRIPT
-from trajcage.plots.page import bullets, page, section
+from trajcage.plots.cage_page import cage_page
+from trajcage.plots.cage_picture import cage_drawing
+from trajcage.plots.cage_plane import plane_drawing, plane_page
 from trajcage.plots.saving import FORMATS, figure_bytes
 from trajcage.plots.style import PALETTE, styled
 
@@ -19,17 +18,21 @@ __all__ = ["write_cage"]
 
 
 def write_cage(
-    mesh: CageMesh, file: str | Path, source: str, *, overwrite: bool = False
+    cage: CageMesh | CageOutline,
+    file: str | Path,
+    source: str,
+    *,
+    overwrite: bool = False,
 ) -> None:
     """Write a cage in the form that the name of the file asks for.
 
     Parameters
     ----------
-    mesh : CageMesh
-        Its wall.
+    cage : CageMesh or CageOutline
+        Its wall, in space or in the plane.
     file : path
         ``.html`` for a page that needs no network, ``.ply`` for a mesh with colors in
-        units of the input, ``.png``, ``.svg`` or ``.pdf`` for a picture.
+        units of the input (in space only), ``.png``, ``.svg`` or ``.pdf`` for a picture.
     source : str
         File and frame of the particle, as told to the reader.
     overwrite : bool
@@ -38,7 +41,7 @@ def write_cage(
     Raises
     ------
     UsageError
-        If the name has another ending.
+        If the name has another ending, or asks for a mesh of a cage in the plane.
     ResultFileError
         If the file is in the way or cannot be written.
     """
@@ -53,40 +56,30 @@ def write_cage(
         raise ResultFileError(
             f"{target} exists; replace it with --overwrite, or choose another name"
         )
-    if form == "html":
-        data = _page(mesh, source).encode()
-    elif form == "ply":
-        data = _ply(mesh, source).encode()
-    else:
-        with styled():
-            data = figure_bytes(cage_drawing(mesh, source), form)
+    if form == "ply" and isinstance(cage, CageOutline):
+        raise UsageError(
+            "a .ply file holds a surface in space, and these particles lie in a plane; "
+            f"choose .html, .{', .'.join(FORMATS)}"
+        )
+    data = _contents(cage, form, source)
     try:
         target.write_bytes(data)
     except OSError as error:
         raise ResultFileError(f"cannot write {target}: {error.strerror}") from error
 
 
-def _page(mesh: CageMesh, source: str) -> str:
-    d = 2.0 * mesh.radius
-    data = {
-        "vertices": _rounded(mesh.vertices / d),
-        "triangles": mesh.triangles.ravel().tolist(),
-        "patch": mesh.patch.tolist(),
-        "centers": _rounded(mesh.vectors / d),
-        "radii": _rounded(mesh.radii / d),
-        "ids": mesh.neighbors.tolist(),
-        "window": list(mesh.window),
-        "corner": _rounded(mesh.window_corner / d),
-        "colors": [[round(255 * c) for c in to_rgb(color)] for color in PALETTE],
-    }
-    script = f"const cage = {json.dumps(data, separators=(',', ':'))};\n{SCRIPT}"
-    facts = section("What is seen", bullets(cage_facts(mesh)))
-    title = f"Cage of particle {mesh.particle_id}"
-    return page(title, source, [CONTROLS, facts], script=script)
-
-
-def _rounded(values: NDArray[np.float64]) -> list[float]:
-    return [float(f"{x:.7g}") for x in values.ravel().tolist()]
+def _contents(cage: CageMesh | CageOutline, form: str, source: str) -> bytes:
+    if isinstance(cage, CageOutline):
+        if form == "html":
+            return plane_page(cage, source).encode()
+        with styled():
+            return figure_bytes(plane_drawing(cage, source), form)
+    if form == "html":
+        return cage_page(cage, source).encode()
+    if form == "ply":
+        return _ply(cage, source).encode()
+    with styled():
+        return figure_bytes(cage_drawing(cage, source), form)
 
 
 def _ply(mesh: CageMesh, source: str) -> str:

@@ -7,30 +7,41 @@ from matplotlib.colors import to_rgb
 from numpy.typing import NDArray
 
 from trajcage.analysis.cage_mesh import CageMesh
+from trajcage.analysis.cage_outline import CageOutline
 from trajcage.plots.style import INK, PALETTE, Drawing, new_figure, settle
 from trajcage.wording import listed
 
-__all__ = ["cage_drawing", "cage_facts"]
+__all__ = ["WINDOW", "cage_drawing", "cage_facts"]
 
 # Seen from a little above and to the side, so that lattice cages do not hide depth.
 _TURN, _TILT = np.radians(32.0), np.radians(24.0)
 _LIGHT = np.array([-0.4, 0.5, 0.77])
-_WINDOW = PALETTE[2]
+#: Color of the weakest window.
+WINDOW = PALETTE[2]
 
 
-def cage_facts(mesh: CageMesh) -> list[str]:
+def cage_facts(cage: CageMesh | CageOutline) -> list[str]:
     """Say what is known of a cage, lengths in diameters of its particle."""
-    d = 2.0 * mesh.radius
-    volume = f"Free volume {mesh.free_volume / d**3:.6g} D^3"
-    surface = f"free surface {mesh.free_surface / d**2:.6g} D^2"
-    neighbors = ", ".join(str(i) for i in mesh.neighbors)
-    window = listed([str(mesh.neighbors[k]) for k in mesh.window])
-    share = mesh.volume / mesh.free_volume
+    d = 2.0 * cage.radius
+    unit = f"D = {d:.6g} in the unit of the input, the diameter of the particle"
+    window = listed([str(cage.neighbors[k]) for k in cage.window])
+    ids = ", ".join(str(i) for i in cage.neighbors)
+    facts = [
+        f"Bounding neighbors: {len(cage.neighbors)} (ids {ids})",
+        f"Weakest window: opening ratio {cage.weakest_window:.6g}, of {window}",
+    ]
+    if isinstance(cage, CageOutline):
+        size = f"Free area {cage.free_volume / d**2:.6g} D²"
+        return [
+            f"{size}, free perimeter {cage.free_surface / d:.6g} D; {unit}",
+            *facts,
+        ]
+    size = f"Free volume {cage.free_volume / d**3:.6g} D³"
+    share = cage.volume / cage.free_volume
     return [
-        f"{volume}, {surface}; D = {d:.6g}, the diameter of the particle",
-        f"Bounding neighbors: {len(mesh.neighbors)} (ids {neighbors})",
-        f"Weakest window: opening ratio {mesh.weakest_window:.6g}, of {window}",
-        f"{len(mesh.triangles)} triangles hold {share:.6f} of the free volume",
+        f"{size}, free surface {cage.free_surface / d**2:.6g} D²; {unit}",
+        *facts,
+        f"{len(cage.triangles)} triangles hold {share:.6f} of the free volume",
     ]
 
 
@@ -64,9 +75,9 @@ def cage_drawing(mesh: CageMesh, source: str) -> Drawing:
     half = 1.15 * float(np.abs(vertices[:, :2]).max())
     if mesh.window:
         ring = centers[[*mesh.window, mesh.window[0]]]
-        among.plot(ring[:, 0], ring[:, 1], color=_WINDOW, lw=2.0, zorder=4)
+        among.plot(ring[:, 0], ring[:, 1], color=WINDOW, lw=2.0, zorder=4)
     behind = turn @ mesh.window_corner / d
-    enlarged.plot(behind[0], behind[1], "o", color=_WINDOW, ms=6, zorder=4)
+    enlarged.plot(behind[0], behind[1], "o", color=WINDOW, ms=6, zorder=4)
     for axes, extent in ((among, reach), (enlarged, half)):
         axes.set_xlim(-extent, extent)
         axes.set_ylim(-extent, extent)
