@@ -1,8 +1,8 @@
 """The curved wall of one cage as triangles.
 
-On the exclusion sphere of each bounding neighbor the other exclusion spheres leave
-free what lies beyond their circles of intersection. That is triangulated by halving
-the faces of an icosahedron where something is left, and cutting them at the circles.
+Its patches lie on the exclusion spheres of the bounding neighbors and share the points
+on the arcs where they meet, so that the triangles enclose a volume. Flat triangles lie
+below a sphere; points within a patch are raised by that depth in the mean.
 """
 
 from dataclasses import dataclass
@@ -14,7 +14,7 @@ from scipy.sparse.csgraph import connected_components
 from scipy.spatial import cKDTree
 
 from trajcage.analysis.cages import CageOptions, default_overlap_tolerance
-from trajcage.analysis.sphere_patches import exposed_triangles
+from trajcage.analysis.sphere_patches import Arc, Sphere, free_arcs, merged
 from trajcage.errors import UsageError
 from trajcage.kernel import measure_cages
 from trajcage.kernel.cages import Wall, Windows
@@ -23,6 +23,7 @@ from trajcage.model import CageStatus, Frame
 __all__ = ["CageMesh", "mesh_cage"]
 
 _LARGEST_DEVIATION = 0.05  # of area or volume: beyond it the mesh is not the cage
+_MOST_ROUNDS = 12  # of dividing arcs that come close to others
 
 _Points = NDArray[np.float64]
 
@@ -101,7 +102,8 @@ def mesh_cage(
     options : CageOptions, optional
         As for :func:`~trajcage.analysis.cages.frame_cages`.
     fineness : float
-        Triangles are this much smaller than the cube root of the free volume.
+        Triangles are this much smaller than the cube root of the free volume and than
+        any exclusion sphere.
 
     Returns
     -------
@@ -154,23 +156,16 @@ def mesh_cage(
     assert cage.wall is not None
     assert cage.windows is not None
     corners = cage.windows.corners
-    extent = 1.0001 * float(np.linalg.norm(corners, axis=1).max())
-    centers, sizes = _exclusion_spheres(frame, i, extent)
-    edge = volume ** (1.0 / 3.0) / fineness
-    pieces, patch = [], []
     sigmas = frame.radii[i] + frame.radii[cage.wall.neighbors]
-    for row, vector in enumerate(cage.wall.vectors):
-        own = np.linalg.norm(centers - vector, axis=1) > 1e-9 * sigmas[row]
-        triangles = exposed_triangles(
-            vector, float(sigmas[row]), centers[own], sizes[own], edge, extent
-        )
-        on_wall = np.abs(np.linalg.norm(corners - vector, axis=1) - sigmas[row])
-        near = corners[on_wall < 1e-6 * sigmas[row]]
-        kept = _of_cage(triangles, near, float(cage.wall.areas[row]), edge)
-        pieces.append(kept)
+    edge = min(volume ** (1.0 / 3.0), float(sigmas.min())) / fineness
+    pieces, patch = [], []
+    for row, sphere in enumerate(_spheres(frame, i, cage.wall, edge)):
+        off = np.abs(np.linalg.norm(corners - sphere.center, axis=1) - sphere.size)
+        near = corners[off < 1e-6 * sphere.size]
+        kept = _of_cage(sphere, near, float(cage.wall.areas[row]))
+        pieces.append(_raised(sphere, kept)[kept])
         patch.append(np.full(len(kept), row))
-    triangles = np.concatenate(pieces)
-    vertices, places = _shared(triangles.reshape(-1, 3), edge)
+    vertices, places = merged(np.concatenate(pieces).reshape(-1, 3), 1e-5 * edge)
     mesh = CageMesh(
         particle_id=particle_id,
         radius=float(frame.radii[i]),
@@ -201,6 +196,75 @@ def _check(mesh: CageMesh, frame: Frame) -> None:
         )
 
 
+def _spheres(frame: Frame, i: int, wall: Wall, edge: float) -> list[Sphere]:
+    """Triangulate what is free of the exclusion sphere of each bounding neighbor."""
+    sigmas = frame.radii[i] + frame.radii[wall.neighbors]
+    extent = float((np.linalg.norm(wall.vectors, axis=1) + sigmas).max())
+    centers, sizes = _exclusion_spheres(frame, i, extent)
+    rows = cKDTree(centers).query(wall.vectors)[1]
+    arcs: dict[tuple[int, int], list[Arc]] = {}
+    spheres = []
+    for row in rows:
+        apart = np.linalg.norm(centers - centers[row], axis=1)
+        crossing = (apart < sizes[row] + sizes) & (apart > np.abs(sizes[row] - sizes))
+        crossing = np.flatnonzero(crossing)
+        around = np.append(crossing, row)
+        for k, other in enumerate(crossing):
+            pair = (min(row, other), max(row, other))
+            if pair not in arcs:
+                ends = (k, len(crossing)) if other < row else (len(crossing), k)
+                arcs[pair] = free_arcs(ends, centers[around], sizes[around], edge)
+        own = [
+            (arc, bool(row < k))
+            for k in crossing
+            for arc in arcs[min(row, k), max(row, k)]
+        ]
+        spheres.append(
+            Sphere(
+                centers[row],
+                float(sizes[row]),
+                centers[crossing],
+                sizes[crossing],
+                own,
+                edge,
+            )
+        )
+    changed = spheres
+    for _ in range(_MOST_ROUNDS):
+        missing: dict[Arc, NDArray[np.bool_]] = {}
+        for sphere in changed:
+            for (arc, _), sides in zip(sphere.arcs, sphere.triangulate(), strict=True):
+                if sides.any():
+                    missing[arc] = missing.get(arc, np.False_) | sides
+        if not missing:
+            break
+        for arc, sides in missing.items():
+            arc.divide(sides, edge)
+        changed = [s for s in spheres if any(arc in missing for arc, _ in s.arcs)]
+    return spheres
+
+
+def _raised(sphere: Sphere, triangles: NDArray[np.int64]) -> _Points:
+    """Points of a sphere, those within the patch so high that it keeps its volume."""
+    if len(triangles) == 0:
+        return sphere.points
+    apart = sphere.points[triangles] - sphere.center
+    areas = _areas(apart)
+    # mean square of the distance to a center over a triangle, by its corners
+    square = np.sum(apart.sum(axis=1) ** 2, axis=1) + np.sum(apart**2, axis=(1, 2))
+    depth = 0.5 * (sphere.size - square / (12.0 * sphere.size))
+    shares = np.bincount(
+        triangles.ravel(), np.repeat(areas / 3.0, 3), len(sphere.points)
+    )
+    shares[: sphere.n_boundary] = 0.0
+    if not shares.any():
+        return sphere.points
+    height = float(areas @ depth) / float(shares.sum())
+    scale = np.ones((len(sphere.points), 1))
+    scale[sphere.n_boundary :] += height / sphere.size
+    return np.asarray(sphere.center + scale * (sphere.points - sphere.center))
+
+
 def _exclusion_spheres(
     frame: Frame, i: int, extent: float
 ) -> tuple[_Points, NDArray[np.float64]]:
@@ -227,43 +291,31 @@ def _exclusion_spheres(
     return np.concatenate(centers), np.concatenate(radii)
 
 
-def _of_cage(triangles: _Points, corners: _Points, area: float, edge: float) -> _Points:
+def _of_cage(sphere: Sphere, corners: _Points, area: float) -> NDArray[np.int64]:
     """Keep the connected pieces that belong to the wall of this cage.
 
     The free part of a sphere can also bound other voids. Pieces at the corners of
     the cage belong to it; so do pieces without corners if the area asks for them.
     """
+    triangles, n = sphere.triangles, len(sphere.points)
     if len(triangles) == 0:
         return triangles
-    areas = _areas(triangles)
-    if areas.sum() <= 1.02 * area:
-        return triangles
-    _, places = _shared(triangles.reshape(-1, 3), edge)
-    places = places.reshape(-1, 3)
-    n = int(places.max()) + 1
-    links = np.concatenate((places[:, :2], places[:, 1:]))
+    links = np.concatenate((triangles[:, :2], triangles[:, 1:]))
     graph = coo_array((np.ones(len(links)), links.T), shape=(n, n))
     n_pieces, label = connected_components(graph, directed=False)
-    piece = label[places[:, 0]]
+    piece = label[triangles[:, 0]]
+    areas = _areas(sphere.points[triangles])
     size = np.bincount(piece, areas, minlength=n_pieces)
     kept = np.zeros(n_pieces, dtype=np.bool_)
     if len(corners):
-        nearest = cKDTree(triangles.reshape(-1, 3)).query(corners)[1]
-        kept[piece[nearest // 3]] = True
+        used = np.unique(triangles)
+        nearest = cKDTree(sphere.points[used]).query(corners)[1]
+        kept[label[used[nearest]]] = True
     for k in np.argsort(size)[::-1]:
         total = float(size[kept].sum())
         if not kept[k] and abs(total + size[k] - area) < abs(total - area):
             kept[k] = True
-    return np.asarray(triangles[kept[piece]], dtype=np.float64)
-
-
-def _shared(points: _Points, edge: float) -> tuple[_Points, NDArray[np.int64]]:
-    """Merge points that are the same up to rounding; where each one went."""
-    pairs = cKDTree(points).query_pairs(1e-5 * edge, output_type="ndarray")
-    graph = coo_array((np.ones(len(pairs)), pairs.T), shape=(len(points),) * 2)
-    _, label = connected_components(graph, directed=False)
-    _, first = np.unique(label, return_index=True)
-    return points[first], np.asarray(label, dtype=np.int64)
+    return np.asarray(triangles[kept[piece]], dtype=np.int64)
 
 
 def _weakest(
