@@ -25,6 +25,7 @@ SCENE_STYLE = """<style>
 #scale { position: absolute; left: 12px; bottom: 10px; font-size: 0.8rem;
   pointer-events: none; }
 #bar { height: 5px; border: 1.5px solid #222; border-top: 0; }
+#scale, #told { background: rgba(255, 255, 255, 0.7); }
 #told { position: absolute; left: 12px; top: 8px; font-size: 0.85rem;
   pointer-events: none; }
 #key { flex: 0 1 15rem; font-size: 0.87rem; }

@@ -5,6 +5,7 @@ from matplotlib.axes import Axes
 from matplotlib.colors import to_rgb
 from matplotlib.patches import Circle, PathPatch
 from matplotlib.path import Path
+from matplotlib.patheffects import withStroke
 from numpy.typing import NDArray
 
 from trajcage.analysis.cage_outline import CageOutline
@@ -44,7 +45,12 @@ def plane_drawing(cage: CageOutline, source: str) -> Drawing:
         color = to_rgb(PALETTE[k % len(PALETTE)])
         among.add_patch(Circle(center, radius, fc=(*color, 0.2), ec=INK, lw=0.7))
         among.annotate(
-            str(cage.neighbors[k]), center, ha="center", va="center", zorder=5
+            str(cage.neighbors[k]),
+            center,
+            ha="center",
+            va="center",
+            zorder=5,
+            path_effects=[withStroke(linewidth=2.5, foreground="white")],
         )
     for axes in (among, enlarged):
         _wall(axes, cage, 1.0 if axes is among else 2.2)
@@ -73,7 +79,7 @@ def plane_page(cage: CageOutline, source: str) -> str:
   aria-label="The wall of the cage among its bounding neighbors">
 {_svg(cage)}
 </svg>
-<div id="inset" hidden><svg viewBox="{whole}" width="100%" height="100%"
+<div id="inset" hidden><svg style="background:#fff" viewBox="{whole}" width="100%" height="100%"
   ><use href="#drawing"/></svg></div>
 <div id="told" aria-live="polite"></div>
 <div id="scale"><div id="bar"></div><span id="bar-text"></span></div>
@@ -132,7 +138,7 @@ def _close(cage: CageOutline) -> tuple[float, float, float]:
     """Left, bottom and edge of a square around the cage, in diameters."""
     points = np.concatenate([cage.points(k, _POINTS) for k in range(len(cage.patch))])
     points /= 2.0 * cage.radius
-    return _square(points.min(axis=0), points.max(axis=0), 1.3)
+    return _square(points.min(axis=0), points.max(axis=0), 1.5)
 
 
 def _square(
@@ -176,7 +182,8 @@ def _svg(cage: CageOutline) -> str:
         )
         names.append(
             f'<text x="{x}" y="{y}" text-anchor="middle" dominant-baseline="central" '
-            f'fill="{INK}">{cage.neighbors[k]}</text>'
+            f'fill="{INK}" stroke="#fff" stroke-width="3" paint-order="stroke" {thin}>'
+            f"{cage.neighbors[k]}</text>"
         )
     for arc, row in enumerate(cage.patch):
         arcs.append(
