@@ -42,15 +42,14 @@ def regions(facts: Facts) -> Drawing | Missing:
         "Regions in time",
         facts.caption(
             "Shares of the particles of known region on each frame; legend: mean over "
-            "frames with blocking error, shaded"
-            + (f"; {left_out} frames left out, see below." if left_out else "."),
+            "frames with blocking error, shaded.",
             f"Left out, region unknown: {int(unknown.sum())} of "
             f"{facts.n_particles * facts.n_frames} over all frames.",
             "Crystal: solid by bond order; glass: else in a closed cage"
             + (
                 " that has not broken within the mobility window; fluid: the rest. While "
-                "that window is not yet full, too many count as glass: means of glass and "
-                "fluid leave these frames out."
+                "that window is not yet full, too many count as glass: frames left "
+                f"out of the means of glass and fluid: {left_out}."
                 if needs.all()
                 else "; fluid: the rest. No cage breaking was known."
             ),

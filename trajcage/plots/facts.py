@@ -147,7 +147,7 @@ class Facts:
     @property
     def unit_of_time(self) -> str:
         """The unit behind a number, nothing if the input does not tell it."""
-        return "" if self.time_unit == "time" else f" {self.time_unit}"
+        return "" if self.time_unit == "time" else f" ({self.time_unit})"
 
     def time_label(self, what: str = "time") -> str:
         """Label an axis of time."""

@@ -136,14 +136,22 @@ def pressure(facts: Facts) -> Drawing | Missing:
         "Compressibility factor from cages",
         facts.caption(
             "Z = 1 + <w/v>/(2d), mean of the ratio of wall sum and free "
-            f"{facts.volume} over the closed cages; blocking error over "
-            f"{found['n_values']} frames"
+            f"{facts.volume} over the closed cages; "
+            + (
+                f"blocking error over {found['n_values']} frames"
+                if found["n_values"] > 1
+                else "one value has no error"
+            )
             + (
                 f", {found['n_missing']} frames without Z left out"
                 if found["n_missing"]
                 else ""
             )
-            + ("." if found["converged"] else ": too few frames, a lower bound."),
+            + (
+                "."
+                if found["converged"] or found["n_values"] < 2
+                else ": too few frames, a lower bound."
+            ),
             facts.left_out(),
             f"It holds in equilibrium. Equations of state of {kind}, in their ranges; "
             "right: those that hold at this packing fraction. Upright lines: published "

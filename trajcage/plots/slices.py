@@ -210,8 +210,9 @@ def _draw_regions(
         loc="upper center",
         bbox_to_anchor=(0.5, below),
         ncols=4,
-        columnspacing=1.2,
-        handlelength=1.2,
+        columnspacing=0.9,
+        handlelength=1.0,
+        handletextpad=0.5,
     )
 
 
