@@ -102,7 +102,7 @@ function neighbor(k) {
         #include <colorspace_fragment>
       }`,
   });
-  const ball = new Mesh(new SphereGeometry(cage.radii[k], 96, 64), material);
+  const ball = new Mesh(new SphereGeometry(cage.radii[k], 64, 40), material);
   ball.position.copy(centers[k]);
   ball.userData.row = k;
   return ball;
