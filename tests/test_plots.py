@@ -253,8 +253,8 @@ def test_a_chosen_figure_that_cannot_be_drawn_is_an_error(results, tmp_path):
 
 @pytest.mark.parametrize("form", FORMATS)
 def test_formats_and_overwriting(results, tmp_path, form):
-    words = ("plot", results["mixture"], "-o", tmp_path, "--only", "pressure")
-    path = tmp_path / f"pressure.{form}"
+    words = ("plot", results["mixture"], "-o", tmp_path, "--only", "rattlers")
+    path = tmp_path / f"rattlers.{form}"
     call(*words, "--format", form)
     head = {"png": b"\x89PNG", "svg": b"<?xml", "pdf": b"%PDF"}[form]
     before = path.read_bytes()

@@ -169,14 +169,15 @@ def slices(facts: Facts) -> Drawing | Missing:
         cmap=colormaps[MAP].with_extremes(bad=_UNMEASURED), norm=LogNorm(low, high)
     )
     disks.set_array(np.ma.masked_array(values, ~closed))
-    bar = drawing.figure.colorbar(
-        disks,
-        cax=panels[-1].inset_axes((0.0, -0.68 / tall, 1.0, 0.12 / tall)),
-        extend="both",
-        label=f"free {facts.volume} $v_f$ / $D^{d}$",
-        orientation="horizontal",
-    )
-    log_ticks(bar.ax.xaxis, low, high)
+    if closed.any():
+        bar = drawing.figure.colorbar(
+            disks,
+            cax=panels[-1].inset_axes((0.0, -0.68 / tall, 1.0, 0.12 / tall)),
+            extend="both",
+            label=f"free {facts.volume} $v_f$ / $D^{d}$",
+            orientation="horizontal",
+        )
+        log_ticks(bar.ax.xaxis, low, high)
     return drawing
 
 
