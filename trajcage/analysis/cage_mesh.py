@@ -13,12 +13,12 @@ from scipy.sparse import coo_array
 from scipy.sparse.csgraph import connected_components
 from scipy.spatial import cKDTree
 
-from trajcage.analysis.cages import CageOptions, default_overlap_tolerance
+from trajcage.analysis.cages import CageOptions
+from trajcage.analysis.single_cage import SingleCage, measure_single_cage
 from trajcage.analysis.sphere_patches import Arc, Sphere, free_arcs, merged
 from trajcage.errors import UsageError
-from trajcage.kernel import measure_cages
-from trajcage.kernel.cages import Wall, Windows
-from trajcage.model import CageStatus, Frame
+from trajcage.kernel.cages import Wall
+from trajcage.model import Frame
 
 __all__ = ["CageMesh", "mesh_cage"]
 
@@ -28,49 +28,23 @@ _MOST_ROUNDS = 12  # of dividing arcs that come close to others
 _Points = NDArray[np.float64]
 
 
-@dataclass(frozen=True, eq=False)
-class CageMesh:
+@dataclass(frozen=True, eq=False, kw_only=True)
+class CageMesh(SingleCage):
     """The wall of one cage; positions are relative to the particle.
 
     Parameters
     ----------
-    particle_id : int
-        Whose cage.
-    radius : float, length
-        Of the particle.
-    free_volume, free_surface, weakest_window : float
-        As measured exactly; lengths in the unit of the input.
-    neighbors : (k,) int64
-        Ids of the bounding neighbors, an entry for each periodic image.
-    vectors : (k, 3) float64, length
-        To their centers.
-    radii : (k,) float64, length
-        Their radii.
     vertices : (m, 3) float64, length
         Corners of the triangles.
     triangles : (t, 3) int64
         Their rows, counterclockwise seen from outside.
     patch : (t,) int64
         Row of the neighbor on whose exclusion sphere each lies.
-    window : tuple of int
-        Rows of the neighbors that form the weakest window; empty if unknown.
-    window_corner : (3,) float64, length
-        Corner of the wall behind that window.
     """
 
-    particle_id: int
-    radius: float
-    free_volume: float
-    free_surface: float
-    weakest_window: float
-    neighbors: NDArray[np.int64]
-    vectors: _Points
-    radii: NDArray[np.float64]
     vertices: _Points
     triangles: NDArray[np.int64]
     patch: NDArray[np.int64]
-    window: tuple[int, ...]
-    window_corner: _Points
 
     @property
     def volume(self) -> float:
@@ -116,7 +90,6 @@ def mesh_cage(
     FrameError
         If the cage is not closed.
     """
-    options = options or CageOptions()
     if frame.dimensions != 3:
         raise UsageError(
             "the wall of a cage is a surface in three dimensions; these particles lie "
@@ -124,62 +97,22 @@ def mesh_cage(
         )
     if not 1.0 <= fineness <= 100.0:
         raise UsageError(f"the fineness lies between 1 and 100, got {fineness:g}")
-    found = np.flatnonzero(frame.ids == particle_id)
-    if len(found) == 0:
-        raise UsageError(
-            f"there is no particle {particle_id}; ids go from {frame.ids.min()} to "
-            f"{frame.ids.max()}"
-        )
-    i = int(found[0])
-    tolerance = options.overlap_tolerance
-    if tolerance is None:
-        tolerance = default_overlap_tolerance(frame)
-    cage = measure_cages(
-        np.ascontiguousarray(frame.positions),
-        frame.box.vectors,
-        frame.box.origin,
-        np.array(frame.box.periodic),
-        np.ascontiguousarray(frame.radii),
-        subset=np.array([i]),
-        reach=options.reach,
-        overlap_tolerance=tolerance,
-        windows=True,
-    )
-    status = CageStatus(int(cage.status[i]))
-    volume = float(cage.free_volume[i])
-    if status != CageStatus.CLOSED or not volume > 0.0:
-        state = status.name.lower() if status != CageStatus.CLOSED else "without volume"
-        raise frame.error(
-            f"the cage of particle {particle_id} is {state}; only a closed cage has a "
-            "wall to draw"
-        )
-    assert cage.wall is not None
-    assert cage.windows is not None
-    corners = cage.windows.corners
-    sigmas = frame.radii[i] + frame.radii[cage.wall.neighbors]
-    edge = min(volume ** (1.0 / 3.0), float(sigmas.min())) / fineness
+    cage, i, wall, windows = measure_single_cage(frame, particle_id, options)
+    corners = windows.corners
+    edge = min(cage.free_volume ** (1.0 / 3.0), float(cage.sigmas.min())) / fineness
     pieces, patch = [], []
-    for row, sphere in enumerate(_spheres(frame, i, cage.wall, edge)):
+    for row, sphere in enumerate(_spheres(frame, i, wall, edge)):
         off = np.abs(np.linalg.norm(corners - sphere.center, axis=1) - sphere.size)
         near = corners[off < 1e-6 * sphere.size]
-        kept = _of_cage(sphere, near, float(cage.wall.areas[row]))
+        kept = _of_cage(sphere, near, float(wall.areas[row]))
         pieces.append(_raised(sphere, kept)[kept])
         patch.append(np.full(len(kept), row))
     vertices, places = merged(np.concatenate(pieces).reshape(-1, 3), 1e-5 * edge)
     mesh = CageMesh(
-        particle_id=particle_id,
-        radius=float(frame.radii[i]),
-        free_volume=volume,
-        free_surface=float(cage.free_surface[i]),
-        weakest_window=float(cage.weakest_window[i]),
-        neighbors=frame.ids[cage.wall.neighbors],
-        vectors=cage.wall.vectors,
-        radii=frame.radii[cage.wall.neighbors],
+        **vars(cage),
         vertices=vertices,
         triangles=places.reshape(-1, 3),
         patch=np.concatenate(patch),
-        window=_weakest(cage.windows, cage.wall, sigmas),
-        window_corner=corners[np.argmax(cage.windows.ratios)],
     )
     _check(mesh, frame)
     return mesh
@@ -316,22 +249,6 @@ def _of_cage(sphere: Sphere, corners: _Points, area: float) -> NDArray[np.int64]
         if not kept[k] and abs(total + size[k] - area) < abs(total - area):
             kept[k] = True
     return np.asarray(triangles[kept[piece]], dtype=np.int64)
-
-
-def _weakest(
-    windows: Windows, wall: Wall, sigmas: NDArray[np.float64]
-) -> tuple[int, ...]:
-    """Rows of the neighbors of the weakest window: the images that touch its corner."""
-    k = int(np.argmax(windows.ratios))
-    gap = np.abs(np.linalg.norm(wall.vectors - windows.corners[k], axis=1) - sigmas)
-    rows: list[int] = []
-    for neighbor in windows.neighbors[k]:
-        images = np.flatnonzero(wall.neighbors == neighbor)
-        images = images[~np.isin(images, rows)]
-        if len(images) == 0:
-            return ()
-        rows.append(int(images[np.argmin(gap[images])]))
-    return tuple(rows)
 
 
 def _areas(triangles: _Points) -> NDArray[np.float64]:

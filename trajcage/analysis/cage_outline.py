@@ -11,11 +11,11 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from trajcage.analysis.cages import CageOptions, default_overlap_tolerance
+from trajcage.analysis.cages import CageOptions
+from trajcage.analysis.single_cage import SingleCage, measure_single_cage
 from trajcage.errors import UsageError
-from trajcage.kernel import measure_cages
-from trajcage.kernel.cages import Wall, Windows
-from trajcage.model import CageStatus, Frame
+from trajcage.kernel.cages import Wall
+from trajcage.model import Frame
 
 __all__ = ["CageOutline", "outline_cage"]
 
@@ -23,24 +23,12 @@ _LARGEST_DEVIATION = 1e-5  # of area or length: beyond it the arcs are not the c
 _ON_CIRCLE = 1e-7  # of a radius: how far a corner may be from the circle it lies on
 
 
-@dataclass(frozen=True, eq=False)
-class CageOutline:
+@dataclass(frozen=True, eq=False, kw_only=True)
+class CageOutline(SingleCage):
     """The wall of one cage in the plane; positions are relative to the particle.
 
     Parameters
     ----------
-    particle_id : int
-        Whose cage.
-    radius : float, length
-        Of the particle.
-    free_volume, free_surface, weakest_window : float
-        Area, length of the wall and opening ratio, as measured exactly.
-    neighbors : (k,) int64
-        Ids of the bounding neighbors, an entry for each periodic image.
-    vectors : (k, 2) float64, length
-        To their centers.
-    radii : (k,) float64, length
-        Their radii.
     patch : (m,) int64
         Row of the neighbor on whose exclusion circle each arc lies.
     angles : (m, 2) float64, radian
@@ -49,30 +37,11 @@ class CageOutline:
         The closed lines that the arcs form: each arc ends where the one before it in
         the line starts, so that the cage lies on the left of a line followed against
         the angles.
-    window : tuple of int
-        Rows of the two neighbors that form the weakest window; empty if unknown.
-    window_corner : (2,) float64, length
-        Corner of the wall behind that window.
     """
 
-    particle_id: int
-    radius: float
-    free_volume: float
-    free_surface: float
-    weakest_window: float
-    neighbors: NDArray[np.int64]
-    vectors: NDArray[np.float64]
-    radii: NDArray[np.float64]
     patch: NDArray[np.int64]
     angles: NDArray[np.float64]
     loops: tuple[tuple[int, ...], ...]
-    window: tuple[int, ...]
-    window_corner: NDArray[np.float64]
-
-    @property
-    def sigmas(self) -> NDArray[np.float64]:
-        """Radii of the exclusion circles of the bounding neighbors, (k,), length."""
-        return self.radii + self.radius
 
     @property
     def length(self) -> float:
@@ -123,59 +92,17 @@ def outline_cage(
     FrameError
         If the cage is not closed, or its arcs are not what was measured.
     """
-    options = options or CageOptions()
     if frame.dimensions != 2:
         raise UsageError(
             "the outline of a cage is a line in the plane; these particles lie in space"
         )
-    found = np.flatnonzero(frame.ids == particle_id)
-    if len(found) == 0:
-        raise UsageError(
-            f"there is no particle {particle_id}; ids go from {frame.ids.min()} to "
-            f"{frame.ids.max()}"
-        )
-    i = int(found[0])
-    tolerance = options.overlap_tolerance
-    if tolerance is None:
-        tolerance = default_overlap_tolerance(frame)
-    cage = measure_cages(
-        np.ascontiguousarray(frame.positions),
-        frame.box.vectors,
-        frame.box.origin,
-        np.array(frame.box.periodic),
-        np.ascontiguousarray(frame.radii),
-        subset=np.array([i]),
-        reach=options.reach,
-        overlap_tolerance=tolerance,
-        windows=True,
-    )
-    status = CageStatus(int(cage.status[i]))
-    area = float(cage.free_volume[i])
-    if status != CageStatus.CLOSED or not area > 0.0:
-        state = status.name.lower() if status != CageStatus.CLOSED else "without area"
-        raise frame.error(
-            f"the cage of particle {particle_id} is {state}; only a closed cage has a "
-            "wall to draw"
-        )
-    wall, windows = cage.wall, cage.windows
-    assert wall is not None
-    assert windows is not None
-    sigmas = frame.radii[i] + frame.radii[wall.neighbors]
-    patch, angles = _arcs(wall, windows.corners, sigmas)
+    cage, _, wall, windows = measure_single_cage(frame, particle_id, options)
+    patch, angles = _arcs(wall, windows.corners, cage.sigmas)
     outline = CageOutline(
-        particle_id=particle_id,
-        radius=float(frame.radii[i]),
-        free_volume=area,
-        free_surface=float(cage.free_surface[i]),
-        weakest_window=float(cage.weakest_window[i]),
-        neighbors=frame.ids[wall.neighbors],
-        vectors=wall.vectors,
-        radii=frame.radii[wall.neighbors],
+        **vars(cage),
         patch=patch,
         angles=angles,
-        loops=_loops(wall, sigmas, patch, angles),
-        window=_weakest(wall, windows, sigmas),
-        window_corner=windows.corners[np.argmax(windows.ratios)],
+        loops=_loops(wall, cage.sigmas, patch, angles),
     )
     deviation = max(
         abs(outline.area / outline.free_volume - 1.0),
@@ -250,19 +177,3 @@ def _loops(
             left.remove(nearest)
         loops.append(tuple(loop))
     return tuple(loops)
-
-
-def _weakest(
-    wall: Wall, windows: Windows, sigmas: NDArray[np.float64]
-) -> tuple[int, ...]:
-    """Rows of the neighbors of the weakest window: the images that touch its corner."""
-    k = int(np.argmax(windows.ratios))
-    gap = np.abs(np.linalg.norm(wall.vectors - windows.corners[k], axis=1) - sigmas)
-    rows: list[int] = []
-    for neighbor in windows.neighbors[k]:
-        images = np.flatnonzero(wall.neighbors == neighbor)
-        images = images[~np.isin(images, rows)]
-        if len(images) == 0:
-            return ()
-        rows.append(int(images[np.argmin(gap[images])]))
-    return tuple(rows)
