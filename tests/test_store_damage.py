@@ -19,6 +19,7 @@ from trajcage.errors import ResultFileError, UsageError
 from trajcage.store import open_result, salvage
 from trajcage.store.commit import Commit, latest_commit
 from trajcage.store.framing import pack_arrays, unpack_arrays
+from trajcage.store.guard import guard
 from trajcage.store.superblock import lookup3, read_superblock, repair_superblock
 
 
@@ -402,3 +403,12 @@ def test_directory_without_permission(tmp_path):
     with pytest.raises(ResultFileError, match="Permission denied"):
         scenario.create(tmp_path / "cages.h5")
     tmp_path.chmod(0o700)
+
+
+def test_the_cause_is_found_in_the_words_of_hdf5():
+    words = (
+        "Unable to flush raw data (file write failed: time = Tue\n, errno = 28, ...)"
+    )
+    expected = pytest.raises(ResultFileError, match=r"r\.h5: writing failed: No space")
+    with expected, guard(Path("r.h5"), "writing"):
+        raise RuntimeError(words)

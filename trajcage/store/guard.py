@@ -1,6 +1,7 @@
 """One clear error instead of the many that the HDF5 library raises."""
 
 import os
+import re
 import zlib
 from collections.abc import Iterator
 from contextlib import contextmanager
@@ -38,8 +39,11 @@ def guard(path: Path, task: str) -> Iterator[None]:
     except TrajcageError:
         raise
     except _FROM_BELOW as error:
-        lines = str(error).strip().splitlines() or [type(error).__name__]
-        reason = lines[0]
-        if isinstance(error, OSError) and error.errno:  # clearer than HDF5's own words
-            reason = os.strerror(error.errno)
+        text = str(error).strip()
+        reason = (text.splitlines() or [type(error).__name__])[0]
+        number = error.errno if isinstance(error, OSError) else None
+        if not number and (told := re.search(r"errno = (\d+)", text)):
+            number = int(told[1])  # in the middle of HDF5's own words
+        if number:
+            reason = os.strerror(number)
         raise ResultFileError(f"{path}: {task} failed: {reason}") from error
