@@ -133,7 +133,9 @@ def main():
     warnings.simplefilter("ignore")
     freud.parallel.set_num_threads(1)
     cold, warm = start_times()
-    print(f"first closed cages: {cold:.1f} s with compilation, {warm:.2f} s from the cache")
+    print(
+        f"first closed cages: {cold:.1f} s with compilation, {warm:.2f} s from the cache"
+    )
     if gudhi is None:
         print("gudhi is not installed: no triangulation to compare with")
     header = (
