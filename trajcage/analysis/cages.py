@@ -3,12 +3,14 @@
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from trajcage.errors import UsageError
 from trajcage.kernel import measure_cages
+from trajcage.kernel.cages import Cages
 from trajcage.lattices import LATTICES
 from trajcage.model import (
     Box,
@@ -32,6 +34,7 @@ __all__ = [
     "fields",
     "find_overlaps",
     "frame_cages",
+    "kernel_cages",
     "stored_values",
 ]
 
@@ -85,6 +88,12 @@ class CageOptions:
             raise UsageError(
                 f"the overlap tolerance is a length of 0 or more, got {tolerance}"
             )
+
+    def tolerance(self, frame: Frame) -> float:
+        """Depth up to which an overlap in a frame counts as a contact, length."""
+        if self.overlap_tolerance is None:
+            return default_overlap_tolerance(frame)
+        return self.overlap_tolerance
 
 
 def fields(dimensions: int) -> tuple[Field, ...]:
@@ -239,6 +248,21 @@ def find_overlaps(
     )
 
 
+def kernel_cages(frame: Frame, options: CageOptions, **wanted: Any) -> Cages:
+    """Give a frame to :func:`~trajcage.kernel.measure_cages`, with all it `wanted`."""
+    box = frame.box
+    return measure_cages(
+        np.ascontiguousarray(frame.positions),
+        box.vectors,
+        box.origin,
+        np.array(box.periodic),
+        np.ascontiguousarray(frame.radii),
+        reach=options.reach,
+        overlap_tolerance=options.tolerance(frame),
+        **wanted,
+    )
+
+
 def frame_cages(
     frame: Frame,
     options: CageOptions,
@@ -273,9 +297,7 @@ def frame_cages(
         ``options.strict``, overlap.
     """
     check_packing(frame)
-    tolerance = options.overlap_tolerance
-    if tolerance is None:
-        tolerance = default_overlap_tolerance(frame)
+    tolerance = options.tolerance(frame)
     overlaps = find_overlaps(frame, tolerance, near)
     if options.strict and overlaps.count:
         raise frame.error(
@@ -284,18 +306,7 @@ def frame_cages(
             f"{overlaps.pair[1]} by {overlaps.deepest:.3g}; correct the diameters, or "
             "allow it: without strict, or with a larger overlap tolerance"
         )
-    box = frame.box
-    found = measure_cages(
-        np.ascontiguousarray(frame.positions),
-        box.vectors,
-        box.origin,
-        np.array(box.periodic),
-        np.ascontiguousarray(frame.radii),
-        reach=options.reach,
-        overlap_tolerance=tolerance,
-        windows=windows,
-        threads=threads,
-    )
+    found = kernel_cages(frame, options, windows=windows, threads=threads)
     table = CageTable(
         free_volume=found.free_volume,
         free_surface=found.free_surface,

@@ -5,9 +5,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from trajcage.analysis.cages import CageOptions, default_overlap_tolerance
+from trajcage.analysis.cages import CageOptions, kernel_cages
 from trajcage.errors import UsageError
-from trajcage.kernel import measure_cages
 from trajcage.kernel.cages import Wall, Windows
 from trajcage.model import CageStatus, Frame
 
@@ -77,7 +76,6 @@ def measure_single_cage(
     FrameError
         If the cage is not closed.
     """
-    options = options or CageOptions()
     found = np.flatnonzero(frame.ids == particle_id)
     if len(found) == 0:
         raise UsageError(
@@ -85,19 +83,8 @@ def measure_single_cage(
             f"{frame.ids.max()}"
         )
     i = int(found[0])
-    tolerance = options.overlap_tolerance
-    if tolerance is None:
-        tolerance = default_overlap_tolerance(frame)
-    table = measure_cages(
-        np.ascontiguousarray(frame.positions),
-        frame.box.vectors,
-        frame.box.origin,
-        np.array(frame.box.periodic),
-        np.ascontiguousarray(frame.radii),
-        subset=np.array([i]),
-        reach=options.reach,
-        overlap_tolerance=tolerance,
-        windows=True,
+    table = kernel_cages(
+        frame, options or CageOptions(), subset=np.array([i]), windows=True
     )
     status = CageStatus(int(table.status[i]))
     volume = float(table.free_volume[i])

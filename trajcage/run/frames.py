@@ -8,7 +8,6 @@ from numpy.typing import NDArray
 
 from trajcage.analysis.cages import (
     check_packing,
-    default_overlap_tolerance,
     frame_cages,
     stored_values,
 )
@@ -69,9 +68,7 @@ def measure_frame(frame: Frame, settings: RunSettings) -> MeasuredFrame:
     FrameError
         If the frame cannot be measured; the message says why.
     """
-    tolerance = settings.cages.overlap_tolerance
-    if tolerance is None:
-        tolerance = default_overlap_tolerance(frame)
+    tolerance = settings.cages.tolerance(frame)
     check_packing(frame)  # before a wrong unit makes everybody a neighbor
     stages = Stages()
     with stages.timed("pairs"):  # found once for all that asks for touching ones

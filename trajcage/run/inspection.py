@@ -9,7 +9,6 @@ from trajcage.analysis.cages import (
     CageOptions,
     Overlaps,
     check_packing,
-    default_overlap_tolerance,
     find_overlaps,
 )
 from trajcage.neighborhood import check_distinct
@@ -104,9 +103,7 @@ def inspect(
         frame = opened.frame(0)
     check_distinct(frame)
     warning = check_packing(frame)
-    tolerance = CageOptions(overlap_tolerance=overlap_tolerance).overlap_tolerance
-    if tolerance is None:
-        tolerance = default_overlap_tolerance(frame)
+    tolerance = CageOptions(overlap_tolerance=overlap_tolerance).tolerance(frame)
     overlaps = find_overlaps(frame, tolerance)
     phi, d = frame.packing_fraction, frame.dimensions
     gap = frame.mean_diameter * ((DENSEST_PACKING[d] / phi) ** (1.0 / d) - 1.0)
