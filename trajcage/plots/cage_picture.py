@@ -11,7 +11,7 @@ from trajcage.analysis.cage_outline import CageOutline
 from trajcage.plots.style import INK, PALETTE, Drawing, new_figure, settle
 from trajcage.wording import listed
 
-__all__ = ["WINDOW", "cage_drawing", "cage_facts"]
+__all__ = ["WINDOW", "cage_drawing", "cage_facts", "cage_figure"]
 
 # Seen from a little above and to the side, so that lattice cages do not hide depth.
 _TURN, _TILT = np.radians(32.0), np.radians(24.0)
@@ -45,6 +45,30 @@ def cage_facts(cage: CageMesh | CageOutline) -> list[str]:
     ]
 
 
+def cage_figure(
+    cage: CageMesh | CageOutline, source: str, window: str
+) -> tuple[Drawing, list[Axes]]:
+    """Start the figure of a cage: one view to scale, one of the wall alone.
+
+    Parameters
+    ----------
+    cage : CageMesh or CageOutline
+        Its wall.
+    source : str
+        File and frame, for the caption.
+    window : str
+        What the weakest window is made of, for the caption.
+    """
+    return new_figure(
+        f"Cage of particle {cage.particle_id}",
+        f"{source}. {'. '.join(cage_facts(cage))}. Left: true to scale, neighbors "
+        f"translucent; right: the wall alone, one color a neighbor. Dark red: the {window} "
+        "of the weakest window, and the corner of the wall behind it.",
+        columns=2,
+        size=(8.6, 4.0),
+    )
+
+
 def cage_drawing(mesh: CageMesh, source: str) -> Drawing:
     """Draw a cage.
 
@@ -55,14 +79,7 @@ def cage_drawing(mesh: CageMesh, source: str) -> Drawing:
     source : str
         File and frame, for the caption.
     """
-    drawing, (among, enlarged) = new_figure(
-        f"Cage of particle {mesh.particle_id}",
-        f"{source}. {'. '.join(cage_facts(mesh))}. Left: true to scale, neighbors "
-        "translucent; right: the wall alone, one color a neighbor. Dark red: the "
-        "triangle of the weakest window, and the corner of the wall behind it.",
-        columns=2,
-        size=(8.6, 4.0),
-    )
+    drawing, (among, enlarged) = cage_figure(mesh, source, "triangle")
     turn = _rotation()
     d = 2.0 * mesh.radius
     vertices, centers = mesh.vertices @ turn.T / d, mesh.vectors @ turn.T / d

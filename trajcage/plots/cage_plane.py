@@ -10,9 +10,9 @@ from numpy.typing import NDArray
 
 from trajcage.analysis.cage_outline import CageOutline
 from trajcage.plots.cage_page import SCENE_STYLE, neighbor_list, scene_script
-from trajcage.plots.cage_picture import WINDOW, cage_facts
+from trajcage.plots.cage_picture import WINDOW, cage_facts, cage_figure
 from trajcage.plots.page import bullets, page, section
-from trajcage.plots.style import INK, PALETTE, Drawing, new_figure, settle
+from trajcage.plots.style import INK, PALETTE, Drawing, settle
 
 __all__ = ["plane_drawing", "plane_page"]
 
@@ -31,14 +31,7 @@ def plane_drawing(cage: CageOutline, source: str) -> Drawing:
     source : str
         File and frame, for the caption.
     """
-    drawing, (among, enlarged) = new_figure(
-        f"Cage of particle {cage.particle_id}",
-        f"{source}. {'. '.join(cage_facts(cage))}. Left: true to scale, neighbors "
-        "translucent; right: the wall alone, one color a neighbor. Dark red: the pair "
-        "of the weakest window, and the corner of the wall behind it.",
-        columns=2,
-        size=(8.6, 4.0),
-    )
+    drawing, (among, enlarged) = cage_figure(cage, source, "pair")
     d = 2.0 * cage.radius
     centers, radii = cage.vectors / d, cage.radii / d
     for k, (center, radius) in enumerate(zip(centers, radii, strict=True)):
